@@ -1,0 +1,1 @@
+"""Room 5, *what does it amount to?*: fractions, volumes, intervals, comparison, verdict."""

@@ -1,0 +1,37 @@
+"""A bound as it is stated to others: V, level, and on what evidence."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import StrEnum
+
+from roa.bound.lyapunov_function import LyapunovFunction
+
+
+class Strength(StrEnum):
+    """The strength of evidence behind a number; every printed, stored or drawn number has one."""
+
+    PROVED = "proved"
+    SUPPORTED = "supported"
+    SIMULATED = "simulated"
+    ESTIMATED = "estimated"
+
+
+@dataclass(frozen=True)
+class Bound:
+    """The set {V <= level}, said to lie in the basin.
+
+    Attributes
+    ----------
+    name : one of "norm bound", "contact level", "unfalsified level" (DESIGN of the slack ladder)
+    V : LyapunovFunction
+    level : float, 0.0 where no level above zero was found
+    strength : Strength
+    note : str, one sentence that says what limits the level or on what it stands
+    """
+
+    name: str
+    V: LyapunovFunction
+    level: float
+    strength: Strength
+    note: str = ""

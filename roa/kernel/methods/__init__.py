@@ -1,0 +1,37 @@
+"""Integration methods, one a file: the word in the configuration is the file's name."""
+
+from __future__ import annotations
+
+import difflib
+import importlib
+import pkgutil
+
+from roa.errors import UserError
+from roa.kernel.tableau import Tableau
+
+# What `method = "auto"` stands for as long as there is one method to choose from.
+AUTO = "tsitouras5"
+
+
+def available() -> list[str]:
+    """Return the names of the methods, sorted."""
+    return sorted(module.name for module in pkgutil.iter_modules(__path__))
+
+
+def load(name: str) -> Tableau:
+    """Return the tableau called `name`; "auto" picks one.
+
+    Raises
+    ------
+    UserError
+        There is no such method.
+    """
+    chosen = AUTO if name == "auto" else name
+    if chosen not in available():
+        near = difflib.get_close_matches(chosen, available(), 1)
+        hint = f' (did you mean "{near[0]}"?)' if near else ""
+        raise UserError(
+            f'[sweep] method = "{name}": no such integration method; available: auto, {", ".join(available())}{hint}'
+        )
+    tableau: Tableau = importlib.import_module(f"{__name__}.{chosen}").TABLEAU
+    return tableau

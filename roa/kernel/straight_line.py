@@ -1,0 +1,136 @@
+"""Formulas as straight-line code: the right-hand side of the generated module.
+
+Every distinct subtree becomes one assignment. Subtrees of numbers and parameters alone become
+*constants*: entries of an array that is filled before the sweep, so that a changed gain uses the
+module that is compiled already.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from decimal import Decimal
+
+from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power, children
+from roa.loop.model import Loop
+
+# Functions with a vector form in `vector_math`; the others call the scalar library for now.
+VECTOR_FORM = {"sin": "vsin", "cos": "vcos", "tan": "vtan"}
+LIBRARY_FORM = {
+    name: f"math.{name}"
+    for name in ("asin", "acos", "atan", "atan2", "sinh", "cosh", "tanh", "exp", "log", "sqrt")
+}  # fmt: skip
+
+
+class StraightLine:
+    """Assignments that evaluate trees of a loop, and the constants that they use.
+
+    Attributes
+    ----------
+    lines : list of str, Python assignments in order
+    constants : list of trees over parameters and numbers; the code calls them c0, c1, …
+    """
+
+    def __init__(self, loop: Loop) -> None:
+        self.lines: list[str] = []
+        self.constants: list[Expression] = []
+        self._signals: Mapping[str, Expression] = loop.signals
+        self._parameters = frozenset(loop.parameters)
+        self._variables: dict[Expression, str] = {Name(s): f"x{i}" for i, s in enumerate(loop.states)}
+        self._constant: dict[Expression, bool] = {}
+
+    def variable(self, tree: Expression) -> str:
+        """Return the variable that holds the tree's value, appending the lines that compute it."""
+        known = self._variables.get(tree)
+        if known is not None:
+            return known
+        if self._is_constant(tree):
+            name = f"c{len(self.constants)}"
+            self.constants.append(tree)
+        elif isinstance(tree, Name):
+            name = self.variable(self._signals[tree.name])
+        else:
+            text = self._operation(tree)
+            name = f"v{len(self.lines)}"
+            self.lines.append(f"{name} = {text}")
+        self._variables[tree] = name
+        return name
+
+    def _is_constant(self, tree: Expression) -> bool:
+        known = self._constant.get(tree)
+        if known is None:
+            if isinstance(tree, Name):
+                signal = self._signals.get(tree.name)
+                known = tree.name in self._parameters or (signal is not None and self._is_constant(signal))
+            else:
+                known = all(self._is_constant(part) for part in children(tree))
+            self._constant[tree] = known
+        return known
+
+    def _operation(self, tree: Expression) -> str:
+        match tree:
+            case Negate(operand):
+                return f"-{self.variable(operand)}"
+            case Binary("/", left, right) if self._is_constant(right):
+                # A division costs several multiplications and is not pipelined.
+                return f"{self.variable(left)} * {self.variable(Binary('/', Number(Decimal(1)), right))}"
+            case Binary(op, left, right):
+                return f"{self.variable(left)} {op} {self.variable(right)}"
+            case Power(base, exponent):
+                return self._power(self.variable(base), exponent)
+            case Compare(op, left, right):
+                return f"{self.variable(left)} {op} {self.variable(right)}"
+            case Call(function, arguments):
+                return self._call(function, [self.variable(a) for a in arguments])
+        raise AssertionError(f"no such node: {tree!r}")
+
+    def _power(self, base: str, exponent: Decimal) -> str:
+        size = abs(exponent)
+        if size == int(size):
+            text = _integer_power(base, int(size))
+        elif size * 2 == int(size * 2):
+            whole = int(size)
+            text = f"math.sqrt({base})" if whole == 0 else f"{_integer_power(base, whole)} * math.sqrt({base})"
+        else:
+            return f"{base} ** {float(exponent)!r}"
+        return text if exponent >= 0 else f"1.0 / ({text})"
+
+    def _call(self, function: str, a: list[str]) -> str:
+        # The selects are ordered so that a NaN in any argument is handed on, never replaced by a bound.
+        match function:
+            case "abs":
+                return f"abs({a[0]})"
+            case "sign":
+                return f"1.0 if {a[0]} > 0.0 else (-1.0 if {a[0]} < 0.0 else {a[0]})"
+            case "min":
+                return f"{a[1]} if ({a[1]} < {a[0]}) | ({a[1]} != {a[1]}) else {a[0]}"
+            case "max":
+                return f"{a[1]} if ({a[1]} > {a[0]}) | ({a[1]} != {a[1]}) else {a[0]}"
+            case "clip":
+                return _clip(a[0], a[1], a[2])
+            case "deadzone":
+                return f"{a[0]} - ({_clip(a[0], f'-{a[1]}', a[1])})"
+            case "where":
+                return f"{a[1]} if {a[0]} else {a[2]}"
+        return f"{VECTOR_FORM.get(function) or LIBRARY_FORM[function]}({a[0] if len(a) == 1 else ', '.join(a)})"
+
+
+def _clip(x: str, low: str, high: str) -> str:
+    # clip(x, lo, hi) = min(max(x, lo), hi): the upper bound wins where lo > hi.
+    return f"{high} if ({low} if {x} < {low} else {x}) > {high} else ({low} if {x} < {low} else {x})"
+
+
+def _integer_power(base: str, exponent: int) -> str:
+    """Write base**exponent as products by repeated squaring; one expression, shared by the compiler."""
+    if exponent == 0:
+        return "1.0"
+    if exponent == 1:
+        return base
+    half = _integer_power(base, exponent // 2)
+    square = f"({half}) * ({half})" if exponent > 3 else f"{base} * {base}"
+    return square if exponent % 2 == 0 else f"{square} * {base}"
+
+
+def right_hand_side(loop: Loop) -> tuple[StraightLine, list[str]]:
+    """Return the code of f and the variables that hold the n derivatives."""
+    code = StraightLine(loop)
+    return code, [code.variable(tree) for tree in loop.dynamics]
