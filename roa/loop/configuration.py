@@ -1,0 +1,189 @@
+"""A configuration that has been read: the loop, and what is to be done with it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from decimal import Decimal
+from typing import Annotated, Any
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, model_validator
+
+from roa.loop.expression import Expression
+from roa.loop.formula_text import decimal_text, to_text
+from roa.loop.model import Loop
+from roa.loop.values import Matrix, number, real, symmetric_matrix, whole, word
+
+LONGEST_PER_HORIZON = 16
+MOST_SAMPLES = 2**40
+LARGEST_SEED = 2**63 - 1  # the store keeps it as a signed integer of 64 bits
+
+
+def _weights(value: Any) -> str | Matrix:
+    if isinstance(value, str):
+        return word("identity", "domain")(value)
+    return symmetric_matrix(value)
+
+
+_Positive = Annotated[float, BeforeValidator(real("greater than 0", lambda x: x > 0))]
+_AtLeastOne = Annotated[float, BeforeValidator(real("at least 1", lambda x: x >= 1))]
+_Share = Annotated[float, BeforeValidator(real("between 0 and 1", lambda x: 0 < x < 1))]
+
+
+def _exact_positive(value: Any) -> Decimal:
+    real("greater than 0", lambda x: x > 0)(value)
+    return number(value)
+
+
+class _Table(BaseModel):
+    """A table of the file. Unknown keys are refused before, where the nearest known one can be named."""
+
+    model_config = ConfigDict(frozen=True, extra="forbid")
+
+
+class BoundTable(_Table):
+    """Table [bound]: the Lyapunov function that is derived or given, and the level that is claimed.
+
+    Exactly one of Q, P and V is set; Q is "identity" where the file gives none of them.
+
+    Attributes
+    ----------
+    Q : "identity", "domain" (1/half-width^2 on the diagonal) or a symmetric positive definite matrix
+    P : symmetric matrix; whether it is positive definite is for the verdict to say
+    V, V_text : tree and text of a formula in states and parameters
+    level : the claim {V <= level}, or None where nothing is claimed
+    """
+
+    Q: Annotated[str | Matrix, BeforeValidator(_weights)] | None = None
+    P: Annotated[Matrix, BeforeValidator(symmetric_matrix)] | None = None
+    V: SkipValidation[Any] = None
+    V_text: str | None = None
+    level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+
+    @model_validator(mode="before")
+    @classmethod
+    def _default_weights(cls, table: dict[str, Any]) -> dict[str, Any]:
+        return table if table.keys() & {"Q", "P", "V"} else {"Q": "identity", **table}
+
+
+class SweepTable(_Table):
+    """Table [sweep]: which trajectories are simulated, and how each is decided.
+
+    Attributes
+    ----------
+    design : name of a sampling design
+    samples : number of initial conditions
+    seed : of the scrambling
+    horizon, longest : s; a trajectory unresolved at the horizon is followed further, up to `longest`
+    escape : size of the escape box in domain sizes
+    method : name of an integration method, or "auto"
+    rtol, atol : tolerances of one step, relative and in state units
+    ball_radius : of a target ball, in half-widths of the domain
+    dwell : s in a target ball; None where it follows from the linearisation
+    """
+
+    design: Annotated[str, BeforeValidator(word())] = "sobol"
+    samples: Annotated[
+        int, BeforeValidator(whole("a whole number from 1 to 2**40", lambda n: 1 <= n <= MOST_SAMPLES))
+    ] = 262144
+    seed: Annotated[
+        int, BeforeValidator(whole("a whole number from 0 to 2**63 - 1", lambda n: 0 <= n <= LARGEST_SEED))
+    ] = 1
+    horizon: _Positive = 60.0
+    longest: _Positive = 60.0 * LONGEST_PER_HORIZON
+    escape: _AtLeastOne = 10.0
+    method: Annotated[str, BeforeValidator(word())] = "auto"
+    rtol: Annotated[
+        float,
+        BeforeValidator(real("greater than 1e-13 and at most 0.1", lambda x: Decimal("1e-13") < x <= Decimal("0.1"))),
+    ] = 1e-6
+    atol: _Positive = 1e-9
+    ball_radius: Annotated[
+        float, BeforeValidator(real("greater than 0 and at most 0.5", lambda x: 0 < x <= Decimal("0.5")))
+    ] = 1e-3
+    dwell: _Positive | None = None
+
+    @model_validator(mode="before")
+    @classmethod
+    def _longest_follows_horizon(cls, table: dict[str, Any]) -> dict[str, Any]:
+        try:
+            return {"longest": LONGEST_PER_HORIZON * _exact_positive(table["horizon"]), **table}
+        except (KeyError, ValueError):  # no horizon is given, or its own check will refuse it
+            return table
+
+    @model_validator(mode="after")
+    def _longest_is_not_shorter(self) -> SweepTable:
+        if self.longest < self.horizon:
+            raise ValueError(
+                f"longest = {self.longest:g} must not be less than horizon = {self.horizon:g}; "
+                f"by default it is {LONGEST_PER_HORIZON} times the horizon"
+            )
+        return self
+
+
+class VerdictTable(_Table):
+    """Table [verdict]: what the release gate asks for.
+
+    Attributes
+    ----------
+    accept : "proved" or "supported"
+    confidence : of every stated interval
+    fraction : of the claimed set that must converge for "supported"
+    """
+
+    accept: Annotated[str, BeforeValidator(word("proved", "supported"))] = "proved"
+    confidence: Annotated[float, BeforeValidator(real("between 0.5 and 1", lambda x: Decimal("0.5") < x < 1))] = 0.99
+    fraction: _Share = 0.999
+
+
+@dataclass(frozen=True)
+class Configuration:
+    """Everything that a configuration file says.
+
+    Attributes
+    ----------
+    source : name of the file, for messages
+    text : as read
+    loop, bound, sweep, verdict : its tables, checked, with defaults filled in
+    """
+
+    source: str
+    text: str
+    loop: Loop
+    bound: BoundTable
+    sweep: SweepTable
+    verdict: VerdictTable
+
+    def resolved(self) -> dict[str, Any]:
+        """Return all that changes results as plain values, the same for every spelling of one study.
+
+        Numbers of the loop and of the bound are decimal strings, formulas are written back from their
+        trees. Title, comments, spaces and the order of keys other than states and signals leave no trace.
+        """
+        loop, bound = self.loop, self.bound
+        return {
+            "states": [[name, unit] for name, unit in zip(loop.states, loop.units, strict=True)],
+            "parameters": {name: decimal_text(loop.parameters[name].value) for name in sorted(loop.parameters)},
+            "signals": [[name, to_text(tree)] for name, tree in loop.signals.items()],
+            "dynamics": [to_text(tree) for tree in loop.dynamics],
+            "equilibrium": [decimal_text(value) for value in loop.guess],
+            "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "bound": {
+                "Q": _plain(bound.Q),
+                "P": _plain(bound.P),
+                "V": _plain(bound.V),
+                "level": _plain(bound.level),
+            },
+            "sweep": self.sweep.model_dump(),
+            "verdict": self.verdict.model_dump(),
+        }
+
+
+def _plain(value: str | Matrix | Decimal | Expression | None) -> Any:
+    match value:
+        case None | str():
+            return value
+        case Decimal():
+            return decimal_text(value)
+        case tuple():
+            return [[decimal_text(entry) for entry in row] for row in value]
+    return to_text(value)

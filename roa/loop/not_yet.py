@@ -1,0 +1,48 @@
+"""Words of the configuration that are known and that this version does not support yet.
+
+They are refused by name: a table that is ignored in silence would give a wrong verdict.
+"""
+
+from __future__ import annotations
+
+TABLES = {
+    "hold": "sample-and-hold of signals by a digital controller",
+    "limits": "limits on states and signals",
+    "disturbance": "disturbances that vary in an interval",
+    "tables": "look-up tables",
+}
+
+KEYS = {
+    ("dynamics", "python"): "dynamics as a Python function",
+    ("bound", "ball"): "a claim in the form of a ball",
+    ("bound", "scale"): "the scale of a claimed ball",
+    ("bound", "search"): "the search for better bounds",
+    ("bound", "inner"): "the inner level of an ultimate bound",
+    ("sweep", "accuracy"): "stopping at an accuracy of the share",
+    ("sweep", "goal"): "a goal in place of a number of samples",
+    ("sweep", "stop_outside"): "stopping outside by proof",
+}
+
+VALUES = {
+    ("sweep", "store", "outcomes"): 'use "all"',
+    ("sweep", "design", "rays"): 'use "sobol" or "grid"',
+    ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
+    ("sweep", "method", "dormand_prince8"): 'use "tsitouras5" or "auto"',
+    ("sweep", "method", "bogacki_shampine3"): 'use "tsitouras5" or "auto"',
+    ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
+}
+
+
+def table(name: str) -> str:
+    """Return the sentence that refuses a table."""
+    return f"not yet supported by this version ({TABLES[name]}); remove the table"
+
+
+def key(table_name: str, name: str) -> str:
+    """Return the sentence that refuses a key."""
+    return f"not yet supported by this version ({KEYS[table_name, name]}); remove the key"
+
+
+def value(table_name: str, name: str, word: str) -> str:
+    """Return the sentence that refuses a value."""
+    return f'"{word}" is not yet supported by this version; {VALUES[table_name, name, word]}'
