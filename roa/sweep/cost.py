@@ -1,0 +1,68 @@
+"""What a sweep will cost on this machine, from timed batches of its own starts. Decides no result."""
+
+from __future__ import annotations
+
+import time
+from dataclasses import dataclass
+
+import numpy as np
+
+from roa.kernel.lanes import Lanes
+from roa.kernel.outcomes import Outcome
+from roa.sweep.plan import Plan
+
+# Batches spread over the whole design: its first starts alone may all settle quickly.
+BATCHES, BATCH = 5, 1024
+# Drawing, writing and merging, and workers that wait for the last block, on top of the kernel's own time.
+OVERHEAD_SECONDS_PER_BYTE = 4e-9
+
+
+@dataclass(frozen=True)
+class Cost:
+    """Forecast for the whole sweep.
+
+    Attributes
+    ----------
+    samples, jobs : of the sweep
+    seconds : least and most, from the quickest and the slowest batch
+    disk : bytes, while blocks and merged file are both there
+    steps : mean of accepted steps a start
+    shares : of the timed starts, by outcome word
+    """
+
+    samples: int
+    jobs: int
+    seconds: tuple[float, float]
+    disk: int
+    steps: float
+    shares: dict[str, float]
+
+
+def forecast(plan: Plan, lanes: Lanes, jobs: int | None) -> Cost:
+    """Time batches of the design's own starts and extrapolate to all of them."""
+    from roa.sweep.executors.threads import cpu_count
+
+    workers = jobs or cpu_count()
+    count = min(BATCH, plan.samples)
+    firsts = np.linspace(0, plan.samples - count, BATCHES).astype(np.int64)
+    rates, steps, outcomes = [], [], []
+    for first in firsts:
+        points = plan.design.points(int(first), count)
+        begun = time.perf_counter()
+        trajectories = lanes.run(points)
+        rates.append((time.perf_counter() - begun) / count)
+        steps.append(float(trajectories.steps.mean()))
+        outcomes.append(np.bincount(trajectories.outcome, minlength=len(Outcome)))
+    disk = 2 * plan.samples * (8 * (3 * plan.configuration.loop.n + 1) + 6)
+    least, most = (
+        rate * plan.samples / workers + OVERHEAD_SECONDS_PER_BYTE * disk for rate in (min(rates), max(rates))
+    )
+    share = np.sum(outcomes, axis=0) / (count * len(firsts))
+    return Cost(
+        samples=plan.samples,
+        jobs=workers,
+        seconds=(least, most),
+        disk=disk,
+        steps=float(np.mean(steps)),
+        shares={outcome.word: float(share[outcome]) for outcome in Outcome if share[outcome]},
+    )

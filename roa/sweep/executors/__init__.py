@@ -1,0 +1,49 @@
+"""Executors, one a file: how blocks are spread over workers.
+
+An executor is a function `run(task, blocks, jobs)` that yields (block, result) in the order in which they finish:
+
+1. `blocks` is taken from step by step, so that its end (a request to stop) ends the work early;
+2. a block whose task raises does not end the others: the exception takes the place of its result;
+3. at most a few blocks a worker wait for the caller, however slow the caller is;
+4. closing the generator early leaves no worker behind.
+"""
+
+from __future__ import annotations
+
+import importlib
+import pkgutil
+from collections.abc import Callable, Iterable, Iterator
+from typing import Protocol
+
+from roa.kernel.trajectories import Trajectories
+from roa.sweep.block import Block
+
+Task = Callable[[Block], Trajectories | None]
+Result = Trajectories | Exception | None
+
+
+class Executor(Protocol):
+    """The contract above."""
+
+    def __call__(self, task: Task, blocks: Iterable[Block], jobs: int) -> Iterator[tuple[Block, Result]]:
+        """Yield every block with its result as it finishes."""
+        ...
+
+
+def available() -> list[str]:
+    """Return the names of the executors, sorted."""
+    return sorted(module.name for module in pkgutil.iter_modules(__path__))
+
+
+def load(name: str) -> Executor:
+    """Return the executor called `name`; only its file is imported."""
+    executor: Executor = importlib.import_module(f"{__name__}.{name}").run
+    return executor
+
+
+def attempt(task: Task, block: Block) -> Result:
+    """Return the task's result, or the exception that it raised."""
+    try:
+        return task(block)
+    except Exception as error:
+        return error

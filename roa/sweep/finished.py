@@ -1,0 +1,129 @@
+"""What of a sweep is finished: the merged samples, and beside them the blocks in files of their own."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from functools import partial
+from pathlib import Path
+
+from roa.errors import MachineError
+from roa.kernel.trajectories import Trajectories
+from roa.sweep import store
+from roa.sweep.block import Block, blocks_of
+from roa.sweep.header import Header
+from roa.sweep.run_folder import RunFolder
+from roa.sweep.samples import Samples, Stretch
+
+
+@dataclass(frozen=True)
+class Finished:
+    """Finished work on a sweep.
+
+    Attributes
+    ----------
+    folder : RunFolder
+    header : Header, of the sweep as it shall be
+    merged : Samples of `sweep.h5`, perhaps of a smaller sweep that is being extended; None where there is none
+    separate : blocks in files of their own, each found whole
+    """
+
+    folder: RunFolder
+    header: Header
+    merged: Samples | None
+    separate: frozenset[Block]
+
+    @property
+    def merged_count(self) -> int:
+        """Number of samples in `sweep.h5`."""
+        return self.merged.n if self.merged else 0
+
+    def holds(self, block: Block) -> bool:
+        """Whether nothing of the block is left to do."""
+        return block.stop <= self.merged_count or block in self.separate
+
+    def rows(self, block: Block) -> Trajectories:
+        """Return the rows of a finished block.
+
+        Raises
+        ------
+        MachineError
+            The store was damaged since it was looked through.
+        """
+        if block.stop <= self.merged_count and self.merged is not None:
+            return self.merged.read(block.first, block.count)
+        path = self.folder.blocks / block.file_name
+        rows = store.read_block(path, block, self.header.fingerprint)
+        if isinstance(rows, str):
+            raise MachineError(f"{path}: {rows}; `{self.folder.resume_command}` computes it again")
+        return rows
+
+
+def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) -> Finished:
+    """Find what is finished; files in `blocks/` that cannot be used are named to `say` and left where they are.
+
+    Raises
+    ------
+    MachineError
+        `sweep.h5` is damaged or belongs to another run.
+    """
+    merged = _merged(folder, header)
+    wanted = {block.file_name: block for block in blocks_of(header.samples, header.block_size)}
+    separate = set()
+    for path in sorted(folder.blocks.glob("*")):
+        block = wanted.get(path.name)
+        if block is None:
+            say(f"{path}: is no block of this sweep; ignored")
+            continue
+        rows = store.read_block(path, block, header.fingerprint)
+        if isinstance(rows, str):
+            say(f"{path}: {rows}; it counts as not done")
+        else:
+            separate.add(block)
+    return Finished(folder, header, merged, frozenset(separate))
+
+
+def open_partial(folder: RunFolder) -> Samples:
+    """Open the longest complete prefix of a sweep that is under way, or all of one that is done.
+
+    Quick blocks end first: what is finished behind a gap is left out, since it is no fair sample.
+
+    Raises
+    ------
+    MachineError
+        The header or `sweep.h5` is damaged.
+    """
+    header = Header.read(folder.plan)
+    finished = look_through(folder, header, say=lambda sentence: None)
+    return Samples(header, list(_prefix(finished)))
+
+
+def _prefix(finished: Finished) -> Iterator[Stretch]:
+    reached = finished.merged_count
+    if finished.merged is not None:
+        yield Stretch(0, reached, finished.merged.read)
+    for block in blocks_of(finished.header.samples, finished.header.block_size):
+        if block.stop <= reached:
+            continue
+        if block not in finished.separate:
+            return
+        # The first block beyond an extended sweep may hold the last samples of `sweep.h5` once more.
+        skip = max(reached - block.first, 0)
+        yield Stretch(block.first + skip, block.count - skip, partial(_rows_of, finished, block, skip))
+        reached = block.stop
+
+
+def _rows_of(finished: Finished, block: Block, skip: int, offset: int, count: int) -> Trajectories:
+    rows = finished.rows(block)
+    wanted = slice(skip + offset, skip + offset + count)
+    return Trajectories(**{name: getattr(rows, name)[wanted] for name in store.COLUMNS})
+
+
+def _merged(folder: RunFolder, header: Header) -> Samples | None:
+    path: Path = folder.sweep
+    if not path.exists():
+        return None
+    merged = store.open_samples(path)
+    if merged.attributes["fingerprint"] != header.fingerprint:
+        raise MachineError(f"{path}: belongs to another run than {folder.plan.name} beside it; move it away")
+    return merged

@@ -1,0 +1,180 @@
+"""Launch a sweep: find what is finished, run what is missing, merge.
+
+Resuming is launching again: the blocks that exist are skipped. Nothing here decides a result; that is a pure function
+of the plan and the index.
+"""
+
+from __future__ import annotations
+
+import shutil
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import replace
+
+from roa.errors import Interrupted, MachineError, UserError
+from roa.kernel.lanes import Lanes, compile_lanes
+from roa.kernel.trajectories import Trajectories
+from roa.sweep import executors, store
+from roa.sweep.block import Block, blocks_of, simulate
+from roa.sweep.executors import attempt
+from roa.sweep.finished import Finished, look_through
+from roa.sweep.header import Header
+from roa.sweep.plan import Plan
+from roa.sweep.progress import Both, Log, Progress
+from roa.sweep.run_folder import RunFolder, write_atomically
+from roa.sweep.stop import StopRequest, stop_on_signals
+
+
+def launch(plan: Plan, folder: RunFolder, jobs: int | None = None, progress: Progress | None = None) -> None:
+    """Sweep what is missing in the folder, then merge; afterwards `sweep.h5` holds all samples of the plan.
+
+    Parameters
+    ----------
+    plan : Plan
+    folder : RunFolder, new or with an earlier part of the same sweep in it
+    jobs : workers, >= 1; None for as many as this process may use processors
+    progress : Progress
+
+    Raises
+    ------
+    UserError
+        The folder holds a sweep with other results, or another process writes to it.
+    Interrupted
+        A signal asked to stop; what is finished is stored.
+    MachineError
+        The disk is full or damaged, or a block fails whenever it is tried.
+    """
+    if jobs is not None and jobs < 1:
+        raise UserError(f"--jobs {jobs}: must be at least 1")
+    progress = Both(progress or Progress(), Log(folder.log))
+    with stop_on_signals() as stop, _one_sentence(folder), folder.locked():
+        header = _begin(plan, folder)
+        finished = look_through(folder, header, progress.say)
+        missing = [block for block in blocks_of(plan.samples, plan.block_size) if not finished.holds(block)]
+        if missing:
+            _require_space(plan, folder, missing)
+            _sweep(plan, folder, missing, min(jobs or _processors(), len(missing)), stop, progress)
+            finished = replace(finished, separate=finished.separate | set(missing))
+        if finished.merged_count < plan.samples:
+            progress.say(f"merging {plan.samples:,} samples")
+            store.write_samples(folder.sweep, header, _all_rows(finished, stop))
+            progress.say(f"{folder.sweep} is written")
+        _remove_blocks(finished)
+
+
+@contextmanager
+def _one_sentence(folder: RunFolder) -> Iterator[None]:
+    """Turn what the system refuses, wherever in a launch, into a sentence."""
+    try:
+        yield
+    except OSError as error:
+        raise MachineError(f"{folder.path}: {error}; carry on with `{folder.resume_command}`") from error
+
+
+def _begin(plan: Plan, folder: RunFolder) -> Header:
+    """Write down what is swept, or see that it is what was begun here."""
+    header = Header.of(plan)
+    stored = Header.read(folder.plan) if folder.plan.exists() else None
+    if stored is not None:
+        stored.require_same_results(header, folder.path)
+        header = replace(header, created=stored.created, platform=stored.platform)
+    text = plan.configuration.text.encode()
+    if not folder.config.exists():
+        write_atomically(folder.config, text)
+    elif folder.config.read_bytes() != text:
+        raise UserError(f"{folder.config}: is another configuration than the one to be swept; give another folder")
+    if header != stored:
+        write_atomically(folder.plan, header.to_json())
+    return header
+
+
+def _processors() -> int:
+    from roa.sweep.executors.threads import cpu_count
+
+    return cpu_count()
+
+
+def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
+    """Refuse to begin what the disk cannot hold: the missing blocks, and all of the samples merged."""
+    row = 8 * (3 * plan.configuration.loop.n + 1) + 6
+    needed = row * (sum(block.count for block in missing) + plan.samples)
+    free = shutil.disk_usage(folder.path).free
+    if needed > free:
+        raise MachineError(
+            f"{folder.path}: the sweep needs {needed / 1e9:.2f} GB of disk, {free / 1e9:.2f} GB are free; "
+            f"make room, then `{folder.resume_command}`"
+        )
+
+
+def _sweep(
+    plan: Plan, folder: RunFolder, missing: list[Block], jobs: int, stop: StopRequest, progress: Progress
+) -> None:
+    """Run the missing blocks and store each as it finishes."""
+    starts = sum(block.count for block in missing)
+    progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {jobs} at a time; compiling the loop first")
+    lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
+    progress.begin(plan.samples - starts, plan.samples)
+    failed = []
+    run = executors.load("serial" if jobs == 1 else "threads")
+    for block, result in run(lambda block: _unless(stop, block, plan, lanes), _until(stop, missing), jobs):
+        if isinstance(result, Exception):
+            failed.append(block)
+        elif result is not None:
+            _store(block, result, plan, folder, progress)
+    for block in failed if not stop.made else []:
+        _retry(block, plan, lanes, folder, progress)
+    progress.end()
+    if stop.made:
+        raise _interrupted(folder)
+
+
+def _until(stop: StopRequest, blocks: list[Block]) -> Iterator[Block]:
+    for block in blocks:
+        if stop.made:
+            return
+        yield block
+
+
+def _unless(stop: StopRequest, block: Block, plan: Plan, lanes: Lanes) -> Trajectories | None:
+    """Run a block; not one that was handed out before, but had not begun when the stop was asked for."""
+    return None if stop.made else simulate(block, plan.design, lanes)
+
+
+def _retry(block: Block, plan: Plan, lanes: Lanes, folder: RunFolder, progress: Progress) -> None:
+    """Try a block that failed once more, alone: it may have failed for want of memory."""
+    progress.say(f"{block} failed and is tried again alone")
+    result = attempt(lambda block: simulate(block, plan.design, lanes), block)
+    if not isinstance(result, Trajectories):
+        progress.end()
+        raise MachineError(
+            f"{block} failed twice ({type(result).__name__}: {result}); all others are stored: "
+            f"`{folder.resume_command}` tries it again"
+        )
+    _store(block, result, plan, folder, progress)
+
+
+def _store(block: Block, rows: Trajectories, plan: Plan, folder: RunFolder, progress: Progress) -> None:
+    write_atomically(folder.blocks / block.file_name, store.encode_block(block, plan.fingerprint, rows))
+    progress.add(rows.outcome)
+
+
+def _all_rows(finished: Finished, stop: StopRequest) -> Iterator[tuple[Block, Trajectories]]:
+    for block in blocks_of(finished.header.samples, finished.header.block_size):
+        if stop.made:
+            raise _interrupted(finished.folder)
+        yield block, finished.rows(block)
+
+
+def _remove_blocks(finished: Finished) -> None:
+    """Remove the files of merged blocks, whole or not; foreign files stay, and the folder with them."""
+    folder = finished.folder.blocks
+    if not folder.is_dir():
+        return
+    for block in blocks_of(finished.header.samples, finished.header.block_size):
+        (folder / block.file_name).unlink(missing_ok=True)
+    if not any(folder.iterdir()):
+        folder.rmdir()
+
+
+def _interrupted(folder: RunFolder) -> Interrupted:
+    return Interrupted(f"interrupted; what is finished is stored, carry on with `{folder.resume_command}`")
