@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from roa.kernel import compiled, methods
+from roa.kernel import generated, methods
 from roa.kernel.integration import Integration
 from roa.kernel.lane_source import lane_source
 from roa.kernel.target import Target
@@ -87,4 +87,4 @@ def compile_lanes(loop: Loop, target: Target, integration: Integration) -> Lanes
     source = lane_source(loop, methods.load(integration.method), target)
     values = loop.values_of(loop.centre)
     constants = np.array([float(evaluate(tree, values)) for tree in source.constants], dtype=np.float64)
-    return Lanes(loop, target, integration, constants, compiled.load(source.text).advance)
+    return Lanes(loop, target, integration, constants, generated.load(source.text).advance)

@@ -24,6 +24,7 @@ class Target:
     dwell : s; time that a trajectory must stay in a ball, and be at its end at most half as far
         from the centre as at its entry
     elsewhere : float64 (k, n), other stable equilibria; each gets a ball of the same radius
+    note : why this kind and size, where that needs saying
     """
 
     kind: str
@@ -34,6 +35,7 @@ class Target:
     radius: float = 1e-3
     dwell: float = 0.0
     elsewhere: Array = field(default_factory=lambda: np.empty((0, 0)))
+    note: str = ""
 
     @property
     def words(self) -> str:
@@ -45,6 +47,8 @@ class Target:
                 f"a ball of radius {self.radius:g} half-widths of the domain about the equilibrium, not left for "
                 f"{self.dwell:.6g} s and at most half as far away at the end (not a proof)"
             )
+        if self.note:
+            entered += f"; {self.note}"
         if len(self.elsewhere):
             entered += f"; {len(self.elsewhere)} other stable equilibria watched by balls of the same kind"
         return entered
