@@ -1,0 +1,156 @@
+"""The command line: arguments, progress, exit codes. What the words do is in `roa.verbs`."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import os
+import shlex
+import sys
+from collections.abc import Callable, Sequence
+from typing import TYPE_CHECKING, Any, NoReturn
+
+from roa import __version__
+from roa.errors import RoaError
+
+if TYPE_CHECKING:
+    from roa.verbs import Result
+
+USAGE_ERROR, MACHINE_FAILED, INTERRUPTED = 2, 4, 130
+
+# Part of the contract, refused by name until it is there.
+NOT_YET = ("status", "--cluster", "--hours")
+
+EXIT_CODES = """\
+exit codes
+  0    done; for a claim: proved, or supported where the configuration accepts that
+  1    the claim is refuted; `replay`: the outcomes differ
+  2    the configuration or the command cannot be carried out; nothing was written
+  3    the claim is not settled: the text says what was reached and what is missing
+  4    the machine failed: disk full, store damaged
+  130  interrupted, resumable
+"""
+
+
+class _Parser(argparse.ArgumentParser):
+    """A parser whose errors are one sentence."""
+
+    def error(self, message: str) -> NoReturn:
+        print(f"{self.prog}: {message}; `{self.prog} --help` shows what is accepted", file=sys.stderr)
+        raise SystemExit(USAGE_ERROR)
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command line and return its exit code."""
+    given = sys.argv[1:] if arguments is None else list(arguments)
+    for word in given:
+        what = word.partition("=")[0]
+        if what in NOT_YET and (what.startswith("-") or what == given[0]):
+            print(f"roa: {what}: not yet supported by this version; leave it out", file=sys.stderr)
+            return USAGE_ERROR
+    options = vars(_parser().parse_args(given))
+    verb, as_json, quiet = options.pop("verb"), options.pop("json"), options.pop("quiet")
+    try:
+        result = _call(verb, options, quiet, shlex.join(["roa", *given]))
+    except RoaError as error:
+        for fault in error.faults:
+            print(f"roa: {fault}", file=sys.stderr)
+        return error.exit_code
+    except KeyboardInterrupt:
+        print("roa: interrupted", file=sys.stderr)
+        return INTERRUPTED
+    except OSError as error:
+        print(f"roa: the machine failed: {error}", file=sys.stderr)
+        return MACHINE_FAILED
+    except Exception as error:
+        if os.environ.get("ROA_TRACEBACK"):
+            raise
+        print(
+            f"roa: a fault of this program, {type(error).__name__}: {error}; please report it with what "
+            "`ROA_TRACEBACK=1 roa …` prints",
+            file=sys.stderr,
+        )
+        return MACHINE_FAILED
+    _print(json.dumps(result.document, indent=1, ensure_ascii=False) + "\n" if as_json else result.text)
+    return result.exit_code
+
+
+def _call(verb: str, options: dict[str, Any], quiet: bool, command: str) -> Result:
+    from roa import verbs
+    from roa.sweep.progress import on_standard_error
+
+    if verb not in ("init", "report"):
+        options["progress"] = on_standard_error(quiet)
+    if verb in ("run", "sweep", "resume", "bound", "validate"):
+        options["command"] = command
+    function: Callable[..., Result] = getattr(verbs, verb)
+    return function(**options)
+
+
+def _print(text: str) -> None:
+    try:
+        sys.stdout.write(text if text.endswith("\n") else text + "\n")
+        sys.stdout.flush()
+    except BrokenPipeError:
+        # Whoever read our output has gone; what was concluded is on disk and in the exit code.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = _Parser(
+        prog="roa",
+        description="Validate a Lyapunov bound of a nonlinear closed loop against its simulated basin.",
+        epilog=EXIT_CODES,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    parser.add_argument("--version", action="version", version=f"roa {__version__}")
+    verbs = parser.add_subparsers(dest="verb", required=True, metavar="COMMAND", parser_class=_Parser)
+
+    def verb(name: str, text: str, *options: str) -> argparse.ArgumentParser:
+        command = verbs.add_parser(name, help=text, description=text[0].upper() + text[1:] + ".")
+        for option in options:
+            command.add_argument(option, **_OPTIONS[option])
+        command.add_argument("--json", action="store_true", help="one JSON document on standard output")
+        command.add_argument("--quiet", action="store_true", help="no progress on standard error")
+        return command
+
+    config: dict[str, Any] = {"metavar": "CONFIG", "help": "configuration file (TOML)"}
+    folder: dict[str, Any] = {"metavar": "RUN", "help": "folder of a run"}
+    verb("init", "write a commented configuration to start from").add_argument("file", metavar="FILE")
+    verb("check", "is it sound, and what will it cost", "--samples", "--seed", "--jobs").add_argument(
+        "config", **config
+    )
+    for name, text in (("run", "the whole job: bound, sweep, comparison, figures, report, verdict"),
+                       ("sweep", "the simulation alone")):  # fmt: skip
+        verb(name, text, "--out", "--samples", "--seed", "--jobs").add_argument("config", **config)
+    verb("bound", "the analytic estimates alone", "--out", "--seed").add_argument("config", **config)
+    verb("validate", "judge the claimed bound", "--out", "--seed").add_argument("config", **config)
+    verb("resume", "carry on a sweep that stopped, or extend one", "--samples", "--jobs").add_argument("run", **folder)
+    replay = verb("replay", "integrate one start again by an independent integrator")
+    replay.add_argument("source", metavar="RUN|CONFIG", help="a run with INDEX, or a configuration with --from")
+    which = replay.add_mutually_exclusive_group(required=True)
+    which.add_argument("index", metavar="INDEX", type=int, nargs="?", help="number of a stored start")
+    which.add_argument("--from", dest="start", metavar="STATE=VALUE,…", help="any start, every state named")
+    verb("overlay", "draw the figures of a run again").add_argument("run", **folder)
+    verb("report", "write the report of a run again, from what is stored").add_argument("run", **folder)
+    return parser
+
+
+def _natural(text: str) -> int:
+    value = int(text)
+    if value < 1:
+        raise ValueError
+    return value
+
+
+_natural.__name__ = "whole number above zero"
+
+_OPTIONS: dict[str, dict[str, Any]] = {
+    "--out": {"metavar": "DIR", "help": "the run folder itself (default: results/<configuration>-<date>-<time>)"},
+    "--jobs": {"metavar": "N", "type": _natural, "help": "workers (default: the processors this process may use)"},
+    "--samples": {"metavar": "N", "type": _natural, "help": "number of starts, in place of the configuration's"},
+    "--seed": {"metavar": "N", "type": int, "help": "seed of the design and of every search"},
+}
+
+if __name__ == "__main__":
+    raise SystemExit(main())

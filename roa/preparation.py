@@ -1,0 +1,112 @@
+"""What a configuration leads to before anything is simulated at length.
+
+The chain of the first four rooms, each link made when it is asked for: equilibrium, bounds, pilot,
+target set, plan, lanes. No mathematics of its own.
+"""
+
+from __future__ import annotations
+
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from roa.basin.claim import Claim
+    from roa.bound.bounds import Bounds
+    from roa.kernel.integration import Integration
+    from roa.kernel.lanes import Lanes
+    from roa.kernel.target import Target
+    from roa.loop.configuration import Configuration
+    from roa.loop.equilibrium import Equilibrium
+    from roa.sweep.pilot import Pilot
+    from roa.sweep.plan import Plan
+    from roa.sweep.progress import Progress
+
+
+class Preparation:
+    """What a configuration leads to before anything is simulated at length; each part is made when it is needed.
+
+    Parameters
+    ----------
+    configuration : Configuration
+    samples, seed : in place of the configuration's, where given
+    say : told what takes a while
+    """
+
+    def __init__(
+        self, configuration: Configuration, samples: int | None, seed: int | None, progress: Progress | None = None
+    ) -> None:
+        from roa.loop.equilibrium import check_V, find_equilibrium, require_stable
+        from roa.sweep.progress import Progress
+
+        self.configuration = configuration
+        self.progress = progress or Progress()
+        self._samples, self._seed = samples, seed
+        self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
+        require_stable(self.equilibrium, configuration.loop, configuration.source)
+        check_V(configuration, self.equilibrium)
+
+    @cached_property
+    def bounds(self) -> Bounds:
+        """Lyapunov function and the bounds that are derived from it."""
+        from roa.bound.bounds import derive_bounds
+
+        return derive_bounds(self.configuration, self.equilibrium)
+
+    @cached_property
+    def pilot(self) -> Pilot:
+        """A few trajectories that show where else the loop comes to rest."""
+        from roa.sweep.pilot import fly_pilot
+
+        self.progress.say("compiling the loop (once for its formulas, some seconds; a moment from then on)")
+        return fly_pilot(self.configuration.loop, self.equilibrium, self._target_alone, self.integration)
+
+    @cached_property
+    def _target_alone(self) -> Target:
+        import numpy as np
+
+        from roa.bound.target_set import target_set
+
+        return target_set(self.configuration, self.equilibrium, self.bounds, np.empty((0, self.configuration.loop.n)))
+
+    @cached_property
+    def target(self) -> Target:
+        """The target set, other equilibria included."""
+        from dataclasses import replace
+
+        return replace(self._target_alone, elsewhere=self.pilot.elsewhere)
+
+    @cached_property
+    def integration(self) -> Integration:
+        """How every trajectory is integrated."""
+        from roa.sweep.plan import integration_of
+
+        return integration_of(self.configuration.sweep)
+
+    @cached_property
+    def plan(self) -> Plan:
+        """The plan of the sweep."""
+        from roa.sweep.plan import make_plan
+
+        return make_plan(self.configuration, self.equilibrium, self.bounds, self.target, self._samples, self._seed)
+
+    @cached_property
+    def lanes(self) -> Lanes:
+        """The compiled lanes."""
+        from roa.kernel.lanes import compile_lanes
+
+        return compile_lanes(self.configuration.loop, self.target, self.integration)
+
+    @property
+    def seed(self) -> int:
+        """Seed of the design and of every search."""
+        return self.configuration.sweep.seed if self._seed is None else self._seed
+
+    def claim(self) -> Claim | None:
+        """Judge the claimed level, where there is one."""
+        if self.configuration.bound.level is None:
+            return None
+        from roa.basin.claim import validate as judge
+
+        return judge(
+            self.configuration, self.bounds, self.target, self.integration, self.lanes.run, self.seed
+        )

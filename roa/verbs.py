@@ -1,0 +1,330 @@
+"""The verbs of the tool, in the order in which the rooms do their work; no mathematics of their own.
+
+Every verb takes paths and plain numbers and returns a `Result`; the command line prints it. What needs
+numba, scipy or matplotlib is imported when a verb runs.
+"""
+
+from __future__ import annotations
+
+import json
+import shlex
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from roa.errors import MachineError, UserError
+
+if TYPE_CHECKING:
+    from roa.loop.configuration import Configuration
+    from roa.preparation import Preparation
+    from roa.sweep.progress import Progress
+    from roa.sweep.run_folder import RunFolder
+    from roa.sweep.samples import Samples
+
+
+@dataclass(frozen=True)
+class Result:
+    """What a verb concluded.
+
+    Attributes
+    ----------
+    text : for people, answer first
+    document : for programs, as it stands in `verdict.json` where there is one
+    exit_code : 0 done, 1 refuted or in disagreement, 3 not settled
+    folder : where it is written, None where nothing is
+    """
+
+    text: str
+    document: dict[str, Any] = field(default_factory=dict)
+    exit_code: int = 0
+    folder: Path | None = None
+
+
+def init(file: str | Path) -> Result:
+    """Write a commented configuration to start from; an existing file is left alone."""
+    from roa.loop.starter import STARTER
+
+    path = Path(file)
+    try:
+        with path.open("x", encoding="utf-8") as new:
+            new.write(STARTER)
+    except FileExistsError:
+        raise UserError(f"{path}: exists already and is left as it is; give another name") from None
+    except OSError as error:
+        raise MachineError(f"{path}: cannot be written ({error.strerror})") from None
+    quoted = shlex.quote(str(path))
+    return Result(f"{path} is written.\nNext: edit it, then `roa check {quoted}` and `roa run {quoted}`.")
+
+
+def check(
+    config: str | Path, samples: int | None = None, seed: int | None = None, jobs: int | None = None,
+    progress: Progress | None = None,
+) -> Result:  # fmt: skip
+    """Say whether a configuration is sound, where it rests, and what its sweep will cost."""
+    from roa.report.soundness import soundness_document, soundness_text
+    from roa.sweep.cost import forecast
+
+    prepared = _prepare(config, samples, seed, progress)
+    cost = forecast(prepared.plan, prepared.lanes, jobs)
+    text = soundness_text(prepared.plan, cost, shlex.quote(str(config)))
+    return Result(text, soundness_document(prepared.plan, cost))
+
+
+def run(
+    config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
+    seed: int | None = None, progress: Progress | None = None, command: str = "roa.run",
+) -> Result:  # fmt: skip
+    """Do the whole job: bound, sweep, comparison, figures, report, verdict."""
+    prepared, folder = _sweep(config, out, jobs, samples, seed, progress)
+    return _conclude(prepared, folder, command, jobs, figures=True)
+
+
+def sweep(
+    config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
+    seed: int | None = None, progress: Progress | None = None, command: str = "roa.sweep",
+) -> Result:  # fmt: skip
+    """Do the simulation alone, with its counts and the bounds that it took its target set from."""
+    prepared, folder = _sweep(config, out, jobs, samples, seed, progress)
+    return _conclude(prepared, folder, command, jobs, figures=False)
+
+
+def resume(
+    run: str | Path, samples: int | None = None, jobs: int | None = None, progress: Progress | None = None,
+    command: str = "roa.resume",
+) -> Result:  # fmt: skip
+    """Carry on a sweep that stopped, or extend one that is done, then conclude it as `run` does."""
+    from roa.sweep.launch import launch
+
+    prepared, folder = _stored(run, samples, progress)
+    launch(prepared.plan, folder, jobs, progress)
+    return _conclude(prepared, folder, command, jobs, figures=True)
+
+
+def bound(
+    config: str | Path, out: str | Path | None = None, seed: int | None = None, progress: Progress | None = None,
+    command: str = "roa.bound",
+) -> Result:  # fmt: skip
+    """Derive the analytic estimates alone, without a simulation."""
+    from roa.basin.provenance import provenance
+    from roa.basin.verdict import conclude
+
+    prepared = _prepare(config, None, seed, progress)
+    verdict = conclude(
+        prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed)
+    )
+    return _written(prepared.configuration, verdict, out, 0)
+
+
+def validate(
+    config: str | Path, out: str | Path | None = None, seed: int | None = None, progress: Progress | None = None,
+    command: str = "roa.validate",
+) -> Result:  # fmt: skip
+    """Judge the claimed bound: prove it, break it, or say how far it is supported."""
+    from roa.basin.provenance import provenance
+    from roa.basin.verdict import conclude, exit_code
+
+    prepared = _prepare(config, None, seed, progress)
+    configuration = prepared.configuration
+    if configuration.bound.level is None:
+        raise UserError(
+            f"{configuration.source}: [bound]: there is no claim to validate; write `level = c` for the set V <= c"
+        )
+    claim = prepared.claim()
+    verdict = conclude(
+        configuration,
+        prepared.equilibrium,
+        prepared.bounds,
+        provenance(command, prepared.seed),
+        target=prepared.target,
+        claim=claim,
+    )
+    return _written(configuration, verdict, out, exit_code(claim, configuration.verdict.accept))
+
+
+def replay(
+    source: str | Path, index: int | None = None, start: str | None = None, progress: Progress | None = None
+) -> Result:
+    """Integrate one start again by an independent integrator: a stored one, or any start of a configuration.
+
+    Parameters
+    ----------
+    source : a run folder with `index`, or a configuration with `start`
+    start : "state=value,…" for every state
+    """
+    from roa.basin.replay import replay as replay_stored
+    from roa.basin.replay import replay_start
+    from roa.report.replay_text import replay_document, replay_text
+
+    if index is not None:
+        prepared, folder = _stored(source, None, progress)
+        samples = _samples_of(folder)
+        if not 0 <= index < samples.n:
+            raise UserError(f"{source}: has no sample {index}; it holds 0 to {samples.n - 1}")
+        found = replay_stored(samples, index, prepared.configuration.loop, prepared.target, prepared.integration)
+    else:
+        prepared = _prepare(source, None, None, progress)
+        point = _start_of(prepared.configuration, start or "")
+        found = replay_start(
+            point, prepared.lanes.run, prepared.configuration.loop, prepared.target, prepared.integration
+        )
+    loop = prepared.configuration.loop
+    return Result(replay_text(found, loop), replay_document(found, loop), 0 if found.agrees else 1)
+
+
+def overlay(run: str | Path, progress: Progress | None = None) -> Result:
+    """Draw the figures of a run again."""
+    prepared, folder = _stored(run, None, progress)
+    verdict = _verdict_of(folder)
+    files = _draw(prepared, folder, verdict)
+    return Result("\n".join(str(file) for file in files), {"figures": [str(file) for file in files]}, 0, folder.path)
+
+
+def report(run: str | Path) -> Result:
+    """Write the report of a run again, from what is stored."""
+    from roa.report.html import write_report
+    from roa.sweep.run_folder import RunFolder
+
+    folder = RunFolder.existing(Path(run))
+    _verdict_of(folder)
+    write_report(folder)
+    return Result(str(folder.report), {"report": str(folder.report)}, 0, folder.path)
+
+
+def _prepare(config: str | Path, samples: int | None, seed: int | None, progress: Progress | None) -> Preparation:
+    from roa.loop.read import read
+    from roa.preparation import Preparation
+
+    return Preparation(read(Path(config)), samples, seed, progress)
+
+
+def _sweep(
+    config: str | Path, out: str | Path | None, jobs: int | None, samples: int | None, seed: int | None,
+    progress: Progress | None,
+) -> tuple[Preparation, RunFolder]:  # fmt: skip
+    from roa.sweep.launch import launch
+    from roa.sweep.run_folder import RunFolder
+
+    prepared = _prepare(config, samples, seed, progress)
+    folder = RunFolder.new(None if out is None else Path(out), str(config))
+    launch(prepared.plan, folder, jobs, progress)
+    return prepared, folder
+
+
+def _stored(run: str | Path, samples: int | None, progress: Progress | None) -> tuple[Preparation, RunFolder]:
+    """Prepare a run again from its own folder, with the seed and the samples that it was begun with."""
+    from roa.loop.read import read_text
+    from roa.preparation import Preparation
+    from roa.sweep.header import Header
+    from roa.sweep.run_folder import RunFolder
+
+    folder = RunFolder.existing(Path(run))
+    header = Header.read(folder.plan)
+    configuration = read_text(header.config, str(folder.config))
+    return Preparation(configuration, samples or header.samples, header.seed, progress), folder
+
+
+def _samples_of(folder: RunFolder) -> Samples:
+    from roa.sweep.store import open_samples
+
+    if not folder.sweep.exists():
+        raise UserError(f"{folder.path}: the sweep is not finished; carry it on with `{folder.resume_command}`")
+    return open_samples(folder.sweep)
+
+
+def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int | None, figures: bool) -> Result:
+    """Judge what the folder holds; write verdict, figures and report."""
+    from roa.basin.provenance import provenance
+    from roa.basin.verdict import conclude, exit_code
+    from roa.report.html import write_report
+
+    samples, plan = _samples_of(folder), prepared.plan
+    claim = prepared.claim()
+    verdict = conclude(
+        prepared.configuration,
+        prepared.equilibrium,
+        prepared.bounds,
+        provenance(command, prepared.seed, samples.n, jobs, plan.fingerprint),
+        target=prepared.target,
+        samples=samples,
+        claim=claim,
+    )
+    _write_verdict(folder, verdict)
+    if figures:
+        _draw(prepared, folder, verdict)
+        write_report(folder)
+    return _result(folder, verdict, exit_code(claim, prepared.configuration.verdict.accept))
+
+
+def _draw(prepared: Preparation, folder: RunFolder, verdict: dict[str, Any]) -> tuple[Path, ...]:
+    from roa.report.draw import draw_figures
+
+    return draw_figures(
+        folder.figures,
+        prepared.configuration,
+        verdict,
+        _samples_of(folder),
+        lambda points: prepared.lanes.run(points).outcome,
+        prepared.bounds.V.value,
+    )
+
+
+def _written(configuration: Configuration, verdict: dict[str, Any], out: str | Path | None, code: int) -> Result:
+    """Write the verdict of a command without a sweep into a folder of its own."""
+    from roa.sweep.run_folder import RunFolder, write_atomically
+
+    folder = RunFolder.new(None if out is None else Path(out), configuration.source)
+    with folder.locked():
+        write_atomically(folder.config, configuration.text.encode())
+        _write_verdict(folder, verdict)
+    return _result(folder, verdict, code)
+
+
+def _write_verdict(folder: RunFolder, verdict: dict[str, Any]) -> None:
+    from roa.sweep.run_folder import write_atomically
+
+    write_atomically(folder.verdict, (json.dumps(verdict, indent=1, ensure_ascii=False) + "\n").encode())
+
+
+def _verdict_of(folder: RunFolder) -> dict[str, Any]:
+    try:
+        verdict: dict[str, Any] = json.loads(folder.verdict.read_text(encoding="utf-8"))
+    except FileNotFoundError:
+        raise UserError(
+            f"{folder.path}: holds no verdict yet; carry the sweep on with `{folder.resume_command}`"
+        ) from None
+    except ValueError as error:
+        raise MachineError(
+            f"{folder.verdict}: is damaged ({error}); `{folder.resume_command}` writes it again"
+        ) from None
+    return verdict
+
+
+def _result(folder: RunFolder, verdict: dict[str, Any], code: int) -> Result:
+    from roa.report.summary import summary
+
+    names = [folder.sweep, folder.verdict, folder.report, folder.figures]
+    files = [path.name + ("/" if path.is_dir() else "") for path in names if path.exists()]
+    return Result(summary(verdict, files, str(folder.path)), verdict, code, folder.path)
+
+
+def _start_of(configuration: Configuration, text: str) -> Any:
+    """Read "state=value,…" into a start, float64 (n,)."""
+    import numpy as np
+
+    states = configuration.loop.states
+    accepted = ",".join(f"{name}=…" for name in states)
+    values: dict[str, float] = {}
+    for part in text.split(","):
+        name, equals, number = part.partition("=")
+        try:
+            values[name.strip()] = float(number)
+        except ValueError:
+            raise UserError(
+                f"--from: found {part.strip()!r}; give a number for every state: --from {accepted}"
+            ) from None
+        if not equals or name.strip() not in states or not np.isfinite(values[name.strip()]):
+            raise UserError(f"--from: found {part.strip()!r}; give a number for every state: --from {accepted}")
+    missing = [name for name in states if name not in values]
+    if missing:
+        raise UserError(f"--from: {', '.join(missing)} missing; give a number for every state: --from {accepted}")
+    return np.array([values[name] for name in states])

@@ -1,0 +1,67 @@
+"""The shipped configurations, run end to end at a small size, against what is known of them."""
+
+from pathlib import Path
+
+import pytest
+
+from roa import verbs
+
+CONFIGS = Path(__file__).parents[2] / "configs"
+SAMPLES = 16384
+
+
+@pytest.fixture(scope="module")
+def verdicts(tmp_path_factory):
+    folder = tmp_path_factory.mktemp("runs")
+    found = {}
+    for name in ("mast", "van_der_pol", "cart"):
+        result = verbs.run(CONFIGS / f"{name}.toml", out=folder / name, samples=SAMPLES)
+        assert result.exit_code == 0
+        found[name] = result.document
+    return found
+
+
+def bound_named(verdict, name):
+    return next(bound for bound in verdict["bounds"] if bound["name"] == name)
+
+
+def test_every_configuration_is_covered():
+    assert {path.stem for path in CONFIGS.glob("*.toml")} == {"mast", "van_der_pol", "cart"}
+
+
+def test_mast(verdicts):
+    # Reference figures computed independently of this program.
+    verdict = verdicts["mast"]
+    assert verdict["basin"]["fraction"] == pytest.approx(0.4545, abs=0.003)
+    counts = verdict["basin"]["counts"]
+    assert counts["converged"] + counts["escaped"] == SAMPLES
+    contact, norm = bound_named(verdict, "contact level"), bound_named(verdict, "norm bound")
+    assert contact["level"] == pytest.approx(0.077786, rel=1e-4)
+    assert contact["strength"] == "estimated"
+    assert contact["volume_ratio"] == pytest.approx(0.076, abs=0.001)
+    assert norm["level"] == pytest.approx(0.0042, abs=1e-4)
+    assert norm["strength"] == "proved"
+
+
+def test_van_der_pol(verdicts):
+    # Khalil, Nonlinear Systems, 3rd ed. 2002, from memory; area and contact level computed independently.
+    verdict = verdicts["van_der_pol"]
+    low, high = verdict["basin"]["volume_interval"]
+    assert low <= 13.722219668 <= high
+    assert bound_named(verdict, "contact level")["level"] == pytest.approx(2.304478, rel=1e-4)
+    norm = bound_named(verdict, "norm bound")
+    assert 0.80 < norm["level"] <= 0.802850
+    assert norm["strength"] == "proved"
+
+
+def test_cart(verdicts):
+    # Computed independently of this program.
+    verdict = verdicts["cart"]
+    assert verdict["basin"]["fraction"] == pytest.approx(0.506, abs=0.01)
+    assert bound_named(verdict, "contact level")["level"] == pytest.approx(0.0476, abs=1e-4)
+
+
+@pytest.mark.parametrize("name", ["mast", "van_der_pol", "cart"])
+def test_every_bound_lies_below_the_unfalsified_level(verdicts, name):
+    levels = {bound["name"]: bound["level"] for bound in verdicts[name]["bounds"]}
+    assert 0 < levels["norm bound"] < levels["contact level"] < levels["unfalsified level"]
