@@ -1,0 +1,45 @@
+"""What every verdict leaves open, and what this one leaves open besides."""
+
+from __future__ import annotations
+
+from roa.basin.size import Basin
+from roa.kernel.target import Target
+from roa.loop.equilibrium import Equilibrium
+
+ALWAYS = (
+    "A certificate is about the model in the configuration, not about the machine.",
+    "Simulation looks at samples and does not prove: a start that was not drawn may end differently.",
+    "Every number covers the configured domain, parameters and horizon and says nothing of anything outside them.",
+    "Where people can be hurt, this result is one input to a safety case under the local codes and the responsible "
+    "licensed engineer.",
+)
+
+
+def cautions(equilibrium: Equilibrium, target: Target | None, basin: Basin | None) -> list[str]:
+    """Return the cautions of a verdict, those of every verdict first."""
+    return [*ALWAYS, *_of_the_loop(equilibrium, target), *_of_the_sweep(basin)]
+
+
+def _of_the_loop(equilibrium: Equilibrium, target: Target | None) -> list[str]:
+    found = []
+    if equilibrium.stability == "marginal":
+        found.append(
+            "The linearisation has an eigenvalue on the imaginary axis: it gives no certificate, and convergence is "
+            "judged by simulation alone."
+        )
+    if target is not None and target.kind == "ball":
+        found.append(f"No target set is proved, so that a trajectory converged means: it entered {target.words}.")
+    return found
+
+
+def _of_the_sweep(basin: Basin | None) -> list[str]:
+    if basin is None:
+        return []
+    found = []
+    if basin.partial:
+        found.append(f"The sweep is partial: {basin.samples} samples are what the numbers stand on.")
+    open_ends = {word: basin.counts[word] for word in ("unresolved", "failed") if basin.counts[word]}
+    if open_ends:
+        counted = " and ".join(f"{count} {word}" for word, count in open_ends.items())
+        found.append(f"{counted} of {basin.samples} samples are counted as not converging.")
+    return found

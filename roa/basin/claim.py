@@ -1,0 +1,275 @@
+"""Judge a claim, that {V <= level} lies in the basin: prove it, break it, or say how far it is supported."""
+
+from __future__ import annotations
+
+import shlex
+from dataclasses import dataclass
+from decimal import ROUND_CEILING, Context, Decimal
+from enum import StrEnum
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from roa.basin.claimed_set import ClaimedSet
+from roa.basin.counterexample import (
+    Counterexample,
+    Run,
+    confirm,
+    find_increase,
+    find_not_positive,
+    search,
+    suspects_of,
+)
+from roa.basin.intervals import clopper_pearson_upper, success_run_samples
+from roa.bound.bounds import Bounds
+from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
+from roa.bound.point_checks import positive_definite
+from roa.bound.statement import Bound, Strength
+from roa.kernel.integration import Integration
+from roa.kernel.outcomes import Outcome
+from roa.kernel.target import Target
+from roa.kernel.trajectories import Trajectories
+from roa.loop.configuration import Configuration
+
+Array = NDArray[np.float64]
+
+# Streams of random numbers, apart from each other and (by the first number) from those of the designs: points that
+# helped to look for a counterexample never count as independent draws.
+SEARCH_STREAM, DRAW_STREAM, DECREASE_STREAM = (1, 0), (1, 1), (1, 2)
+
+
+class Result(StrEnum):
+    """What became of a claim; the words are a contract of `verdict.json`."""
+
+    PROVED = "proved"
+    SUPPORTED = "supported"
+    REFUTED = "refuted"
+    NOT_SETTLED = "not_settled"
+
+
+class Decrease(StrEnum):
+    """What is known of V̇ < 0 on the claimed set; the words are a contract of `verdict.json`."""
+
+    PROVED = "proved"
+    REFUTED = "refuted"
+    UNDECIDED = "undecided"
+
+
+@dataclass(frozen=True)
+class Claim:
+    """A judged claim.
+
+    Attributes
+    ----------
+    result, decrease : see the enumerations
+    reason : one sentence
+    V, level : the set {V <= level}, its connected part that holds the equilibrium
+    confidence, fraction : what *supported* asks for
+    counterexample : where refuted by a trajectory
+    replay : how to see the counterexample again, a command line
+    witness : float64 (n,), a point of the set with V̇ > 0, where the decrease is refuted
+    largest_level_inside : where the set leaves the domain
+    draws, failures : independent draws, and those of them that did not converge; 0 draws where none were needed
+    nonconverging_fraction_upper : one-sided exact binomial limit from them
+    """
+
+    result: Result
+    decrease: Decrease
+    reason: str
+    V: LyapunovFunction
+    level: float
+    confidence: float
+    fraction: float
+    counterexample: Counterexample | None = None
+    replay: str | None = None
+    witness: Array | None = None
+    largest_level_inside: float | None = None
+    draws: int = 0
+    failures: int = 0
+    nonconverging_fraction_upper: float | None = None
+
+    @property
+    def strength(self) -> Strength:
+        """Strength of the claim as a bound: one that is not settled or refuted stands on nothing but the paper."""
+        by_result = {Result.PROVED: Strength.PROVED, Result.SUPPORTED: Strength.SUPPORTED}
+        return by_result.get(self.result, Strength.ESTIMATED)
+
+    @property
+    def bound(self) -> Bound:
+        """The claim as a bound, to be compared with the basin."""
+        return Bound("claim", self.V, self.level, self.strength, self.reason)
+
+
+def validate(
+    configuration: Configuration,
+    bounds: Bounds,
+    target: Target,
+    integration: Integration,
+    run: Run,
+    seed: int,
+) -> Claim:
+    """Judge the claimed level of the configuration; equal arguments give equal answers.
+
+    Parameters
+    ----------
+    configuration : with a level in its table [bound]
+    bounds : those derived for the same V; the norm bound is what can prove the claim
+    target, integration : rules of the outcomes
+    run : the lanes, starts float64 (m, n) -> Trajectories
+    seed : of the searches and draws
+    """
+    level = configuration.bound.level
+    assert level is not None
+    claimed = ClaimedSet(bounds.V, _at_most(level))
+    case = _Case(configuration, claimed, target, integration, run, seed)
+    return (
+        _not_positive_definite(case) or _leaves_the_domain(case) or _proved(case, level, bounds) or _by_simulation(case)
+    )
+
+
+@dataclass(frozen=True)
+class _Case:
+    """What every step of the judgement needs."""
+
+    configuration: Configuration
+    claimed: ClaimedSet
+    target: Target
+    integration: Integration
+    run: Run
+    seed: int
+
+    def stream(self, key: tuple[int, ...]) -> np.random.Generator:
+        return np.random.default_rng(np.random.SeedSequence(self.seed, spawn_key=key))
+
+    @cached_property
+    def witness(self) -> Array | None:
+        """A point of the set with V̇ > 0, if one was found."""
+        return find_increase(self.claimed, self.stream(DECREASE_STREAM))
+
+    @property
+    def decrease(self) -> Decrease:
+        return Decrease.UNDECIDED if self.witness is None else Decrease.REFUTED
+
+    def judged(self, result: Result, decrease: Decrease, reason: str, **more: Any) -> Claim:
+        verdict, level = self.configuration.verdict, self.configuration.bound.level
+        assert level is not None
+        return Claim(
+            result, decrease, reason, self.claimed.V, float(level), verdict.confidence, verdict.fraction, **more
+        )
+
+    def refuted(self, found: Counterexample) -> Claim:
+        ending = "escaped" if found.decision.outcome is Outcome.ESCAPED else "came to rest at another equilibrium"
+        reason = (
+            f"A start inside the claimed set, with V = {found.V:.6g}, {ending}, and so it does when it is integrated "
+            f"by {found.decision.method} at ten times tighter tolerance."
+        )
+        replay = replay_command(self.configuration, found.initial)
+        witness = self.witness
+        return self.judged(Result.REFUTED, self.decrease, reason, counterexample=found, replay=replay, witness=witness)
+
+
+def _at_most(level: Decimal) -> float:
+    """The largest float that does not exceed the level: what lies in its set lies in the claimed one."""
+    nearest = float(level)
+    return nearest if Decimal(nearest) <= level else float(np.nextafter(nearest, 0.0))
+
+
+def replay_command(configuration: Configuration, start: Array) -> str:
+    """The command line that integrates a start, float64 (n,), again: every digit of it, since it is stored nowhere."""
+    text = ",".join(f"{name}={float(x)!r}" for name, x in zip(configuration.loop.states, start, strict=True))
+    return f"roa replay {shlex.quote(configuration.source)} --from {shlex.quote(text)}"
+
+
+def _not_positive_definite(case: _Case) -> Claim | None:
+    V = case.claimed.V
+    if isinstance(V, Quadratic):
+        definite = positive_definite(V.enclosed_P)
+        if definite == "proved":
+            return None
+        smallest = float(np.linalg.eigvalsh(V.P).min())
+        if definite == "refuted":
+            reason = f"P is not positive definite: its smallest eigenvalue is {smallest:.6g}."
+            return case.judged(Result.REFUTED, Decrease.UNDECIDED, reason)
+        reason = f"Rounding leaves open whether P is positive definite: its smallest eigenvalue is near {smallest:.3g}."
+        return case.judged(Result.NOT_SETTLED, Decrease.UNDECIDED, reason)
+    lowest = find_not_positive(case.claimed, case.stream(DECREASE_STREAM))
+    if lowest is None:
+        return None
+    point = ", ".join(f"{name} = {x:.6g}" for name, x in zip(case.configuration.loop.states, lowest, strict=True))
+    reason = f"V is not positive definite: it is not above zero at {point}, inside the claimed set."
+    return case.judged(Result.REFUTED, Decrease.UNDECIDED, reason)
+
+
+def _leaves_the_domain(case: _Case) -> Claim | None:
+    claimed = case.claimed
+    if claimed.is_inside:
+        return None
+    largest = claimed.largest_level_inside
+    reason = f"The claimed set leaves the domain; the largest level of this V that stays inside is {largest:.6g}."
+    return case.judged(Result.NOT_SETTLED, case.decrease, reason, witness=case.witness, largest_level_inside=largest)
+
+
+def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
+    norm_bound = bounds.named("norm bound")
+    if norm_bound is None or norm_bound.strength is not Strength.PROVED or level > Decimal(norm_bound.level):
+        return None
+    reason = f"The level is at most that of the norm bound, {norm_bound.level:.6g}, up to which V̇ < 0 is proved."
+    return case.judged(Result.PROVED, Decrease.PROVED, reason)
+
+
+def _by_simulation(case: _Case) -> Claim:
+    suspects = search(case.claimed, case.run, case.stream(SEARCH_STREAM))
+    found = confirm(case.claimed, suspects, case.target, case.integration)
+    if found is not None:
+        return case.refuted(found)
+    verdict = case.configuration.verdict
+    starts = case.claimed.draw(success_run_samples(verdict.fraction, verdict.confidence), case.stream(DRAW_STREAM))
+    if starts is None:
+        reason = "No counterexample was found, and the set is too small a part of the domain to be drawn from."
+        return case.judged(Result.NOT_SETTLED, case.decrease, reason, witness=case.witness)
+    trajectories = case.run(starts)
+    found = confirm(case.claimed, suspects_of(case.claimed, trajectories), case.target, case.integration)
+    return case.refuted(found) if found is not None else _by_draws(case, trajectories)
+
+
+def _by_draws(case: _Case, trajectories: Trajectories) -> Claim:
+    """Supported or not settled, by independent draws of which none is a confirmed counterexample."""
+    verdict = case.configuration.verdict
+    draws = len(trajectories)
+    failures = int(np.sum(trajectories.outcome != Outcome.CONVERGED))
+    upper = clopper_pearson_upper(failures, draws, verdict.confidence)
+    supported = upper <= 1 - verdict.fraction
+    against = "all converged" if not failures else f"{failures} did not converge ({_by_outcome(trajectories)})"
+    reason = (
+        f"Of {draws} independent draws from the claimed set {against}, so at most {_percent_up(upper)} of it does not, "
+        f"at {100 * verdict.confidence:g} % confidence"
+    )
+    if not supported:
+        reason += f", where {_percent_up(1 - verdict.fraction)} is allowed"
+    if failures and not isinstance(case.claimed.V, Quadratic):
+        reason += "; the draws may include parts of {V <= level} apart from the equilibrium, which is not the claim"
+    if case.decrease is Decrease.REFUTED:
+        reason += "; V̇ > 0 at a point of the set, so the set may be safe but the argument for it is wrong"
+    return case.judged(
+        Result.SUPPORTED if supported else Result.NOT_SETTLED,
+        case.decrease,
+        f"{reason}.",
+        witness=case.witness,
+        draws=draws,
+        failures=failures,
+        nonconverging_fraction_upper=upper,
+    )
+
+
+def _percent_up(share: float) -> str:
+    """A share in per cent to three digits, rounded up; twelve digits first, so that 1 - 0.999 is 0.1 %."""
+    exact = Context(prec=12).create_decimal(Decimal(100 * share))
+    return f"{float(Context(prec=3, rounding=ROUND_CEILING).plus(exact)):g} %"
+
+
+def _by_outcome(trajectories: Trajectories) -> str:
+    counts = np.bincount(trajectories.outcome, minlength=len(Outcome))
+    others = [f"{counts[outcome]} {outcome.word}" for outcome in Outcome if outcome is not Outcome.CONVERGED]
+    return ", ".join(text for text in others if not text.startswith("0 "))

@@ -1,0 +1,95 @@
+"""The size of the basin: the share of the domain that converges, its volume, and the counts behind them."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from roa.basin.intervals import Interval
+from roa.basin.share import Share
+from roa.kernel.outcomes import Outcome, Reason
+from roa.kernel.trajectories import Trajectories
+from roa.loop.model import Loop
+from roa.sweep.samples import Samples
+
+# The basin is all starts that converge without leaving the escape box; limits are a question of their own.
+IN_BASIN = (Outcome.CONVERGED, Outcome.CONVERGED_OVER_LIMIT)
+
+
+@dataclass(frozen=True)
+class Basin:
+    """What a sweep says of the size of the basin inside the domain; every number is *simulated*.
+
+    Attributes
+    ----------
+    share : share of the samples in the basin, by replicate
+    counts : by outcome word, every outcome listed
+    reasons : by reason word, only those that occurred
+    partial : whether the sweep is to have more samples than these
+    confidence : of the intervals, two-sided
+    loop : Loop
+    """
+
+    share: Share
+    counts: Mapping[str, int]
+    reasons: Mapping[str, int]
+    partial: bool
+    confidence: float
+    loop: Loop
+
+    @property
+    def samples(self) -> int:
+        """Number of starts."""
+        return self.share.samples
+
+    @property
+    def fraction(self) -> float:
+        """Share of the domain."""
+        return self.share.fraction
+
+    @cached_property
+    def interval(self) -> Interval:
+        """Interval of the share."""
+        return self.interval_at(self.confidence)
+
+    def interval_at(self, confidence: float) -> Interval:
+        """Interval of the share at another confidence."""
+        return self.share.interval(self.loop.n, confidence)
+
+    @property
+    def volume(self) -> float:
+        """Volume of the basin inside the domain, product of the state units."""
+        return self.fraction * self.loop.domain_volume
+
+    @property
+    def volume_interval(self) -> Interval:
+        """Interval of the volume."""
+        return self.interval.scaled(self.loop.domain_volume)
+
+
+def in_basin(trajectories: Trajectories) -> NDArray[np.bool_]:
+    """Which of m trajectories start in the basin, bool (m,)."""
+    return np.isin(trajectories.outcome, IN_BASIN)
+
+
+def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
+    """Measure the basin in one pass over the stored samples; the memory does not grow with their number."""
+    share = Share(samples.design, samples.replicates)
+    outcomes = np.zeros(len(Outcome), dtype=np.int64)
+    reasons = np.zeros(len(Reason), dtype=np.int64)
+    for first, trajectories in samples.chunks():
+        share.add(first, in_basin(trajectories))
+        outcomes += np.bincount(trajectories.outcome, minlength=len(Outcome))
+        reasons += np.bincount(trajectories.reason, minlength=len(Reason))
+    return Basin(
+        share=share,
+        counts={outcome.word: int(outcomes[outcome]) for outcome in Outcome},
+        reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
+        partial=samples.partial,
+        confidence=confidence,
+        loop=loop,
+    )

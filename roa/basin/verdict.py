@@ -1,0 +1,220 @@
+"""The verdict: everything that was concluded, with its strength, as the nested values of `verdict.json`."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+
+from roa.basin.cautions import cautions
+from roa.basin.claim import Claim, Result
+from roa.basin.comparison import Comparison, Ratio, compare
+from roa.basin.intervals import Interval
+from roa.basin.levels import Levels, by_level
+from roa.basin.size import Basin, measure
+from roa.bound.bounds import Bounds
+from roa.bound.lyapunov_function import Quadratic
+from roa.bound.statement import Bound, Strength
+from roa.bound.volume import volume_inside
+from roa.kernel.target import Target
+from roa.loop.configuration import Configuration
+from roa.loop.equilibrium import Equilibrium
+from roa.sweep.samples import Samples
+
+EXIT_CODES = {Result.PROVED: 0, Result.REFUTED: 1, Result.NOT_SETTLED: 3}
+
+
+def exit_code(claim: Claim | None, accept: str) -> int:
+    """Exit code of a verdict: 0 where there is no claim, or where it reached what `accept` asks for."""
+    if claim is None:
+        return 0
+    if claim.result is Result.SUPPORTED:
+        return 0 if accept == "supported" else 3
+    return EXIT_CODES[claim.result]
+
+
+def conclude(
+    configuration: Configuration,
+    equilibrium: Equilibrium,
+    bounds: Bounds,
+    provenance: Mapping[str, Any],
+    target: Target | None = None,
+    samples: Samples | None = None,
+    claim: Claim | None = None,
+) -> dict[str, Any]:
+    """Measure what the samples say, put it beside bounds and claim, and return the verdict.
+
+    Keys are those of `verdict.json`; what a command did not look at is null. Every group of numbers has a
+    `strength`. Floats are finite, or null.
+
+    Parameters
+    ----------
+    configuration, equilibrium, bounds : of the loop
+    provenance : as made by `roa.basin.provenance`
+    target : what entering meant, where something was simulated
+    samples : of the sweep, if there was one
+    claim : judged, if one was
+    """
+    confidence = configuration.verdict.confidence
+    basin = levels = None
+    stated = list(bounds.stated)
+    comparisons: Sequence[Comparison] = ()
+    if samples is not None:
+        basin = measure(samples, configuration.loop, confidence)
+        levels = by_level(samples, bounds.V, confidence)
+        stated += [levels.bound] if levels.bound else []
+        comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
+    by_name = {comparison.bound.name: comparison for comparison in comparisons}
+    loop = configuration.loop
+    verdict = {
+        "title": loop.title,
+        "states": loop.states,
+        "units": loop.units,
+        "domain": loop.box,
+        "equilibrium": equilibrium.x,
+        "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues],
+        "stability": equilibrium.stability,
+        "confidence": confidence,
+        "claim": None if claim is None else _claim(claim),
+        "bounds": [_bound(bound, by_name.get(bound.name)) for bound in stated],
+        "basin": None if basin is None else _basin(basin),
+        "comparison": _comparison(stated, claim, by_name),
+        "levels": [] if levels is None else _levels(levels),
+        "target": None if target is None else target.words,
+        "cautions": cautions(equilibrium, target, basin),
+        "provenance": provenance,
+    }
+    plain: dict[str, Any] = _plain(verdict)
+    return plain
+
+
+def _claim(claim: Claim) -> dict[str, Any]:
+    found = claim.counterexample
+    return {
+        "result": claim.result,
+        "decrease": claim.decrease,
+        "reason": claim.reason,
+        "level": claim.level,
+        "strength": claim.strength,
+        **_function(claim.bound),
+        "counterexample": None
+        if found is None
+        else {
+            "initial": found.initial,
+            "V": found.V,
+            "outcome": found.decision.outcome.word,
+            "time": found.decision.time,
+            "replay": claim.replay,
+            "strength": Strength.SIMULATED,
+        },
+        "witness": claim.witness,
+        "largest_level_inside": claim.largest_level_inside,
+        "nonconverging_fraction_upper": claim.nonconverging_fraction_upper,
+        "confidence": claim.confidence,
+        "fraction": claim.fraction,
+        "draws": claim.draws,
+        "failures": claim.failures,
+    }
+
+
+def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
+    return {
+        "name": bound.name,
+        "level": bound.level,
+        "strength": bound.strength,
+        "note": bound.note,
+        **_function(bound),
+        "volume": volume_inside(bound.V, bound.level) if comparison is None else comparison.volume,
+        "volume_interval": _ends(None if comparison is None else comparison.volume_interval),
+        **_ratios_flat(comparison),
+    }
+
+
+def _function(bound: Bound) -> dict[str, Any]:
+    return {"P": bound.V.P} if isinstance(bound.V, Quadratic) else {"V": bound.V.text}
+
+
+def _ratios_flat(comparison: Comparison | None) -> dict[str, Any]:
+    ratios = {
+        "volume_ratio": None if comparison is None else comparison.volume_ratio,
+        "radius_ratio": None if comparison is None else comparison.radius_ratio,
+    }
+    flat: dict[str, Any] = {name: None if ratio is None else ratio.value for name, ratio in ratios.items()}
+    flat |= {f"{name}_interval": _ends(None if ratio is None else ratio.interval) for name, ratio in ratios.items()}
+    return flat | {"ratio_strength": Strength.SIMULATED}
+
+
+def _basin(basin: Basin) -> dict[str, Any]:
+    return {
+        "fraction": basin.fraction,
+        "interval": _ends(basin.interval),
+        "interval_method": basin.interval.method,
+        "confidence": basin.confidence,
+        "volume": basin.volume,
+        "volume_interval": _ends(basin.volume_interval),
+        "volume_unit": " · ".join(unit or "1" for unit in basin.loop.units),
+        "samples": basin.samples,
+        "partial": basin.partial,
+        "counts": basin.counts,
+        "reasons": basin.reasons,
+        "by_replicate": {"converged": basin.share.hits, "samples": basin.share.sizes},
+        "strength": Strength.SIMULATED,
+    }
+
+
+def _comparison(stated: Sequence[Bound], claim: Claim | None, by_name: Mapping[str, Comparison]) -> dict[str, Any]:
+    """Return the claim beside the basin, or else the proved bound of the largest volume."""
+    proved = [by_name[bound.name] for bound in stated if bound.strength is Strength.PROVED and bound.name in by_name]
+    compared = by_name.get("claim") if claim else max(proved, key=lambda one: one.volume, default=None)
+    return {
+        "bound": None if compared is None else compared.bound.name,
+        "volume_ratio": _ratio(None if compared is None else compared.volume_ratio),
+        "radius_ratio": _ratio(None if compared is None else compared.radius_ratio),
+        "strength": Strength.SIMULATED,
+    }
+
+
+def _ratio(ratio: Ratio | None) -> dict[str, Any]:
+    """Value and interval; both null where there is nothing to compare."""
+    if ratio is None:
+        return {"value": None, "interval": None}
+    return {"value": ratio.value, "interval": _ends(ratio.interval)}
+
+
+def _levels(levels: Levels) -> list[dict[str, Any]]:
+    return [
+        {
+            "low": shell.low,
+            "high": shell.high,
+            "samples": shell.samples,
+            "converged": shell.converged,
+            "share": shell.converged / shell.samples if shell.samples else None,
+            "interval": _ends(shell.interval),
+            "strength": Strength.SIMULATED,
+        }
+        for shell in levels.shells
+    ]
+
+
+def _ends(interval: Interval | None) -> list[float] | None:
+    return None if interval is None else [interval.low, interval.high]
+
+
+def _plain(value: Any) -> Any:
+    """Reduce to what JSON holds: arrays to lists, numbers to Python's own, what is not finite to None."""
+    match value:
+        case Mapping():
+            return {str(key): _plain(item) for key, item in value.items()}
+        case np.ndarray() | list() | tuple():
+            return [_plain(item) for item in value]
+        case bool() | None:
+            return value
+        case str():
+            return str(value)
+        case int() | np.integer():
+            return int(value)
+        case float() | np.floating():
+            return float(value) if math.isfinite(value) else None
+    raise TypeError(f"{type(value).__name__} has no place in a verdict")
