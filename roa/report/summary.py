@@ -1,0 +1,79 @@
+"""The text summary on standard output: plain text of 80 columns that leads with the answer."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from textwrap import wrap
+
+from roa.report.answer import Verdict, answer, next_steps
+from roa.report.tables import bound_rows, outcome_rows
+
+WIDTH = 80
+
+
+def summary(verdict: Verdict, files: Sequence[str] = (), folder: str = "") -> str:
+    """Text of at most 80 columns, but for the name of the folder; every line of numbers says its strength.
+
+    Parameters
+    ----------
+    verdict : as in `verdict.json`
+    files : names of the files that were written, in `folder`
+    """
+    parts = [
+        _paragraph(" ".join(answer(verdict))),
+        _paragraph(f"Loop: {verdict['title']}"),
+        _bounds(verdict),
+        _outcomes(verdict),
+        _replay(verdict),
+        _list("What next", next_steps(verdict)),
+        _files(files, folder),
+        _list("Cautions", verdict["cautions"]),
+    ]
+    return "\n\n".join(part for part in parts if part) + "\n"
+
+
+def _bounds(verdict: Verdict) -> str:
+    rows = bound_rows(verdict)
+    if not rows:
+        return ""
+    lines = [f"{'Bounds {V ≤ c}':<19}{'level c':>13}{'volume':>12}{'radius':>12}   strength of the level"]
+    lines += [f"  {row.name:<17}{row.level:>13}{row.volume:>12}{row.radius:>12}   {row.strength}" for row in rows]
+    if verdict["basin"]:
+        lines.append("  Volume and radius in parts of those of the simulated basin.")
+    return "\n".join(lines)
+
+
+def _outcomes(verdict: Verdict) -> str:
+    rows = outcome_rows(verdict)
+    if not rows:
+        return ""
+    lines = [f"{'Outcomes':<22}{'starts':>14}{'share':>12}"]
+    lines += [f"  {row.word:<20}{row.count:>14}{row.share:>12}   simulated" for row in rows]
+    return "\n".join(lines)
+
+
+def _replay(verdict: Verdict) -> str:
+    """The command that shows the counterexample again, fit to be copied: broken as a shell allows it."""
+    found = verdict["claim"] and verdict["claim"]["counterexample"]
+    if not found:
+        return ""
+    command: str = found["replay"]
+    lines = [command] if "'" in command else wrap(command, WIDTH - 6, break_long_words=False, break_on_hyphens=False)
+    return "See the counterexample again (simulated)\n  " + " \\\n    ".join(lines)
+
+
+def _files(files: Sequence[str], folder: str) -> str:
+    if not files:
+        return ""
+    return "\n".join(
+        [f"Files in {folder}", *wrap(", ".join(files), WIDTH, initial_indent="  ", subsequent_indent="  ")]
+    )
+
+
+def _list(heading: str, sentences: Sequence[str]) -> str:
+    lines = [line for one in sentences for line in wrap(one, WIDTH, initial_indent="  - ", subsequent_indent="    ")]
+    return "\n".join([heading, *lines]) if lines else ""
+
+
+def _paragraph(text: str) -> str:
+    return "\n".join(wrap(text, WIDTH))
