@@ -107,6 +107,4 @@ class Preparation:
             return None
         from roa.basin.claim import validate as judge
 
-        return judge(
-            self.configuration, self.bounds, self.target, self.integration, self.lanes.run, self.seed
-        )
+        return judge(self.configuration, self.bounds, self.target, self.integration, self.lanes.run, self.seed)

@@ -24,11 +24,11 @@ from pathlib import Path
 import numba
 import numpy as np
 import scipy
-from roa.bound.bounds import derive_bounds
-from roa.bound.target_set import target_set
 from scipy.integrate import RK45
 
 import roa
+from roa.bound.bounds import derive_bounds
+from roa.bound.target_set import target_set
 from roa.kernel.integration import Integration
 from roa.kernel.lanes import Lanes, compile_lanes
 from roa.kernel.outcomes import Outcome
@@ -64,6 +64,8 @@ rate = "4*sin(angle) - 0.3*rate + torque"
 [domain]
 angle = [-2, 2]
 rate = [-4, 4]
+[sweep]
+escape = 1.1
 """
 
 SKEW = np.diag(np.linspace(1.0, 2.2, 5), 1)

@@ -5,6 +5,9 @@ from __future__ import annotations
 from dataclasses import dataclass
 from enum import StrEnum
 
+import numpy as np
+from numpy.typing import NDArray
+
 from roa.bound.lyapunov_function import LyapunovFunction
 
 
@@ -28,6 +31,7 @@ class Bound:
     level : float, 0.0 where no level above zero was found
     strength : Strength
     note : str, one sentence that says what limits the level or on what it stands
+    contact : float64 (n,), state units: the point that limits the level, where one is known
     """
 
     name: str
@@ -35,3 +39,4 @@ class Bound:
     level: float
     strength: Strength
     note: str = ""
+    contact: NDArray[np.float64] | None = None

@@ -60,8 +60,9 @@ class IntervalArray:
 
     @property
     def middle(self) -> Array:
-        """Float midpoints."""
-        return self.low + (self.high - self.low) / 2
+        """Float midpoints; NaN where an end is infinite."""
+        with np.errstate(invalid="ignore", over="ignore"):
+            return self.low + (self.high - self.low) / 2
 
     @property
     def magnitude(self) -> Array:

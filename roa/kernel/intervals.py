@@ -51,6 +51,8 @@ def add(a: float, b: float, c: float, d: float) -> Interval:
     low, high = a + c, b + d
     if undefined(low, high):
         return math.nan, math.nan
+    if (c == 0.0 and d == 0.0) or (a == 0.0 and b == 0.0):
+        return low, high
     if low != 0.0:
         low = max(down(low), 0.0) if a >= 0.0 and c >= 0.0 else down(low)
     if high != 0.0:
@@ -72,11 +74,15 @@ def _product(x: float, y: float) -> float:
 
 @inner
 def multiply(a: float, b: float, c: float, d: float) -> Interval:
-    """[a, b] [c, d]; zero times anything that is defined is exactly zero."""
+    """[a, b] [c, d]; zero times anything that is defined is exactly zero, and one times it is itself."""
     if undefined(a, b) or undefined(c, d):
         return math.nan, math.nan
     if (a == 0.0 and b == 0.0) or (c == 0.0 and d == 0.0):
         return 0.0, 0.0
+    if a == 1.0 and b == 1.0:
+        return c, d
+    if c == 1.0 and d == 1.0:
+        return a, b
     p, q, r, s = _product(a, c), _product(a, d), _product(b, c), _product(b, d)
     low, high = down(min(min(p, q), min(r, s))), up(max(max(p, q), max(r, s)))
     if (a >= 0.0 and c >= 0.0) or (b <= 0.0 and d <= 0.0):

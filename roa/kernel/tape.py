@@ -98,6 +98,7 @@ class Tape:
 
     def __init__(self, variables: int) -> None:
         self._n = variables
+        self._numbers: dict[Fraction, int] = {}
         self._rows: dict[tuple[int, int, int, int, float, float], int] = {}
         for i in range(variables):
             self._row(Op.VARIABLE, i)
@@ -107,12 +108,20 @@ class Tape:
         return i
 
     def interval(self, low: float, high: float) -> int:
-        """Row of a constant known to lie in [low, high]."""
-        return self._row(Op.CONSTANT, low=float(low) + 0.0, high=float(high) + 0.0)  # + 0.0: no negative zero
+        """Row of a constant known to lie in [low, high]: a new one each time, unless it is a single float.
+
+        Two quantities with the same enclosure need not be equal, and one row stands for one number: its
+        product with itself is a square.
+        """
+        which = 0 if low == high else len(self._rows)
+        return self._row(Op.CONSTANT, which, low=float(low) + 0.0, high=float(high) + 0.0)  # + 0.0: no negative zero
 
     def number(self, value: Decimal | Fraction | float) -> int:
-        """Row of an exact number."""
-        return self.interval(*enclose_number(value))
+        """Row of an exact number; equal numbers share a row."""
+        exact = Fraction(value)
+        if exact not in self._numbers:
+            self._numbers[exact] = self.interval(*enclose_number(exact))
+        return self._numbers[exact]
 
     def add(self, a: int, b: int) -> int:
         """Row of a + b."""

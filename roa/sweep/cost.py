@@ -14,7 +14,7 @@ from roa.sweep.plan import Plan
 # Batches spread over the whole design: its first starts alone may all settle quickly.
 BATCHES, BATCH = 5, 1024
 # Drawing, writing and merging, and workers that wait for the last block, on top of the kernel's own time.
-OVERHEAD_SECONDS_PER_BYTE = 4e-9
+OVERHEAD_SECONDS_PER_BYTE = 1e-8
 
 
 @dataclass(frozen=True)

@@ -1,9 +1,9 @@
 """The lanes and the independent integrator, written apart from each other, give the same outcomes."""
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.independent import decide
 from roa.kernel.integration import Integration
 from roa.kernel.lanes import compile_lanes

@@ -3,10 +3,10 @@
 from dataclasses import replace
 from decimal import Decimal
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.claim import Decrease, Result, validate
 from roa.basin.verdict import exit_code
 from roa.bound.bounds import Bounds

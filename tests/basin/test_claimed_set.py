@@ -1,9 +1,9 @@
 """Starts of a claimed set: on its boundary, uniform inside, connected to the equilibrium."""
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.claimed_set import ClaimedSet, inside_ball, sphere
 from roa.basin.segment import segment_inside
 from roa.bound.lyapunov_function import FormulaV, Quadratic

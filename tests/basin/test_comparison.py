@@ -2,10 +2,10 @@
 
 import math
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.comparison import compare
 from roa.basin.size import measure
 from roa.bound.lyapunov_function import Quadratic

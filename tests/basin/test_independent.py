@@ -2,10 +2,10 @@
 
 import math
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.independent import decide, path
 from roa.kernel.integration import Integration
 from roa.kernel.outcomes import Outcome, Reason

@@ -2,10 +2,10 @@
 
 from itertools import pairwise
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.levels import by_level
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.statement import Strength

@@ -2,10 +2,10 @@
 
 from dataclasses import replace
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.replay import replay, replay_start
 from roa.kernel.integration import Integration
 from roa.kernel.outcomes import Outcome

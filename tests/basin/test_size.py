@@ -2,10 +2,10 @@
 
 import math
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.share import Share
 from roa.basin.size import measure
 from roa.kernel.outcomes import Outcome

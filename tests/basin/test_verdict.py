@@ -3,10 +3,10 @@
 import json
 import math
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.basin.claim import Claim, Decrease, Result
 from roa.basin.provenance import processor, provenance
 from roa.basin.verdict import conclude

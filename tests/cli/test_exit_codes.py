@@ -9,9 +9,9 @@ import time
 from dataclasses import replace
 from pathlib import Path
 
-import gallery
 import pytest
 
+import gallery
 import roa.basin.replay
 from roa.cli import main
 from roa.kernel.outcomes import Outcome

@@ -199,3 +199,13 @@ def test_undefined_entries_pass_through_a_matrix_product():
     assert np.isnan(product.high[0, 0])
     unbounded = IntervalArray(np.array([[-np.inf, 1.0]]), np.array([[np.inf, 1.0]])) @ np.array([[1.0], [1.0]])
     assert not unbounded.high[0, 0] < np.inf
+
+
+def test_constants_with_equal_enclosures_stay_apart():
+    # a b for two numbers in [-1, 1] can be -1; taken for one number, the product would be a square.
+    tape = Tape(1)
+    a, b = tape.interval(-1.0, 1.0), tape.interval(-1.0, 1.0)
+    program = tape.program([tape.multiply(a, b)])
+    found = enclose(program, np.zeros((1, 1)), np.zeros((1, 1)), order=0)
+    assert found.value.low[0, 0] <= -1.0
+    assert tape.number(Decimal("0.1")) == tape.number(Decimal("0.10"))

@@ -7,10 +7,10 @@ import subprocess
 import sys
 from dataclasses import replace
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.kernel import generated, methods
 from roa.kernel.integration import Integration
 from roa.kernel.lane_source import lane_source

@@ -4,8 +4,8 @@ import math
 
 import numpy as np
 import pytest
-from gallery import configuration
 
+from gallery import configuration
 from roa.kernel.straight_line import right_hand_side
 from roa.kernel.vector_math import vcos, vsin, vtan
 from roa.loop.evaluate import evaluate

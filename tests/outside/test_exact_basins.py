@@ -6,11 +6,11 @@ closed form that anybody can check by hand and that this program does not use.
 
 import math
 
-import gallery
 import numpy as np
 import pytest
 from scipy.special import gamma
 
+import gallery
 from roa import verbs
 from roa.kernel.outcomes import Outcome
 from roa.sweep.store import open_samples

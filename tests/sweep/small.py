@@ -5,10 +5,10 @@ The radius obeys r' = -(1 - r²) r, so that 1/r² - 1 grows as e^{2t}; the plane
 
 from types import SimpleNamespace
 
-import gallery
 import h5py
 import numpy as np
 
+import gallery
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.statement import Bound, Strength

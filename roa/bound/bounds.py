@@ -1,0 +1,69 @@
+"""The bounds of a configuration: its Lyapunov function, and what can be said about levels of it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from roa.bound.contact_level import contact_level
+from roa.bound.exact_quadratic import exact_quadratic
+from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
+from roa.bound.lyapunov_function import FormulaV, LyapunovFunction, Quadratic
+from roa.bound.norm_bound import norm_bound
+from roa.bound.point_checks import positive_definite
+from roa.bound.statement import Bound
+from roa.loop.configuration import Configuration
+from roa.loop.equilibrium import Equilibrium
+
+
+@dataclass(frozen=True)
+class Bounds:
+    """Everything that is stated about level sets of one V.
+
+    Attributes
+    ----------
+    V : LyapunovFunction
+    stated : the bounds with a level above zero
+    note : why a bound that one would expect is not there, one sentence each; empty where all are
+    """
+
+    V: LyapunovFunction
+    stated: tuple[Bound, ...]
+    note: str = ""
+
+    def named(self, name: str) -> Bound | None:
+        """The bound of that name, or None."""
+        return next((bound for bound in self.stated if bound.name == name), None)
+
+
+def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) -> LyapunovFunction:
+    """V as configured: P from the Lyapunov equation, or P, or a formula; a formula that is a quadratic becomes one."""
+    loop, table = configuration.loop, configuration.bound
+    if table.V is not None:
+        formula = FormulaV(loop, equilibrium.x, table.V, table.V_text or "")
+        return exact_quadratic(formula) or formula
+    if table.P is not None:
+        exact = tuple(tuple(Fraction(entry) for entry in row) for row in table.P)
+        return Quadratic(loop, equilibrium.x, np.array([[float(entry) for entry in row] for row in exact]), exact)
+    if equilibrium.stability == "marginal":
+        return Quadratic(loop, equilibrium.x, np.diag(loop.half_widths**-2.0))
+    Q = weight_matrix(table.Q or "identity", loop)
+    return Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, Q))
+
+
+def derive_bounds(configuration: Configuration, equilibrium: Equilibrium) -> Bounds:
+    """Derive the norm bound and the contact level of the configured V."""
+    V = lyapunov_function(configuration, equilibrium)
+    if equilibrium.stability == "marginal":
+        return Bounds(V, (), "The equilibrium has an eigenvalue on the imaginary axis: there is no certificate.")
+    if isinstance(V, Quadratic) and positive_definite(V.enclosed_P) != "proved":
+        return Bounds(V, (), "P is not positive definite by proof: it bounds nothing.")
+    derived = [contact_level(V)]
+    if isinstance(V, Quadratic):
+        derived.insert(0, norm_bound(V))
+    missing = [f"No {bound.name}: {bound.note}." for bound in derived if not bound.level > 0]
+    if not isinstance(V, Quadratic):
+        missing.insert(0, "A V that is not quadratic has no norm bound.")
+    return Bounds(V, tuple(bound for bound in derived if bound.level > 0), " ".join(missing))

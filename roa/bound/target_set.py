@@ -1,0 +1,85 @@
+"""The target set of a sweep: the proved level set if there is one, else a ball with a dwell."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from roa.bound.bounds import Bounds
+from roa.bound.definite import largest_eigenvalue, smallest_eigenvalue
+from roa.bound.equilibrium_enclosure import enclose_equilibrium
+from roa.bound.lyapunov_function import Quadratic
+from roa.bound.statement import Bound, Strength
+from roa.bound.volume import half_extents
+from roa.kernel.target import Target
+from roa.loop.configuration import Configuration
+from roa.loop.equilibrium import Equilibrium
+
+Array = NDArray[np.float64]
+
+RESOLVED = 100.0  # a level set is a target only where its half-extents are so many step tolerances
+TIME_CONSTANTS = 5.0  # dwell in a ball, in slowest time constants
+
+
+def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: Bounds, elsewhere: Array) -> Target:
+    """Choose what entering counts as convergence.
+
+    The largest proved level is taken, however small it is against the ball: entering it is convergence by
+    proof, and a trajectory that converges gets there in a time that grows only like the logarithm of its
+    size. It is given up where the integrator's tolerance is not far below its extent, because then a point
+    inside may belong to a trajectory outside.
+
+    Parameters
+    ----------
+    configuration, equilibrium, bounds : what `derive_bounds` takes and gives
+    elsewhere : float64 (k, n), other stable equilibria
+    """
+    loop, sweep = configuration.loop, configuration.sweep
+    dwell = sweep.dwell if sweep.dwell is not None else TIME_CONSTANTS * equilibrium.slowest_time_constant
+    proved = [bound for bound in bounds.stated if bound.strength is Strength.PROVED]
+    best = max(proved, key=lambda bound: bound.level, default=None)
+    level = 0.0 if best is None else _safe_level(best)
+    note = "" if best is not None else bounds.note.rstrip(".")
+    if best is not None and not _is_resolved(configuration, best.V, level):
+        level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
+    return Target(
+        kind="level" if level > 0 else "ball",
+        centre=equilibrium.x,
+        half_widths=loop.half_widths,
+        P=best.V.P if level > 0 and best is not None and isinstance(best.V, Quadratic) else None,
+        level=level,
+        radius=sweep.ball_radius,
+        dwell=float(min(dwell, sweep.horizon)),
+        elsewhere=elsewhere,
+        note=note,
+    )
+
+
+def _safe_level(bound: Bound) -> float:
+    """Lower a proved level to one that the sweep may test with floats.
+
+    The proof is about the true equilibrium x* and the true P; the sweep tests fl((x - c)'P(x - c)) <= level
+    with the float equilibrium c and P in floats. With d >= |x* - c| the triangle inequality in the norm of P,
+    sqrt(V*(x)) <= sqrt(V(x)) + sqrt(λ_max(P)) d, takes care of the centre. Evaluating the form errs by at
+    most some n^2 2^-53 |y|'|P||y| <= n^3 2^-53 λ_max |y|^2 and rounding P to floats by less, both relative to
+    V >= λ_min |y|^2: hence the condition number in the margin.
+    """
+    V = bound.V
+    if not isinstance(V, Quadratic):
+        return 0.0
+    root = enclose_equilibrium(V.loop, V.centre)
+    smallest, largest = smallest_eigenvalue(V.enclosed_P)[0], largest_eigenvalue(V.enclosed_P)[1]
+    if root is None or not smallest > 0:
+        return 0.0
+    n = V.loop.n
+    margin = max(1e-12, 4 * n**3 * 2.3e-16 * largest / smallest)
+    reach = np.sqrt(bound.level) - np.sqrt(largest) * root.distance(V.centre)
+    return float(reach**2 * (1 - margin)) if reach > 0 and margin < 1 else 0.0
+
+
+def _is_resolved(configuration: Configuration, V: object, level: float) -> bool:
+    """Whether the level set is many step tolerances wide in every state."""
+    if not isinstance(V, Quadratic) or not level > 0:
+        return False
+    sweep = configuration.sweep
+    return bool(np.all(half_extents(V.P, level) > RESOLVED * (sweep.atol + sweep.rtol * np.abs(V.centre))))
