@@ -9,6 +9,8 @@ from __future__ import annotations
 from functools import cached_property
 from typing import TYPE_CHECKING
 
+from roa.errors import UserError
+
 if TYPE_CHECKING:
     from roa.basin.claim import Claim
     from roa.bound.bounds import Bounds
@@ -29,7 +31,12 @@ class Preparation:
     ----------
     configuration : Configuration
     samples, seed : in place of the configuration's, where given
-    say : told what takes a while
+    progress : told what takes a while
+
+    Raises
+    ------
+    UserError
+        There is no such method or design, no equilibrium, or one that is not stable.
     """
 
     def __init__(
@@ -38,6 +45,7 @@ class Preparation:
         from roa.loop.equilibrium import check_V, find_equilibrium, require_stable
         from roa.sweep.progress import Progress
 
+        _require_files(configuration)
         self.configuration = configuration
         self.progress = progress or Progress()
         self._samples, self._seed = samples, seed
@@ -108,3 +116,15 @@ class Preparation:
         from roa.basin.claim import validate as judge
 
         return judge(self.configuration, self.bounds, self.target, self.integration, self.lanes.run, self.seed)
+
+
+def _require_files(configuration: Configuration) -> None:
+    """Look for the method and the design that the configuration names, before anything takes long."""
+    from roa.kernel import methods
+    from roa.sweep import designs
+
+    try:
+        methods.load(configuration.sweep.method)
+        designs.load(configuration.sweep.design)
+    except UserError as error:
+        raise UserError(f"{configuration.source}: {fault}" for fault in error.faults) from None

@@ -168,6 +168,8 @@ WRONG = {
     "equilibrium outside": ("[equilibrium]", "[equilibrium]\nx = 5.0", "domain"),
     "unstable": ('x = "-y"', 'x = "y"', "eigenvalue"),
     "code": ('x = "-y"', "x = \"__import__('os').system('true')\"", "__import__"),
+    "unknown method": ("[sweep]", '[sweep]\nmethod = "tsitoras5"', 'did you mean "tsitouras5"'),
+    "unknown design": ("[sweep]", '[sweep]\ndesign = "sobl"', 'did you mean "sobol"'),
     "not yet: hold": ("[sweep]", '[hold]\nsignals = ["u"]\nperiod = 0.1\n[sweep]', "not yet"),
 }
 
