@@ -57,15 +57,24 @@ class Pace:
         self.done += len(outcomes)
         self._new += np.bincount(outcomes, minlength=len(Outcome))
 
+    def in_short(self) -> str:
+        """Share done, rate and time left: what fits beside a bar."""
+        share = self.done / self.total if self.total else 1.0
+        return ", ".join([f"{share:6.1%}", *self._forecast()])
+
+    def _forecast(self) -> list[str]:
+        rate = self._new.sum() / max(self._clock() - self._begun, 1e-9)
+        if not rate > 0:
+            return []
+        left = timedelta(seconds=round((self.total - self.done) / rate))
+        return [f"{rate:,.0f} a second", f"{left} left"]
+
     def sentence(self) -> str:
         """Done and total, rate, time left, outcomes of the new starts, memory."""
-        elapsed = max(self._clock() - self._begun, 1e-9)
-        rate = self._new.sum() / elapsed
         share = self.done / self.total if self.total else 1.0
         parts = [f"{self.done:,} of {self.total:,} starts ({share:.1%})"]
-        if rate > 0:
-            left = timedelta(seconds=round((self.total - self.done) / rate))
-            parts.append(f"{rate:,.0f} a second, {left} left")
+        if forecast := self._forecast():
+            parts.append(", ".join(forecast))
         new = ", ".join(f"{outcome.word} {self._new[outcome]:,}" for outcome in Outcome if self._new[outcome])
         if new:
             parts.append(f"new: {new}")
@@ -161,7 +170,7 @@ class Bar(Progress):
             return
         self._pace.add(outcomes)
         with suppress(OSError):
-            self._bar.update(self._bar.task_ids[0], completed=self._pace.done, description=self._pace.sentence())
+            self._bar.update(self._bar.task_ids[0], completed=self._pace.done, description=self._pace.in_short())
 
     def end(self) -> None:
         """Remove the bar and leave its last sentence."""
