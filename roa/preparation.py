@@ -63,10 +63,13 @@ class Preparation:
     @cached_property
     def pilot(self) -> Pilot:
         """A few trajectories that show where else the loop comes to rest."""
+        from roa.kernel.lanes import are_compiled
         from roa.sweep.pilot import fly_pilot
 
-        self.progress.say("compiling the loop (once for its formulas, some seconds; a moment from then on)")
-        return fly_pilot(self.configuration.loop, self.equilibrium, self._target_alone, self.integration)
+        loop = self.configuration.loop
+        if not are_compiled(loop, self._target_alone, self.integration):
+            self.progress.say("compiling the loop (once for its formulas, about 5 s)")
+        return fly_pilot(loop, self.equilibrium, self._target_alone, self.integration)
 
     @cached_property
     def _target_alone(self) -> Target:

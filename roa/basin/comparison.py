@@ -62,7 +62,7 @@ def compare(bounds: Sequence[Bound], basin: Basin, samples: Samples) -> tuple[Co
 
 def _is_whole_ellipsoid(bound: Bound) -> bool:
     V = bound.V
-    return isinstance(V, Quadratic) and np.linalg.eigvalsh(V.P).min() > 0 and fits_domain(V, bound.level)
+    return isinstance(V, Quadratic) and bool(np.linalg.eigvalsh(V.P).min() > 0) and fits_domain(V, bound.level)
 
 
 def _comparison(bound: Bound, share: Share | None, basin: Basin) -> Comparison:

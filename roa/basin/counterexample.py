@@ -124,9 +124,9 @@ def find_increase(claimed: ClaimedSet, rng: np.random.Generator) -> Array | None
         with np.errstate(all="ignore"):  # by |b|², because V̇ alone vanishes towards the equilibrium whatever its sign
             growth = claimed.V.decrease(x) / np.sum(ball**2, axis=1)
         worst.keep(ball, np.where(np.isfinite(growth), growth, -np.inf))
-    for x, growth in zip(claimed.at(worst.ball[:EXAMINED]), worst.score, strict=False):
-        if growth > 0 and claimed.contains(x) and decrease_witness(claimed.V, x):
-            return np.asarray(x)
+    for suspect, score in zip(claimed.at(worst.ball[:EXAMINED]), worst.score, strict=False):
+        if score > 0 and claimed.contains(suspect) and decrease_witness(claimed.V, suspect):
+            return np.asarray(suspect)
     return None
 
 

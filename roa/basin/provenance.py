@@ -8,8 +8,10 @@ from importlib.metadata import version
 from pathlib import Path
 from typing import Any
 
+from roa import __version__
+
 # Packages whose arithmetic or file format shows in a verdict.
-PACKAGES = ("roa", "numpy", "scipy", "numba", "h5py", "sympy")
+PACKAGES = ("numpy", "scipy", "numba", "h5py", "sympy")
 
 
 def provenance(
@@ -32,7 +34,11 @@ def provenance(
         "fingerprint": fingerprint,
         "processor": processor(),
         "platform": platform.platform(),
-        "versions": {"python": platform.python_version(), **{package: version(package) for package in PACKAGES}},
+        "versions": {
+            "roa": __version__,
+            "python": platform.python_version(),
+            **{package: version(package) for package in PACKAGES},
+        },
     }
 
 

@@ -26,8 +26,11 @@ def cache_folder() -> Path:
     chosen = os.environ.get("ROA_CACHE_DIR")
     if chosen:
         return Path(chosen)
-    base = os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache"
-    return Path(base) / "roa"
+    base = os.environ.get("XDG_CACHE_HOME")
+    try:
+        return (Path(base) if base else Path.home() / ".cache") / "roa"
+    except RuntimeError:  # a user without a name or a home, as in some containers
+        return Path(tempfile.mkdtemp(prefix="roa-"))
 
 
 def is_cached(text: str) -> bool:

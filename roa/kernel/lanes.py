@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -80,6 +81,17 @@ class Lanes:
             result.reason,
         )
         return result
+
+
+def are_compiled(loop: Loop, target: Target, integration: Integration) -> bool:
+    """Whether `compile_lanes` will find its machine code in the cache."""
+    return generated.is_cached(lane_source(loop, methods.load(integration.method), target).text)
+
+
+def code_digest(loop: Loop, target: Target, integration: Integration) -> str:
+    """SHA-256 of the generated module, hexadecimal: another one may give other bits for the same start."""
+    text = lane_source(loop, methods.load(integration.method), target).text
+    return hashlib.sha256(text.encode()).hexdigest()
 
 
 def compile_lanes(loop: Loop, target: Target, integration: Integration) -> Lanes:

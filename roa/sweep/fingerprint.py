@@ -12,11 +12,12 @@ from collections.abc import Mapping
 from importlib.metadata import version
 from typing import Any
 
+from roa import __version__
 from roa.kernel.target import Target
 
 # Keys of the resolved configuration that change what is said of the results, or how many there are, but not them.
 WITHOUT = ("title", "verdict", "sweep.samples")
-PACKAGES = ("roa", "numpy", "scipy", "numba")
+PACKAGES = ("numpy", "scipy", "numba")
 
 
 def flat(tree: Mapping[str, Any], prefix: str = "") -> dict[str, Any]:
@@ -53,7 +54,7 @@ def target_parts(target: Target) -> dict[str, Any]:
 
 def version_parts() -> dict[str, Any]:
     """Return the versions of the packages whose arithmetic shows in the results; imports none of them."""
-    return {f"version.{package}": version(package) for package in PACKAGES}
+    return {"version.roa": __version__, **{f"version.{package}": version(package) for package in PACKAGES}}
 
 
 def digest(parts: Mapping[str, Any]) -> str:

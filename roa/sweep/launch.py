@@ -111,7 +111,7 @@ def _sweep(
 ) -> None:
     """Run the missing blocks and store each as it finishes."""
     starts = sum(block.count for block in missing)
-    progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {jobs} at a time; compiling the loop first")
+    progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {jobs} at a time")
     lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
     progress.begin(plan.samples - starts, plan.samples)
     failed = []

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 from roa.errors import UserError
 from roa.kernel.integration import Integration
+from roa.kernel.lanes import code_digest
 from roa.kernel.methods import AUTO
 from roa.kernel.target import Target
 from roa.loop.configuration import LARGEST_SEED, MOST_SAMPLES, Configuration, SweepTable
@@ -99,6 +100,7 @@ def make_plan(
         "method": integration.method,
         "step_cap": integration.step_cap,
         "block_size": block_size,
+        "kernel": code_digest(configuration.loop, target, integration),
         **fingerprint.version_parts(),
     }
     return Plan(

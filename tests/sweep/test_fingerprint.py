@@ -7,6 +7,7 @@ import pytest
 from sweep import small
 
 from roa.errors import UserError
+from roa.kernel import lane_source
 from roa.kernel.target import Target
 from roa.sweep import fingerprint
 from roa.sweep.header import Header
@@ -67,9 +68,16 @@ def test_every_field_of_the_target_that_decides_counts():
 
 def test_versions_count(plan, monkeypatch):
     monkeypatch.setattr(fingerprint, "version", lambda package: "0.0.0")
+    monkeypatch.setattr(fingerprint, "__version__", "0.0.0")
     new = small.make()
     lines = fingerprint.differences(plan.fingerprint_parts, new.fingerprint_parts)
     assert [line.split(":")[0] for line in lines] == [f"version.{name}" for name in ("numba", "numpy", "roa", "scipy")]
+
+
+def test_generated_code_counts(plan, monkeypatch):
+    monkeypatch.setattr(lane_source, "LANES", 64)
+    lines = fingerprint.differences(plan.fingerprint_parts, small.make().fingerprint_parts)
+    assert [line.split(":")[0] for line in lines] == ["kernel"]
 
 
 def test_points_of_a_grid_count():
