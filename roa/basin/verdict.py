@@ -79,6 +79,7 @@ def conclude(
         "confidence": confidence,
         "claim": None if claim is None else _claim(claim),
         "bounds": [_bound(bound, by_name.get(bound.name)) for bound in stated],
+        "bounds_note": bounds.note,
         "basin": None if basin is None else _basin(basin),
         "comparison": _comparison(stated, claim, by_name),
         "levels": [] if levels is None else _levels(levels),
@@ -128,6 +129,7 @@ def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
         **_function(bound),
         "volume": volume_inside(bound.V, bound.level) if comparison is None else comparison.volume,
         "volume_interval": _ends(None if comparison is None else comparison.volume_interval),
+        "volume_strength": Strength.ESTIMATED,
         **_ratios_flat(comparison),
     }
 

@@ -39,8 +39,8 @@ def next_steps(verdict: Verdict) -> tuple[str, ...]:
         steps.append("To have a level judged, write `level` into [bound] and call `roa validate CONFIG`.")
     if verdict["basin"] and verdict["basin"]["partial"]:
         steps.append("The sweep is not complete: carry it on with `roa resume RUN`.")
-    elif verdict["basin"]:
-        steps.append("For a narrower interval, extend the sweep (no grid): `roa resume RUN --samples N`.")
+    elif verdict["basin"] and len(verdict["basin"]["by_replicate"]["samples"]) > 1:  # a grid cannot be extended
+        steps.append("For a narrower interval, extend the sweep: `roa resume RUN --samples N`.")
     return tuple(steps)
 
 
@@ -65,7 +65,7 @@ def _bounds_sentence(verdict: Verdict) -> str:
     bounds = [bound for bound in verdict["bounds"] if bound["name"] != "unfalsified level"]
     found = [bound for bound in bounds if bound["level"] > 0]
     if not found:
-        return "No bound above level zero was found for this V (estimated)."
+        return f"No bound above level zero was found for this V (estimated). {verdict['bounds_note']}".rstrip()
     if not verdict["basin"]:
         reached = [f"the {one['name']} ({one['strength']}) reaches level {level_text(one['level'])}" for one in found]
         return _capital(f"{in_a_row(reached)}.")
@@ -74,7 +74,7 @@ def _bounds_sentence(verdict: Verdict) -> str:
         return "There is no simulated basin to compare the bounds with."
     covered = [
         f"the {one['name']} ({one['strength']}) covers {percent(one['volume_ratio'])}"
-        f" ({percent(one['radius_ratio'])} of the way out)"
+        f" by volume ({percent(one['radius_ratio'])} by radius)"
         for one in measured
     ]
     return f"Of this basin, as simulated, {in_a_row(covered)}."
@@ -117,7 +117,7 @@ def _compared(verdict: Verdict) -> str:
     volume, radius = (verdict["comparison"][key]["value"] for key in ("volume_ratio", "radius_ratio"))
     if volume is None:
         return ""
-    return f"It covers {percent(volume)} of the simulated basin, {percent(radius)} of the way out (simulated)."
+    return f"It covers {percent(volume)} of the simulated basin by volume, {percent(radius)} by radius (simulated)."
 
 
 def _capital(text: str) -> str:

@@ -10,6 +10,7 @@ from typing import Any
 
 from jinja2 import Environment, PackageLoader, StrictUndefined, select_autoescape
 
+from roa.kernel.outcomes import Reason
 from roa.loop.configuration import Configuration
 from roa.loop.read import read_text
 from roa.report.answer import Verdict, answer, next_steps
@@ -111,8 +112,8 @@ def _basin_rows(verdict: Verdict) -> Iterator[Row]:
     volume = f"{number(basin['volume'], 6)} ({low} to {high}) {basin['volume_unit']}"
     yield "volume, in units of the states", f"{volume} (simulated)"
     yield "starts", f"{basin['samples']:,}" + (", a partial sweep" if basin["partial"] else "")
-    for reason, count in basin["reasons"].items():
-        yield f"ended for the reason {reason.replace('_', ' ')}", f"{count:,} (simulated)"
+    for word, count in basin["reasons"].items():
+        yield word.replace("_", " "), f"{count:,} starts (simulated): {Reason[word.upper()].sentence}"
 
 
 def _claim_rows(verdict: Verdict) -> Iterator[Row]:
@@ -135,7 +136,10 @@ def _claim_rows(verdict: Verdict) -> Iterator[Row]:
     if claim["nonconverging_fraction_upper"] is not None:
         limit = percent_upper(claim["nonconverging_fraction_upper"])
         draws = f"{claim['draws']:,} independent draws, {claim['failures']:,} of which did not converge"
-        yield "part that does not converge", f"at most {limit} at {confidence_text(claim['confidence'])} ({draws})"
+        yield (
+            "part that does not converge",
+            f"at most {limit} at {confidence_text(claim['confidence'])} (supported; {draws})",
+        )
 
 
 def _loop_rows(verdict: Verdict) -> Iterator[Row]:

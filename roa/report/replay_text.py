@@ -6,7 +6,7 @@ from typing import Any
 
 from roa.basin.replay import Replay
 from roa.loop.model import Loop
-from roa.report.wording import number
+from roa.report.wording import number, outcome_word
 
 
 def replay_document(found: Replay, loop: Loop) -> dict[str, Any]:
@@ -35,7 +35,10 @@ def replay_document(found: Replay, loop: Loop) -> dict[str, Any]:
 def replay_text(found: Replay, loop: Loop) -> str:
     """The comparison for people, answer first."""
     decision = found.decision
-    answer = "The outcome agrees" if found.agrees else "The outcomes DIFFER: this start lies near the edge, or worse"
+    answer = "The outcomes agree"
+    if not found.agrees:
+        answer = "The outcomes DIFFER: the start lies close to the edge of the basin, or the tolerance is too loose"
+    before = "in the sweep" if found.index is not None else "as in a sweep"
     start = "" if found.index is None else f" {found.index}"
     lines = [
         f"{answer} (simulated, twice).",
@@ -45,9 +48,9 @@ def replay_text(found: Replay, loop: Loop) -> str:
             f"  {name:<12} {value:>22.15g} {unit}".rstrip()
             for name, value, unit in zip(loop.states, found.initial, loop.units, strict=True)
         ),
-        f"{'lanes':<22} {found.stored.word} after {number(found.stored_time, 6)} s",
-        f"{f'{decision.method}, rtol {found.rtol:g}':<22} {decision.outcome.word} after {number(decision.time, 6)} s"
-        f" in {decision.steps:,} steps",
+        f"{before:<22} {outcome_word(found.stored)} after {number(found.stored_time, 6)} s",
+        f"{f'{decision.method}, rtol {found.rtol:g}':<22} {outcome_word(decision.outcome)} after"
+        f" {number(decision.time, 6)} s in {decision.steps:,} steps",
         "",
         f"{'':<14} {'final state':>16} {'peak excursion':>16}",
         *(

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from roa.loop.equilibrium import eigenvalue_text
-from roa.report.wording import number, percent
+from roa.report.wording import number, percent, point_text
 from roa.sweep.cost import Cost
 from roa.sweep.plan import Plan
 
@@ -36,10 +36,10 @@ def soundness_document(plan: Plan, cost: Cost) -> dict[str, Any]:
 def soundness_text(plan: Plan, cost: Cost, source: str) -> str:
     """The findings for people."""
     loop, equilibrium = plan.configuration.loop, plan.equilibrium
-    rest = ", ".join(
-        f"{name} = {value:.6g} {unit}".rstrip()
-        for name, value, unit in zip(loop.states, equilibrium.x, loop.units, strict=True)
-    )
+
+    def at(x: Any) -> str:
+        return point_text(loop.states, x, loop.units)
+
     box = [
         f"  {name:<12} {low:>10.6g} to {high:<10.6g} {unit}".rstrip()
         for name, (low, high), unit in zip(loop.states, loop.box, loop.units, strict=True)
@@ -49,26 +49,22 @@ def soundness_text(plan: Plan, cost: Cost, source: str) -> str:
     lines = [
         f"Sound: {loop.title}",
         "",
-        f"{loop.n} states, {len(loop.parameters)} parameters, {len(loop.signals)} signals; domain",
+        f"States {loop.n}, parameters {len(loop.parameters)}, signals {len(loop.signals)}; domain",
         *box,
         "",
-        f"Equilibrium  {rest}",
-        f"Eigenvalues  {eigenvalue_text(equilibrium.eigenvalues)} 1/s ({equilibrium.stability})",
-        *(f"Elsewhere    {_point(point)} is another stable equilibrium" for point in plan.target.elsewhere),
+        f"Equilibrium  {at(equilibrium.x)} (estimated)",
+        f"Eigenvalues  {eigenvalue_text(equilibrium.eigenvalues)} 1/s ({equilibrium.stability}, estimated)",
+        *(f"Elsewhere    {at(x)} is another stable equilibrium (estimated)" for x in plan.target.elsewhere),
         f"Target set   {plan.target.words}",
         "",
         f"Sweep        {cost.samples:,} starts with {cost.jobs} jobs",
         f"  time       {_seconds(low)} to {_seconds(high)} (estimated)",
         f"  disk       {cost.disk / 1e6:,.1f} MB at most (estimated)",
-        f"  a start    {number(cost.steps, 3)} steps; {shares} (simulated, pilot)",
+        f"  a start    {number(cost.steps, 3)} steps; {shares} (simulated)",
         "",
         f"What next: `roa run {source}`",
     ]
     return "\n".join(lines) + "\n"
-
-
-def _point(point: Any) -> str:
-    return "(" + ", ".join(f"{value:.6g}" for value in point) + ")"
 
 
 def _seconds(seconds: float) -> str:

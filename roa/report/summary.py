@@ -39,7 +39,8 @@ def _bounds(verdict: Verdict) -> str:
     lines = [f"{'Bounds {V ≤ c}':<19}{'level c':>13}{'volume':>12}{'radius':>12}   strength of the level"]
     lines += [f"  {row.name:<17}{row.level:>13}{row.volume:>12}{row.radius:>12}   {row.strength}" for row in rows]
     if verdict["basin"]:
-        lines.append("  Volume and radius in parts of those of the simulated basin.")
+        lines.append("  Volume and radius in parts of those of the simulated basin (simulated).")
+    lines += wrap(verdict["bounds_note"], WIDTH, initial_indent="  ", subsequent_indent="  ")
     return "\n".join(lines)
 
 

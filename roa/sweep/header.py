@@ -11,13 +11,14 @@ import json
 import platform
 from dataclasses import asdict, dataclass, fields
 from datetime import UTC, datetime
-from importlib.metadata import version
 from pathlib import Path
 from typing import Any
 
+from roa import __version__
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.statement import Bound, Strength
 from roa.errors import MachineError, UserError
+from roa.sweep import designs
 from roa.sweep.fingerprint import differences
 from roa.sweep.plan import Plan
 
@@ -73,7 +74,7 @@ class Header:
         V = plan.bounds.V
         return cls(
             title=loop.title,
-            roa_version=version("roa"),
+            roa_version=__version__,
             layout=LAYOUT,
             config=configuration.text,
             config_sha256=hashlib.sha256(configuration.text.encode()).hexdigest(),
@@ -123,10 +124,10 @@ class Header:
         UserError
             One sentence for each key of the fingerprint that differs, old -> new.
         """
-        if self.design == new.design == "grid" and self.samples != new.samples:
+        if self.design == new.design and self.samples != new.samples and not designs.load(self.design).extendable:
             raise UserError(
-                f"{where}: a grid of {self.samples:,} starts cannot be extended to {new.samples:,}, because all its "
-                'points would move; begin a new run, or use design = "sobol"'
+                f"{where}: a {self.design} of {self.samples:,} starts cannot be extended to {new.samples:,}, because "
+                'all its points would move; begin a new run, or use design = "sobol"'
             )
         if self.fingerprint != new.fingerprint:
             raise UserError(

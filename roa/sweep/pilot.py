@@ -1,7 +1,7 @@
-"""A few trajectories before the sweep: where else the loop comes to rest, and what a start costs.
+"""A few trajectories before the sweep: where else the loop comes to rest.
 
-The pilot is a function of the configuration alone and counts steps, never seconds, because what it finds
-(the other equilibria) decides stored results.
+The pilot is a function of the configuration alone, never of the machine's speed, because what it finds (the other
+equilibria) decides stored results.
 """
 
 from __future__ import annotations
@@ -16,7 +16,6 @@ from roa.kernel.integration import Integration
 from roa.kernel.lanes import compile_lanes
 from roa.kernel.outcomes import Outcome
 from roa.kernel.target import Target
-from roa.kernel.trajectories import Trajectories
 from roa.loop.equilibrium import Equilibrium, other_equilibria
 from roa.loop.model import Loop
 from roa.sweep import designs
@@ -36,12 +35,10 @@ class Pilot:
 
     Attributes
     ----------
-    trajectories : of the pilot's starts, spread over the domain, with no other equilibrium watched
     elsewhere : float64 (k, n), other stable equilibria: in the domain by Newton from the starts, in the escape
         box by Newton from where unresolved trajectories linger
     """
 
-    trajectories: Trajectories
     elsewhere: Array
 
 
@@ -53,7 +50,7 @@ def fly_pilot(loop: Loop, equilibrium: Equilibrium, target: Target, integration:
     inside = other_equilibria(loop, equilibrium, starts)
     reached = other_equilibria(_on_escape_box(loop, integration.escape), equilibrium, lingering)
     outside = reached[(np.abs(reached - loop.centre) > loop.half_widths).any(axis=1)]
-    return Pilot(trajectories, np.concatenate([inside, outside])[:MOST_WATCHED])
+    return Pilot(np.concatenate([inside, outside])[:MOST_WATCHED])
 
 
 def _on_escape_box(loop: Loop, escape: float) -> Loop:

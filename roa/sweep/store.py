@@ -18,6 +18,7 @@ import h5py
 import numpy as np
 from numpy.typing import NDArray
 
+from roa.bound.statement import Strength
 from roa.errors import MachineError
 from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.trajectories import Trajectories
@@ -147,6 +148,7 @@ def _write_header(file: h5py.File, header: Header) -> None:
     samples = file.create_group("samples")
     samples.attrs["states"] = header.states
     samples.attrs["units"] = header.units
+    samples.attrs["strength"] = Strength.SIMULATED.value
     bound = file.create_group("bound")
     bound.attrs["V"] = header.V
     for name, data, unit, description in (

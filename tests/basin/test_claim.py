@@ -176,6 +176,21 @@ def test_starts_that_never_refute_count_against_support(outcome):
     assert outcome.word in claim.reason
 
 
+def test_one_failure_among_the_draws_is_one_too_many():
+    case = Case(0.9)
+
+    def run(x):
+        trajectories = case.run(x)
+        trajectories.outcome[: len(x) == 4603] = Outcome.UNRESOLVED  # the first of the draws alone
+        return trajectories
+
+    claim = case.judge(run)
+    assert (claim.result, claim.failures) == (Result.NOT_SETTLED, 1)
+    p = claim.nonconverging_fraction_upper
+    # Computed independently: at most one failure among 4603 is seen with probability 1 - .99.
+    assert (1 - p) ** 4603 + 4603 * p * (1 - p) ** 4602 == pytest.approx(0.01)
+
+
 def test_refuted_by_settling_elsewhere():
     # x1 < x2² settles at (-1, 0) (computed independently); the circle about (1, 0) reaches beyond that parabola.
     configuration = gallery.parabola(bound="P = [[1.0, 0.0], [0.0, 1.0]]\nlevel = 0.98")

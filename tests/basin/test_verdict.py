@@ -95,6 +95,13 @@ def test_every_group_of_numbers_says_its_strength(case):
     groups = [verdict["claim"], verdict["basin"], verdict["comparison"], *verdict["bounds"], *verdict["levels"]]
     assert all(group["strength"] in STRENGTHS for group in groups)
     assert all(bound["ratio_strength"] == "simulated" for bound in verdict["bounds"])
+    assert all(bound["volume_strength"] == "estimated" for bound in verdict["bounds"])
+
+
+def test_why_a_bound_is_missing_is_kept(case):
+    assert case.conclude()["bounds_note"] == ""
+    case.bounds = Bounds(case.V, (), "P bounds nothing.")
+    assert case.conclude()["bounds_note"] == "P bounds nothing."
 
 
 def test_is_json_without_loss_and_without_what_is_not_finite(case):

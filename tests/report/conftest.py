@@ -71,6 +71,7 @@ def bound(name, level, strength, ratio):
         "P": [[2.0, 0.5], [0.5, 1.0]],
         "volume": ratio * np.pi,
         "volume_interval": None,
+        "volume_strength": "estimated",
         "volume_ratio": ratio,
         "radius_ratio": ratio**0.5,
         "volume_ratio_interval": [ratio * 0.98, ratio * 1.02],
@@ -94,6 +95,7 @@ VERDICT = {
         bound("contact level", 0.31, "estimated", 0.234),
         bound("unfalsified level", 0.7928932, "simulated", 0.599),
     ],
+    "bounds_note": "",
     "basin": {
         "fraction": 0.41883,
         "interval": [0.41752, 0.42014],

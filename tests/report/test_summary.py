@@ -16,8 +16,8 @@ def test_leads_with_the_answer(verdict):
     first = " ".join(sections(summary(verdict))[0].split())
     assert first == " ".join(answer(verdict))
     assert first.startswith("The simulated basin fills 41.9 % (99 % interval 41.7 to 42.1 %, simulated) of the domain.")
-    assert "the norm bound (proved) covers 3.1 % (17.6 % of the way out)" in first
-    assert "the contact level (estimated) covers 23.4 % (48.4 % of the way out)" in first
+    assert "the norm bound (proved) covers 3.1 % by volume (17.6 % by radius)" in first
+    assert "the contact level (estimated) covers 23.4 % by volume (48.4 % by radius)" in first
     assert "unfalsified" not in first
 
 
@@ -79,6 +79,20 @@ def test_bounds_alone(verdict):
 def test_no_bound_and_no_basin_are_said(verdict):
     verdict["bounds"] = [verdict["bounds"][0] | {"level": 0.0}]
     assert answer(verdict)[1] == "No bound above level zero was found for this V (estimated)."
+    verdict["bounds_note"] = "P is not positive definite by proof: it bounds nothing."
+    assert answer(verdict)[1].endswith("(estimated). P is not positive definite by proof: it bounds nothing.")
+
+
+def test_says_why_a_bound_is_missing(verdict):
+    note = "A V that is not quadratic has no norm bound."
+    assert note not in summary(verdict)
+    assert f"\n  {note}\n" in summary(verdict | {"bounds_note": note})
+
+
+def test_only_what_can_be_extended_is_to_be_extended(verdict):
+    assert "extend the sweep" in summary(verdict)
+    verdict["basin"]["by_replicate"] = {"converged": [41], "samples": [100]}  # a grid
+    assert "extend the sweep" not in summary(verdict)
 
 
 def test_an_empty_basin_has_nothing_to_compare(verdict):
@@ -113,7 +127,7 @@ def test_other_results_lead_with_the_result(claimed):
     proved = claimed(result="proved", decrease="proved", **nothing)
     assert answer(proved) == (
         "Proved: every start in the claimed set V ≤ 2 converges.",
-        "It covers 3.1 % of the simulated basin, 17.6 % of the way out (simulated).",
+        "It covers 3.1 % of the simulated basin by volume, 17.6 % by radius (simulated).",
     )
     supported = claimed(result="supported", decrease="undecided", nonconverging_fraction_upper=0.00099999, **nothing)
     assert answer(supported)[0] == (

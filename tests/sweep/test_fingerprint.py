@@ -10,6 +10,7 @@ from roa.errors import UserError
 from roa.kernel import lane_source
 from roa.kernel.target import Target
 from roa.sweep import fingerprint
+from roa.sweep import plan as planning
 from roa.sweep.header import Header
 
 
@@ -78,6 +79,13 @@ def test_generated_code_counts(plan, monkeypatch):
     monkeypatch.setattr(lane_source, "LANES", 64)
     lines = fingerprint.differences(plan.fingerprint_parts, small.make().fingerprint_parts)
     assert [line.split(":")[0] for line in lines] == ["kernel"]
+
+
+def test_step_cap_counts(plan, monkeypatch):
+    integration_of = planning.integration_of
+    monkeypatch.setattr(planning, "integration_of", lambda table: replace(integration_of(table), step_cap=1000))
+    lines = fingerprint.differences(plan.fingerprint_parts, small.make().fingerprint_parts)
+    assert lines == ["step_cap: 200000 -> 1000"]
 
 
 def test_points_of_a_grid_count():

@@ -63,6 +63,7 @@ class TestLayout:
             group = file["samples"]
             assert list(group.attrs["states"]) == STATES
             assert list(group.attrs["units"]) == ["1", "1"]
+            assert group.attrs["strength"] == "simulated"
             assert {name: group[name].shape for name in group} == shapes | {"steps": (200,), "reason": (200,)}
             assert group["initial"].chunks == (small.SIZE, 2)
 

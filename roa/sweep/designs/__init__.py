@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import difflib
 import importlib
 import pkgutil
 from typing import Any, Protocol
@@ -11,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.errors import UserError
+from roa.loop.wording import hint, listed
 
 Array = NDArray[np.float64]
 
@@ -58,8 +58,8 @@ def load(name: str) -> type[Design]:
     """
     names = available()
     if name not in names:
-        near = difflib.get_close_matches(name, names, 1)
-        hint = f' (did you mean "{near[0]}"?)' if near else ""
-        raise UserError(f'[sweep] design = "{name}": no such sampling design; available: {", ".join(names)}{hint}')
+        raise UserError(
+            f'[sweep] design = "{name}": no such sampling design; available: {listed(names)}{hint(name, names)}'
+        )
     design: type[Design] = getattr(importlib.import_module(f"{__name__}.{name}"), name.title().replace("_", ""))
     return design
