@@ -8,6 +8,7 @@ import os
 import shlex
 import sys
 from collections.abc import Callable, Sequence
+from contextlib import suppress
 from typing import TYPE_CHECKING, Any, NoReturn
 
 from roa import __version__
@@ -136,20 +137,35 @@ def _parser() -> argparse.ArgumentParser:
     return parser
 
 
-def _natural(text: str) -> int:
-    value = int(text)
-    if value < 1:
-        raise ValueError
-    return value
+def _whole(low: int, high: int, words: str) -> Callable[[str], int]:
+    """Return a reader of whole numbers from low to high."""
 
+    def read(text: str) -> int:
+        with suppress(ValueError):
+            if low <= int(text) <= high:
+                return int(text)
+        raise argparse.ArgumentTypeError(f"must be a whole number {words}, '{text}' found")
 
-_natural.__name__ = "whole number above zero"
+    return read
+
 
 _OPTIONS: dict[str, dict[str, Any]] = {
     "--out": {"metavar": "DIR", "help": "the run folder itself (default: results/<configuration>-<date>-<time>)"},
-    "--jobs": {"metavar": "N", "type": _natural, "help": "workers (default: the processors this process may use)"},
-    "--samples": {"metavar": "N", "type": _natural, "help": "number of starts, in place of the configuration's"},
-    "--seed": {"metavar": "N", "type": int, "help": "seed of the design and of every search"},
+    "--jobs": {
+        "metavar": "N",
+        "type": _whole(1, 4096, "from 1 to 4096"),
+        "help": "workers (default: the processors this process may use)",
+    },
+    "--samples": {
+        "metavar": "N",
+        "type": _whole(1, 2**40, "from 1 to 2**40"),
+        "help": "number of starts, in place of the configuration's",
+    },
+    "--seed": {
+        "metavar": "N",
+        "type": _whole(0, 2**63 - 1, "from 0 to 2**63 - 1"),
+        "help": "seed of the design and of every search",
+    },
 }
 
 if __name__ == "__main__":

@@ -64,12 +64,12 @@ class Preparation:
     def pilot(self) -> Pilot:
         """A few trajectories that show where else the loop comes to rest."""
         from roa.kernel.lanes import are_compiled
-        from roa.sweep.pilot import fly_pilot
+        from roa.sweep.pilot import run_pilot
 
         loop = self.configuration.loop
         if not are_compiled(loop, self._target_alone, self.integration):
             self.progress.say("compiling the loop (once for its formulas, about 5 s)")
-        return fly_pilot(loop, self.equilibrium, self._target_alone, self.integration)
+        return run_pilot(loop, self.equilibrium, self._target_alone, self.integration)
 
     @cached_property
     def _target_alone(self) -> Target:
@@ -116,7 +116,7 @@ class Preparation:
         """Judge the claimed level, where there is one."""
         if self.configuration.bound.level is None:
             return None
-        from roa.basin.claim import validate as judge
+        from roa.basin.claim import judge
 
         return judge(self.configuration, self.bounds, self.target, self.integration, self.lanes.run, self.seed)
 
@@ -126,8 +126,11 @@ def _require_files(configuration: Configuration) -> None:
     from roa.kernel import methods
     from roa.sweep import designs
 
-    try:
-        methods.load(configuration.sweep.method)
-        designs.load(configuration.sweep.design)
-    except UserError as error:
-        raise UserError(f"{configuration.source}: {fault}" for fault in error.faults) from None
+    faults = []
+    for look_up, name in ((methods.load, configuration.sweep.method), (designs.load, configuration.sweep.design)):
+        try:
+            look_up(name)
+        except UserError as error:
+            faults += [f"{configuration.source}: {fault}" for fault in error.faults]
+    if faults:
+        raise UserError(faults)

@@ -108,11 +108,12 @@ def bound(
     from roa.basin.provenance import provenance
     from roa.basin.verdict import conclude
 
+    folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress)
     verdict = conclude(
         prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed)
     )
-    return _written(prepared.configuration, verdict, out, 0)
+    return _written(prepared.configuration, verdict, folder, 0)
 
 
 def validate(
@@ -123,6 +124,7 @@ def validate(
     from roa.basin.provenance import provenance
     from roa.basin.verdict import conclude, exit_code
 
+    folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress)
     configuration = prepared.configuration
     if configuration.bound.level is None:
@@ -138,7 +140,7 @@ def validate(
         target=prepared.target,
         claim=claim,
     )
-    return _written(configuration, verdict, out, exit_code(claim, configuration.verdict.accept))
+    return _written(configuration, verdict, folder, exit_code(claim, configuration.verdict.accept))
 
 
 def replay(
@@ -202,10 +204,9 @@ def _sweep(
     progress: Progress | None,
 ) -> tuple[Preparation, RunFolder]:  # fmt: skip
     from roa.sweep.launch import launch
-    from roa.sweep.run_folder import RunFolder
 
+    folder = _new_folder(config, out)
     prepared = _prepare(config, samples, seed, progress)
-    folder = RunFolder.new(None if out is None else Path(out), str(config))
     launch(prepared.plan, folder, jobs, progress)
     return prepared, folder
 
@@ -268,11 +269,17 @@ def _draw(prepared: Preparation, folder: RunFolder, verdict: dict[str, Any]) -> 
     )
 
 
-def _written(configuration: Configuration, verdict: dict[str, Any], out: str | Path | None, code: int) -> Result:
-    """Write the verdict of a command without a sweep into a folder of its own."""
-    from roa.sweep.run_folder import RunFolder, write_atomically
+def _new_folder(config: str | Path, out: str | Path | None) -> RunFolder:
+    """Return the folder for a new run; asked for first, so that nothing is worked out in vain."""
+    from roa.sweep.run_folder import RunFolder
 
-    folder = RunFolder.new(None if out is None else Path(out), configuration.source)
+    return RunFolder.new(None if out is None else Path(out), str(config))
+
+
+def _written(configuration: Configuration, verdict: dict[str, Any], folder: RunFolder, code: int) -> Result:
+    """Write the verdict of a command without a sweep into a folder of its own."""
+    from roa.sweep.run_folder import write_atomically
+
     with folder.locked():
         write_atomically(folder.config, configuration.text.encode())
         _write_verdict(folder, verdict)

@@ -102,7 +102,7 @@ class Claim:
         return Bound("claim", self.V, self.level, self.strength, self.reason)
 
 
-def validate(
+def judge(
     configuration: Configuration,
     bounds: Bounds,
     target: Target,

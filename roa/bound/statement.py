@@ -26,7 +26,7 @@ class Bound:
 
     Attributes
     ----------
-    name : one of "norm bound", "contact level", "unfalsified level" (DESIGN of the slack ladder)
+    name : one of "norm bound", "contact level", "unfalsified level"
     V : LyapunovFunction
     level : float, 0.0 where no level above zero was found
     strength : Strength

@@ -39,7 +39,7 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
     proved = [bound for bound in bounds.stated if bound.strength is Strength.PROVED]
     best = max(proved, key=lambda bound: bound.level, default=None)
     level = 0.0 if best is None else _safe_level(best)
-    note = "" if best is not None else bounds.note.rstrip(".")
+    note = "" if best is not None else "no level of this V is proved"
     if best is not None and not _is_resolved(configuration, best.V, level):
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
     return Target(

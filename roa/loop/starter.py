@@ -49,8 +49,8 @@ Q = "identity"              # from A'P + PA = -Q; or "domain", or a matrix [[2, 
 design  = "sobol"           # or "grid"
 samples = 65536
 seed    = 1
-horizon = 60.0              # s; what is unresolved then is followed four times as long, again and again …
-longest = 960.0             # s … up to here
+horizon = 60.0              # s; by then a trajectory should be decided
+longest = 960.0             # s; one that is not is followed up to here
 escape  = 10.0              # size of the escape box in domain sizes: a trajectory that leaves it has escaped
 method  = "auto"
 rtol    = 1e-6              # tolerance of one step, relative

@@ -42,7 +42,7 @@ class Pilot:
     elsewhere: Array
 
 
-def fly_pilot(loop: Loop, equilibrium: Equilibrium, target: Target, integration: Integration) -> Pilot:
+def run_pilot(loop: Loop, equilibrium: Equilibrium, target: Target, integration: Integration) -> Pilot:
     """Run the pilot for a target set without other equilibria."""
     starts = designs.load("sobol")(loop.box, SEED, 1, STARTS).points(0, STARTS)
     trajectories = compile_lanes(loop, target, integration).run(starts)

@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 import gallery
-from roa.basin.claim import Decrease, Result, validate
+from roa.basin.claim import Decrease, Result, judge
 from roa.basin.verdict import exit_code
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import FormulaV, Quadratic
@@ -49,7 +49,7 @@ class Case:
         )
 
     def judge(self, run=None):
-        return validate(
+        return judge(
             self.configuration,
             self.bounds,
             self.target,
@@ -202,7 +202,7 @@ def test_refuted_by_settling_elsewhere():
         trajectories.outcome[:] = np.where(x[:, 0] > x[:, 1] ** 2, Outcome.CONVERGED, Outcome.SETTLED_ELSEWHERE)
         return trajectories
 
-    claim = validate(configuration, Bounds(Quadratic(loop, centre, np.eye(2)), ()), target, SETTINGS, run, 1)
+    claim = judge(configuration, Bounds(Quadratic(loop, centre, np.eye(2)), ()), target, SETTINGS, run, 1)
     assert claim.result is Result.REFUTED
     assert claim.counterexample.decision.outcome is Outcome.SETTLED_ELSEWHERE
     x = claim.counterexample.initial

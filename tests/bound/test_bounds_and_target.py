@@ -102,7 +102,7 @@ def test_marginal_equilibrium_has_no_certificate_and_a_ball():
     assert bounds.stated == ()
     assert "imaginary axis" in bounds.note
     assert (target.kind, target.dwell, target.radius) == ("ball", 40.0, 1e-3)
-    assert "imaginary axis" in target.words
+    assert "no level of this V is proved" in target.words
 
 
 def test_shape_that_is_not_positive_definite_bounds_nothing():

@@ -57,7 +57,7 @@ def test_run_without_a_claim_is_done(write, tmp_path, capsys):
     assert main(["overlay", out, "--quiet"]) == 0
     assert main(["report", out]) == 0
     assert main(["replay", out, "17", "--quiet"]) == 0
-    assert "agrees" in capsys.readouterr().out
+    assert "agree" in capsys.readouterr().out
     assert main(["replay", out, "8192", "--quiet"]) == 2
     assert "0 to 8191" in capsys.readouterr().err
 
@@ -197,6 +197,8 @@ WRONG_COMMANDS = [
     "run",
     "fly",
     "run x.toml --samples 0",
+    "run x.toml --seed -1",
+    "run x.toml --samples 2000000000000",
     "replay x",
 ]
 
@@ -216,6 +218,27 @@ def test_folder_that_cannot_be_made_is_a_failure_of_the_machine(write, tmp_path,
     (tmp_path / "file").write_text("in the way", encoding="utf-8")
     assert main(["sweep", config, "--out", str(tmp_path / "file" / "run"), "--samples", "64", "--quiet"]) == 4
     assert len(capsys.readouterr().err.splitlines()) == 1
+
+
+def test_folder_is_looked_at_before_the_work(write, tmp_path, capsys, monkeypatch):
+    monkeypatch.setattr("roa.preparation.Preparation.__init__", lambda *_: pytest.fail("worked in vain"))
+    config = write(gallery.van_der_pol(bound="level = 1.0"))
+    for verb in ("run", "sweep", "bound", "validate"):
+        assert main([verb, config, "--out", str(tmp_path), "--quiet"]) == 2
+        assert "holds other things" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize(("raised", "code"), [(OSError("gone"), 4), (ValueError("odd"), 4), (KeyboardInterrupt(), 130)])
+def test_whatever_is_raised_is_one_sentence(monkeypatch, capsys, raised, code):
+    def fail(*_, **__):
+        raise raised
+
+    monkeypatch.setattr("roa.verbs.report", fail)
+    monkeypatch.delenv("ROA_TRACEBACK", raising=False)
+    assert main(["report", "anywhere"]) == code
+    printed = capsys.readouterr()
+    assert printed.out == ""
+    assert len(printed.err.splitlines()) == 1
 
 
 def test_init_writes_what_check_accepts(tmp_path, capsys):

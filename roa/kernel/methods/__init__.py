@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-import difflib
 import importlib
 import pkgutil
 
 from roa.errors import UserError
 from roa.kernel.tableau import Tableau
+from roa.loop.wording import hint
 
 # What `method = "auto"` stands for as long as there is one method to choose from.
 AUTO = "tsitouras5"
@@ -28,10 +28,9 @@ def load(name: str) -> Tableau:
     """
     chosen = AUTO if name == "auto" else name
     if chosen not in available():
-        near = difflib.get_close_matches(chosen, available(), 1)
-        hint = f' (did you mean "{near[0]}"?)' if near else ""
         raise UserError(
-            f'[sweep] method = "{name}": no such integration method; available: auto, {", ".join(available())}{hint}'
+            f'[sweep] method = "{name}": no such integration method; available: auto, {", ".join(available())}'
+            + hint(chosen, available())
         )
     tableau: Tableau = importlib.import_module(f"{__name__}.{chosen}").TABLEAU
     return tableau
