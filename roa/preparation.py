@@ -82,9 +82,9 @@ class Preparation:
     @cached_property
     def target(self) -> Target:
         """The target set, other equilibria included."""
-        from dataclasses import replace
+        from roa.bound.target_set import watching
 
-        return replace(self._target_alone, elsewhere=self.pilot.elsewhere)
+        return watching(self._target_alone, self.pilot.elsewhere)
 
     @cached_property
     def integration(self) -> Integration:

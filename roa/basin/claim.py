@@ -160,7 +160,10 @@ class _Case:
         )
 
     def refuted(self, found: Counterexample) -> Claim:
-        ending = "escaped" if found.decision.outcome is Outcome.ESCAPED else "came to rest at another equilibrium"
+        ending = "came to rest at another equilibrium"
+        if found.decision.outcome is Outcome.ESCAPED:
+            size = self.integration.escape
+            ending = f"left the escape box (the domain {size:g} times as large, `escape` in [sweep]), or blew up"
         reason = (
             f"A start inside the claimed set, with V = {found.V:.6g}, {ending}, and so it does when it is integrated "
             f"by {found.decision.method} at ten times tighter tolerance."
@@ -229,6 +232,12 @@ def _by_simulation(case: _Case) -> Claim:
     if starts is None:
         reason = "No counterexample was found, and the set is too small a part of the domain to be drawn from."
         return case.judged(Result.NOT_SETTLED, case.decrease, reason, witness=case.witness)
+    if not case.claimed.are_joined(starts):
+        reason = (
+            "No counterexample was found, but parts of {V <= level} cannot be joined to the equilibrium by straight "
+            "lines inside it, so that no uniform draws from its connected part can be had."
+        )
+        return case.judged(Result.NOT_SETTLED, case.decrease, reason, witness=case.witness)
     trajectories = case.run(starts)
     found = confirm(case.claimed, suspects_of(case.claimed, trajectories), case.target, case.integration)
     return case.refuted(found) if found is not None else _by_draws(case, trajectories)
@@ -248,8 +257,6 @@ def _by_draws(case: _Case, trajectories: Trajectories) -> Claim:
     )
     if not supported:
         reason += f", where {_percent_up(1 - verdict.fraction)} is allowed"
-    if failures and not isinstance(case.claimed.V, Quadratic):
-        reason += "; the draws may include parts of {V <= level} apart from the equilibrium, which is not the claim"
     if case.decrease is Decrease.REFUTED:
         reason += "; V̇ > 0 at a point of the set, so the set may be safe but the argument for it is wrong"
     return case.judged(

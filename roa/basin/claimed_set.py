@@ -85,7 +85,7 @@ class ClaimedSet:
     def draw(self, count: int, rng: np.random.Generator) -> Array | None:
         """Uniform, independent starts in the part of {V <= level} inside the domain, float64 (count, n).
 
-        Where V is a formula they may lie in more than the connected part, which can only speak against the claim.
+        Where V is a formula they may lie in more than the connected part; `are_joined` tells.
         None where the set is too small a part of the box about it to be drawn from.
         """
         if isinstance(self.V, Quadratic):
@@ -98,6 +98,15 @@ class ClaimedSet:
             if len(members) >= count:
                 return members[:count]
         return None
+
+    def are_joined(self, x: Array) -> bool:
+        """Whether straight lines inside the set join all of the points x, float64 (m, n), to the equilibrium.
+
+        Uniform draws stand for the connected part only if they do: a part apart from it would dilute them.
+        """
+        if isinstance(self.V, Quadratic):
+            return True
+        return bool(np.all(self._along(x - self.equilibrium, np.ones(len(x))) <= self.level))
 
     def contains(self, x: Array) -> bool:
         """Whether x, float64 (n,), is verified to lie in the set and to be connected to the equilibrium."""

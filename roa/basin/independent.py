@@ -179,7 +179,9 @@ def _solver(
     """Return the solver at its start, or None where the dynamics have no finite value there."""
     if not np.isfinite(loop.rhs(start)).all():  # scipy would never find a first step
         return None
-    options = {"jac": lambda _, x: loop.jacobian(x)} if method is Radau else {}
+    options: dict[str, Any] = {"first_step": _first_step(loop, start, duration, rtol, atol)}
+    if method is Radau:
+        options["jac"] = lambda _, x: loop.jacobian(x)
     try:
         with np.errstate(all="ignore"):
             return method(
@@ -187,6 +189,14 @@ def _solver(
             )
     except (ValueError, np.linalg.LinAlgError):  # no finite Jacobian
         return None
+
+
+def _first_step(loop: Loop, start: Array, duration: float, rtol: float, atol: float) -> float:
+    """A timid first step, s: scipy's own guess never returns where f is undefined next to the start."""
+    weight = atol + rtol * np.abs(start)
+    size, speed = np.linalg.norm(start / weight), np.linalg.norm(loop.rhs(start) / weight)
+    step = 0.01 * size / speed if size > 1e-5 and speed > 1e-5 else 1e-6 * duration
+    return float(np.clip(step, 1e-12 * duration, duration))
 
 
 def _advance(solver: OdeSolver) -> bool:

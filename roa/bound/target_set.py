@@ -2,13 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 
 from roa.bound.bounds import Bounds
 from roa.bound.definite import largest_eigenvalue, smallest_eigenvalue
 from roa.bound.equilibrium_enclosure import enclose_equilibrium
+from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import Quadratic
+from roa.bound.norm_bound import norm_bound
 from roa.bound.statement import Bound, Strength
 from roa.bound.volume import half_extents
 from roa.kernel.target import Target
@@ -38,11 +42,15 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
     dwell = sweep.dwell if sweep.dwell is not None else TIME_CONSTANTS * equilibrium.slowest_time_constant
     proved = [bound for bound in bounds.stated if bound.strength is Strength.PROVED]
     best = max(proved, key=lambda bound: bound.level, default=None)
+    note = ""
+    if best is None:
+        best = _bound_of_another_shape(configuration, equilibrium)
+        note = "no level of the configured V is proved"
+        note += "" if best is None else '; the V meant here is that of A\'P + PA = -Q with Q = "domain"'
     level = 0.0 if best is None else _safe_level(best)
-    note = "" if best is not None else "no level of this V is proved"
     if best is not None and not _is_resolved(configuration, best.V, level):
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
-    return Target(
+    alone = Target(
         kind="level" if level > 0 else "ball",
         centre=equilibrium.x,
         half_widths=loop.half_widths,
@@ -50,9 +58,33 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
         level=level,
         radius=sweep.ball_radius,
         dwell=float(min(dwell, sweep.horizon)),
-        elsewhere=elsewhere,
         note=note,
     )
+    return watching(alone, elsewhere)
+
+
+def watching(target: Target, elsewhere: Array) -> Target:
+    """Watch other equilibria, float64 (k, n), by balls so small that none comes near another equilibrium.
+
+    A ball that held two of them would call rest what is a passage from the one to the other.
+    """
+    rests = np.concatenate([target.centre[None], elsewhere]) / target.half_widths
+    apart = np.linalg.norm(rests[:, None] - rests, axis=2)[~np.eye(len(rests), dtype=bool)]
+    radius = min(target.radius, float(apart.min(initial=np.inf)) / 3)
+    return replace(target, elsewhere=elsewhere, radius=radius)
+
+
+def _bound_of_another_shape(configuration: Configuration, equilibrium: Equilibrium) -> Bound | None:
+    """The norm bound of the Lyapunov equation, where the configured V has no proved level of its own.
+
+    Any proved set about the equilibrium serves as a target, and the smallest one is better than a ball: a limit
+    cycle inside the ball would count as convergence.
+    """
+    loop = configuration.loop
+    if equilibrium.stability != "stable":
+        return None
+    bound = norm_bound(Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, weight_matrix("domain", loop))))
+    return bound if bound.level > 0 else None
 
 
 def _safe_level(bound: Bound) -> float:

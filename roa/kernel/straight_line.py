@@ -49,10 +49,13 @@ class StraightLine:
         elif isinstance(tree, Name):
             name = self.variable(self._signals[tree.name])
         else:
-            text = self._operation(tree)
-            name = f"v{len(self.lines)}"
-            self.lines.append(f"{name} = {text}")
+            name = self._assign(self._operation(tree))
         self._variables[tree] = name
+        return name
+
+    def _assign(self, text: str) -> str:
+        name = f"v{len(self.lines)}"
+        self.lines.append(f"{name} = {text}")
         return name
 
     def _is_constant(self, tree: Expression) -> bool:
@@ -94,6 +97,10 @@ class StraightLine:
             return f"{base} ** {float(exponent)!r}"
         return text if exponent >= 0 else f"1.0 / ({text})"
 
+    def _clip(self, x: str, low: str, high: str) -> str:
+        # min(max(x, lo), hi): the upper bound wins where lo > hi.
+        return _smaller(self._assign(_larger(x, low)), high)
+
     def _call(self, function: str, a: list[str]) -> str:
         # The selects are ordered so that a NaN in any argument is handed on, never replaced by a bound.
         match function:
@@ -102,21 +109,24 @@ class StraightLine:
             case "sign":
                 return f"1.0 if {a[0]} > 0.0 else (-1.0 if {a[0]} < 0.0 else {a[0]})"
             case "min":
-                return f"{a[1]} if ({a[1]} < {a[0]}) | ({a[1]} != {a[1]}) else {a[0]}"
+                return _smaller(*a)
             case "max":
-                return f"{a[1]} if ({a[1]} > {a[0]}) | ({a[1]} != {a[1]}) else {a[0]}"
+                return _larger(*a)
             case "clip":
-                return _clip(a[0], a[1], a[2])
+                return self._clip(*a)
             case "deadzone":
-                return f"{a[0]} - ({_clip(a[0], f'-{a[1]}', a[1])})"
+                return f"{a[0]} - {self._assign(self._clip(a[0], self._assign(f'-{a[1]}'), a[1]))}"
             case "where":
                 return f"{a[1]} if {a[0]} else {a[2]}"
         return f"{VECTOR_FORM.get(function) or LIBRARY_FORM[function]}({a[0] if len(a) == 1 else ', '.join(a)})"
 
 
-def _clip(x: str, low: str, high: str) -> str:
-    # clip(x, lo, hi) = min(max(x, lo), hi): the upper bound wins where lo > hi.
-    return f"{high} if ({low} if {x} < {low} else {x}) > {high} else ({low} if {x} < {low} else {x})"
+def _smaller(a: str, b: str) -> str:
+    return f"{b} if ({b} < {a}) | ({b} != {b}) else {a}"
+
+
+def _larger(a: str, b: str) -> str:
+    return f"{b} if ({b} > {a}) | ({b} != {b}) else {a}"
 
 
 def _integer_power(base: str, exponent: int) -> str:

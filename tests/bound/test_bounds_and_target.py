@@ -10,7 +10,7 @@ from gallery import ball, configuration, double_well, product, van_der_pol
 from roa.bound.bounds import derive_bounds, lyapunov_function
 from roa.bound.lyapunov_function import FormulaV, Quadratic
 from roa.bound.point_checks import decrease_witness, member
-from roa.bound.target_set import target_set
+from roa.bound.target_set import target_set, watching
 from roa.bound.volume import ellipsoid_volume, fits_domain, volume_inside
 from roa.loop.equilibrium import find_equilibrium
 
@@ -102,22 +102,33 @@ def test_marginal_equilibrium_has_no_certificate_and_a_ball():
     assert bounds.stated == ()
     assert "imaginary axis" in bounds.note
     assert (target.kind, target.dwell, target.radius) == ("ball", 40.0, 1e-3)
-    assert "no level of this V is proved" in target.words
+    assert "no level of the configured V is proved" in target.words
 
 
 def test_shape_that_is_not_positive_definite_bounds_nothing():
     _, bounds, target = prepared(van_der_pol(bound="P = [[1, 2], [2, 1]]\nlevel = 1"))
     assert bounds.stated == ()
-    assert target.kind == "ball"
+    # The target is a proved set all the same, of another shape, and says so.
+    assert target.kind == "level"
+    assert target.level > 0
+    assert (np.linalg.eigvalsh(target.P) > 0).all()
+    assert "no level of the configured V is proved" in target.words
+
+
+def test_balls_stay_apart():
+    given = van_der_pol()
+    *_, target = prepared(given)
+    assert watching(target, np.array([[2.0, 0.0]])).radius == target.radius
+    near = watching(target, np.array([[3e-4, 0.0], [0.0, 1.0]]))
+    assert near.radius == pytest.approx(1e-4 / 3)
+    assert len(near.elsewhere) == 2
 
 
 def test_dwell_is_five_slowest_time_constants_unless_given():
-    shape = "P = [[1, 0], [0, 1]]"  # V̇ is not negative definite: no proved level
-    equilibrium, _, target = prepared(van_der_pol(bound=shape))
-    assert target.kind == "ball"
+    equilibrium, _, target = prepared(van_der_pol())
     assert target.dwell == pytest.approx(5 * equilibrium.slowest_time_constant)
-    assert prepared(van_der_pol(bound=shape, sweep="dwell = 3.5"))[2].dwell == 3.5
-    assert prepared(van_der_pol(bound=shape, sweep="horizon = 2.0"))[2].dwell == 2.0
+    assert prepared(van_der_pol(sweep="dwell = 3.5"))[2].dwell == 3.5
+    assert prepared(van_der_pol(sweep="horizon = 2.0"))[2].dwell == 2.0
 
 
 def test_a_level_below_the_integrators_tolerance_is_no_target():

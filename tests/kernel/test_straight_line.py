@@ -53,6 +53,7 @@ def test_same_value_as_the_tree(text):
 
 
 @pytest.mark.parametrize("text", ["min(x, y)", "max(x, y)", "min(y, x)", "clip(x + y, -1, 1)", "deadzone(x + y, 0.1)",
+                                  "clip(0.1, x, y)", "clip(y, x, 5)", "clip(x, -5, y)", "deadzone(x, y)",
                                   "sign(x + y)", "abs(x + y)"])  # fmt: skip
 def test_nan_is_handed_on(text):
     _, f, _ = generated(text)
