@@ -64,6 +64,24 @@ def test_closed_form_of_the_cubic_loop():
     assert (np.abs(result.final[~inside]) > 20).all()
 
 
+def test_every_method_follows_the_closed_form_of_the_cubic_loop():
+    loop = gallery.cubic().loop
+    starts = np.concatenate([np.linspace(-1.9, 1.9, 48), [0.999, 1.001]])
+    inside = np.abs(starts) < 1
+    calls = {}
+    for name in methods.available():
+        settings = replace(SETTINGS, method=name, rtol=1e-10, atol=1e-12)
+        result = compile_lanes(loop, level_target(loop, 0.01**2), settings).run(column(starts))
+        np.testing.assert_array_equal(result.outcome == Outcome.CONVERGED, inside)
+        np.testing.assert_array_equal(result.outcome == Outcome.ESCAPED, ~inside)
+        moved = result.steps > 0
+        expected = [closed_form_time(a, b) for a, b in zip(starts[moved], result.final[moved, 0], strict=True)]
+        np.testing.assert_allclose(result.time[moved], expected, rtol=0, atol=2e-7)
+        calls[name] = result.steps.sum() * (methods.load(name).stages - 1)
+    # At a tight tolerance a high order needs fewer evaluations of f.
+    assert calls["dormand_prince8"] < calls["tsitouras5"] < calls["bogacki_shampine3"]
+
+
 def test_end_of_the_horizon_is_met_exactly():
     loop = gallery.cubic().loop
     settings = replace(SETTINGS, rtol=1e-10, atol=1e-13, longest=3.0)
