@@ -18,6 +18,7 @@ from pathlib import Path
 
 import jinja2
 
+from roa.kernel import vector_math
 from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.straight_line import right_hand_side
 from roa.kernel.tableau import Tableau
@@ -55,7 +56,7 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
     balls = ([] if level else [1]) + [2 + k for k in range(len(target.elsewhere))]
     rows = _buffer_rows(states, bool(balls))
     environment = jinja2.Environment(undefined=jinja2.StrictUndefined, keep_trailing_newline=True)
-    template = environment.from_string(_beside("lanes.py.jinja"))
+    template = environment.from_string(Path(__file__).with_name("lanes.py.jinja").read_text(encoding="utf-8"))
     text = template.render(
         outcome=Outcome,
         reason=Reason,
@@ -77,11 +78,7 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         combination=_combination,
         distance=lambda ball, x: " + ".join(f"(({x}{j} - at{ball}_{j}) * inverse{j}) ** 2" for j in states),
     )
-    return LaneSource(_beside("vector_math.py") + "\n\n" + text, code.constants)
-
-
-def _beside(name: str) -> str:
-    return Path(__file__).with_name(name).read_text(encoding="utf-8")
+    return LaneSource(vector_math.source(code.functions) + "\n\n" + text, code.constants)
 
 
 def _buffer_rows(states: range, balls: bool) -> dict[str, int]:

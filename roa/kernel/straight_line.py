@@ -13,13 +13,6 @@ from decimal import Decimal
 from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power, children
 from roa.loop.model import Loop
 
-# Functions with a vector form in `vector_math`; the others call the scalar library for now.
-VECTOR_FORM = {"sin": "vsin", "cos": "vcos", "tan": "vtan"}
-LIBRARY_FORM = {
-    name: f"math.{name}"
-    for name in ("asin", "acos", "atan", "atan2", "sinh", "cosh", "tanh", "exp", "log", "sqrt")
-}  # fmt: skip
-
 
 class StraightLine:
     """Assignments that evaluate trees of a loop, and the constants that they use.
@@ -28,11 +21,13 @@ class StraightLine:
     ----------
     lines : list of str, Python assignments in order
     constants : list of trees over parameters and numbers; the code calls them c0, c1, …
+    functions : set of str, the names from `vector_math` that the lines call
     """
 
     def __init__(self, loop: Loop) -> None:
         self.lines: list[str] = []
         self.constants: list[Expression] = []
+        self.functions: set[str] = set()
         self._signals: Mapping[str, Expression] = loop.signals
         self._parameters = frozenset(loop.parameters)
         self._variables: dict[Expression, str] = {Name(s): f"x{i}" for i, s in enumerate(loop.states)}
@@ -94,7 +89,7 @@ class StraightLine:
             whole = int(size)
             text = f"math.sqrt({base})" if whole == 0 else f"{_integer_power(base, whole)} * math.sqrt({base})"
         else:
-            return f"{base} ** {float(exponent)!r}"
+            return self._vector_form("power", [base, repr(float(exponent))])
         return text if exponent >= 0 else f"1.0 / ({text})"
 
     def _clip(self, x: str, low: str, high: str) -> str:
@@ -118,7 +113,14 @@ class StraightLine:
                 return f"{a[0]} - {self._assign(self._clip(a[0], self._assign(f'-{a[1]}'), a[1]))}"
             case "where":
                 return f"{a[1]} if {a[0]} else {a[2]}"
-        return f"{VECTOR_FORM.get(function) or LIBRARY_FORM[function]}({a[0] if len(a) == 1 else ', '.join(a)})"
+            case "sqrt":
+                return f"math.sqrt({a[0]})"  # an instruction of the processor, packed too
+        return self._vector_form(function, a)
+
+    def _vector_form(self, function: str, arguments: list[str]) -> str:
+        name = f"v{function}"
+        self.functions.add(name)
+        return f"{name}({', '.join(arguments)})"
 
 
 def _smaller(a: str, b: str) -> str:

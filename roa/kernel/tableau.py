@@ -16,21 +16,29 @@ class Tableau:
     name : str
     source : str, author, year, title
     order : int, of the solution that is carried on
-    embedded_order : int, of the solution that it is compared with
+    embedded_orders : tuple of one or two ints, of the solutions that it is compared with
     c : tuple of s nodes
     a : s rows, row i with i coefficients; the last row holds the weights b
-    e : s weights of the error estimate, b minus the embedded weights
+    e : one or two rows of s weights of the error estimates, b minus embedded weights. Two estimates E
+        and F are combined to E² / √(E² + F²/100), of higher order than both (Hairer, Nørsett, Wanner,
+        Solving Ordinary Differential Equations I, 1993, II.10).
     """
 
     name: str
     source: str
     order: int
-    embedded_order: int
+    embedded_orders: tuple[int, ...]
     c: tuple[float, ...]
     a: tuple[tuple[float, ...], ...]
-    e: tuple[float, ...]
+    e: tuple[tuple[float, ...], ...]
 
     @property
     def stages(self) -> int:
         """Number of stages, the shared one included."""
         return len(self.c)
+
+    @property
+    def error_order(self) -> int:
+        """The power of the step size that the error estimate falls with."""
+        orders = [order + 1 for order in self.embedded_orders]
+        return orders[0] if len(orders) == 1 else 2 * orders[0] - orders[1]

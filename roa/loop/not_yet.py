@@ -27,8 +27,6 @@ VALUES = {
     ("sweep", "store", "outcomes"): 'use "all"',
     ("sweep", "design", "rays"): 'use "sobol" or "grid"',
     ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
-    ("sweep", "method", "dormand_prince8"): 'use "tsitouras5" or "auto"',
-    ("sweep", "method", "bogacki_shampine3"): 'use "tsitouras5" or "auto"',
     ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
 }
 

@@ -221,12 +221,16 @@ def test_one_fault_one_line(text, words):
         (with_table('[sweep]\nstore = "outcomes"'), '"outcomes" is not yet supported by this version; use "all"'),
         *((with_table(f'[sweep]\ndesign = "{design}"'), f'"{design}" is not yet supported by this version; use "sobol"')
           for design in ("rays", "boundary")),
-        *((with_table(f'[sweep]\nmethod = "{method}"'), f'"{method}" is not yet supported by this version; use "tsit')
-          for method in ("dormand_prince8", "bogacki_shampine3", "rodas4")),
+        (with_table('[sweep]\nmethod = "rodas4"'), '"rodas4" is not yet supported by this version; use "tsit'),
     ],
 )  # fmt: skip
 def test_not_yet_is_refused_by_name(text, words):
     assert words in faults_of(text)[0]
+
+
+@pytest.mark.parametrize("method", ["auto", "tsitouras5", "dormand_prince8", "bogacki_shampine3"])
+def test_methods_are_accepted_by_name(method):
+    assert read_text(with_table(f'[sweep]\nmethod = "{method}"'), "a.toml").sweep.method == method
 
 
 def test_a_state_called_python_is_a_state():

@@ -9,7 +9,7 @@ from roa.errors import UserError
 from roa.kernel.tableau import Tableau
 from roa.loop.wording import hint
 
-# What `method = "auto"` stands for as long as there is one method to choose from.
+# What `method = "auto"` stands for: at the usual tolerances, and where the loop has clips, the quickest.
 AUTO = "tsitouras5"
 
 
