@@ -145,9 +145,12 @@ def _alike(d: Array, t: int, operation: Integers, n: int, used: Integers) -> boo
         for s in used:
             d[t, s, 0], d[t, s, 1] = -d[a, s, 1], -d[a, s, 0]
     elif op in (MIN, MAX):
-        if d[first, 0, 1] <= d[second, 0, 0]:
+        below, above = d[first, 0, 1] <= d[second, 0, 0], d[second, 0, 1] <= d[first, 0, 0]
+        # Both: equal numbers, such as at a point where two functions touch that are in order all round it. Which of
+        # their slopes is that of the minimum does not show there.
+        if below and not above:
             _copy(d, t, a, used)
-        elif d[second, 0, 1] <= d[first, 0, 0]:
+        elif above and not below:
             _copy(d, t, b, used)
         else:
             _kink(d, t, a, b, op == MIN, n, used)

@@ -22,6 +22,7 @@ from roa.bound.statement import Strength
 from roa.kernel.branch_and_bound import Answer, negative_on_levels
 from roa.kernel.tape import Tape
 from roa.loop.equilibrium import find_equilibrium
+from roa.loop.expression import Call, Name, Negate, Number
 from roa.loop.read import read
 
 CONFIGS = Path(__file__).parents[2] / "configs"
@@ -236,3 +237,16 @@ def test_what_cannot_be_proved_at_the_top_is_proved_further_down():
     level, proof = _search(LevelProver(V), 1.0, 12_000)
     assert proof.answer is Answer.PROVED
     assert 0.8 <= level < 0.9999
+
+
+def test_minimum_of_two_functions_that_meet_in_one_point_has_no_slope_of_the_wrong_one_there():
+    """W = min(|z|, -z²) - z - 0.1 is -z² - z - 0.1, positive at -1/2; at zero |z|, here a maximum, meets -z²."""
+    tape, z = Tape(1), Name("z")
+    size = tape.expression(Call("max", (Call("max", (z, Negate(z))), Number(Decimal(0)))), {"z": 0})
+    square = tape.multiply(0, 0)
+    lower = tape.expression(Call("min", (Name("a"), Negate(Name("b")))), {"a": size, "b": square})
+    W = tape.subtract(tape.subtract(lower, 0), tape.number(Decimal("0.1")))
+    found = negative_on_levels(
+        tape.program([W, square]), -np.ones(1), np.ones(1), (-np.inf, np.inf), -np.ones(1), 1000
+    )
+    assert found.answer is Answer.REFUTED
