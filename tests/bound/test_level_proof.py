@@ -246,7 +246,5 @@ def test_minimum_of_two_functions_that_meet_in_one_point_has_no_slope_of_the_wro
     square = tape.multiply(0, 0)
     lower = tape.expression(Call("min", (Name("a"), Negate(Name("b")))), {"a": size, "b": square})
     W = tape.subtract(tape.subtract(lower, 0), tape.number(Decimal("0.1")))
-    found = negative_on_levels(
-        tape.program([W, square]), -np.ones(1), np.ones(1), (-np.inf, np.inf), -np.ones(1), 1000
-    )
+    found = negative_on_levels(tape.program([W, square]), -np.ones(1), np.ones(1), (-np.inf, np.inf), -np.ones(1), 1000)
     assert found.answer is Answer.REFUTED
