@@ -68,5 +68,5 @@ def derive_bounds(configuration: Configuration, equilibrium: Equilibrium) -> Bou
         derived = [norm, prove_contact_level(contact, norm.level)]
     missing = [f"No {bound.name}: {bound.note}." for bound in derived if not bound.level > 0]
     if not isinstance(V, Quadratic):
-        missing.insert(0, "A V that is not quadratic has no norm bound.")
+        missing.insert(0, "A V that is not quadratic has no norm bound, and its contact level is not proved.")
     return Bounds(V, tuple(bound for bound in derived if bound.level > 0), " ".join(missing))

@@ -42,7 +42,7 @@ def prove_contact_level(estimate: Bound, known: float) -> Bound:
     if first.answer is not Answer.PROVED:
         level, proof = _search(prover, highest, budget - first.boxes)
     if proof is None or level <= known:
-        return estimate
+        return replace(estimate, note=f"{estimate.note}; no higher level could be proved within {budget} boxes")
     note = f"{branch_and_bound(proof)}; by floating-point search {estimate.note} at level {highest:.6g}"
     return replace(estimate, level=level, strength=Strength.PROVED, note=note, level_estimated=highest)
 
