@@ -77,20 +77,10 @@ def negative_on_levels(
     waiting = np.zeros((2, STACK, n))
     waiting[0, 0], waiting[1, 0] = low, high
     witness = np.zeros(n)
-    code, boxes, left = _search(
-        p.ops,
-        p.constants,
-        p.support,
-        p.slots,
-        p.counts,
-        p.outputs,
-        waiting,
-        float(levels[0]),
-        float(levels[1]),
-        np.ascontiguousarray(cell, dtype=np.float64),
-        budget,
-        witness,
-    )
+    tape_arrays = (p.ops, p.constants, p.support, p.slots, p.counts, p.outputs)
+    c_low, c_high = (float(level) for level in levels)
+    cell = np.ascontiguousarray(cell, dtype=np.float64)
+    code, boxes, left = _search(*tape_arrays, waiting, c_low, c_high, cell, budget, witness)
     if code == _PROVED:
         return Search(Answer.PROVED, boxes, None, 0.0)
     sizes = np.prod((waiting[1, :left] - waiting[0, :left]) / np.where(high > low, high - low, 1.0), axis=1)
@@ -139,18 +129,8 @@ def _search_boxes(
         while step <= last and not dropped:
             odd = step % 2 == 1
             order = 0 if step == 0 else 2 - step % 2
-            interpret(
-                ops,
-                constants,
-                support,
-                slots,
-                counts,
-                sides,
-                centre if odd else low,
-                centre if odd else high,
-                order,
-                d,
-            )
+            start, end = (centre, centre) if odd else (low, high)
+            interpret(ops, constants, support, slots, counts, sides, start, end, order, d)
             if step == 0:
                 dropped = d[V, 0, 0] > c_high or d[V, 0, 1] < c_low or d[W, 0, 1] < 0.0
             elif odd:

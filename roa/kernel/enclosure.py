@@ -88,8 +88,7 @@ def _interpret_boxes(
     for box in range(low.shape[0]):
         interpret(ops, constants, support, slots, counts, sides, low[box], high[box], order, d)
         for j in range(outputs.shape[0]):
-            for s in range(jets.shape[2]):
-                jets[box, j, s, 0], jets[box, j, s, 1] = d[outputs[j], s, 0], d[outputs[j], s, 1]
+            jets[box, j] = d[outputs[j]]
 
 
 @inner
@@ -146,8 +145,7 @@ def _alike(d: Array, t: int, operation: Integers, n: int, used: Integers) -> boo
             d[t, s, 0], d[t, s, 1] = -d[a, s, 1], -d[a, s, 0]
     elif op in (MIN, MAX):
         below, above = d[first, 0, 1] <= d[second, 0, 0], d[second, 0, 1] <= d[first, 0, 0]
-        # Both: equal numbers, such as at a point where two functions touch that are in order all round it. Which of
-        # their slopes is that of the minimum does not show there.
+        # Both at a point where two functions may only touch: whose slope is the minimum's does not show there.
         if below and not above:
             _copy(d, t, a, used)
         elif above and not below:
@@ -182,14 +180,9 @@ def switches(d: Array, t: int, operation: Integers) -> bool:
 
 @inner
 def _one_side(d: Array, t: int, operation: Integers, side: int, used: Integers) -> None:
-    a, b = operation[1], operation[2]
-    if operation[0] != ABS:
-        _copy(d, t, a if side == 1 else b, used)
-    elif side == 1:
-        _copy(d, t, a, used)
-    else:
-        for s in used:
-            d[t, s, 0], d[t, s, 1] = -d[a, s, 1], -d[a, s, 0]
+    _copy(d, t, operation[2] if side == 2 and operation[0] != ABS else operation[1], used)
+    for s in used[: len(used) if side == 2 and operation[0] == ABS else 0]:
+        d[t, s, 0], d[t, s, 1] = -d[t, s, 1], -d[t, s, 0]
 
 
 @inner
