@@ -24,9 +24,12 @@ from roa.basin.counterexample import (
 )
 from roa.basin.intervals import clopper_pearson_upper, success_run_samples
 from roa.bound.bounds import Bounds
+from roa.bound.level_proof import LevelProver
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
+from roa.bound.proved_contact_level import branch_and_bound, proof_budget
 from roa.bound.statement import Bound, Strength
+from roa.kernel.branch_and_bound import Answer
 from roa.kernel.integration import Integration
 from roa.kernel.outcomes import Outcome
 from roa.kernel.target import Target
@@ -115,7 +118,7 @@ def judge(
     Parameters
     ----------
     configuration : with a level in its table [bound]
-    bounds : those derived for the same V; the norm bound is what can prove the claim
+    bounds : those derived for the same V; a proved one of them may settle the claim
     target, integration : rules of the outcomes
     run : the lanes, starts float64 (m, n) -> Trajectories
     seed : of the searches and draws
@@ -215,10 +218,22 @@ def _leaves_the_domain(case: _Case) -> Claim | None:
 
 
 def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
-    norm_bound = bounds.named("norm bound")
-    if norm_bound is None or norm_bound.strength is not Strength.PROVED or level > Decimal(norm_bound.level):
+    """Prove the claim by a bound that is proved already, or by branch and bound at the very level."""
+    for bound in bounds.stated:
+        if bound.strength is Strength.PROVED and level <= Decimal(bound.level):
+            reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
+            return case.judged(Result.PROVED, Decrease.PROVED, reason)
+    V, contact = case.claimed.V, bounds.named("contact level")
+    # Above the estimate, which errs upwards only, there are points with V̇ >= 0 and no proof to be had.
+    if not isinstance(V, Quadratic) or contact is None or level > Decimal(contact.level_estimated or contact.level):
         return None
-    reason = f"The level is at most that of the norm bound, {norm_bound.level:.6g}, up to which V̇ < 0 is proved."
+    prover = LevelProver(V)
+    if not prover.is_ready:
+        return None
+    proof = prover.prove(level, proof_budget(prover))
+    if proof.answer is not Answer.PROVED:
+        return None
+    reason = f"{branch_and_bound(proof)} on the whole claimed set, which lies inside the domain."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
 
 

@@ -124,6 +124,7 @@ def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
     return {
         "name": bound.name,
         "level": bound.level,
+        "level_estimated": bound.level_estimated,
         "strength": bound.strength,
         "note": bound.note,
         **_function(bound),

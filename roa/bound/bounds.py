@@ -13,6 +13,7 @@ from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import FormulaV, LyapunovFunction, Quadratic
 from roa.bound.norm_bound import norm_bound
 from roa.bound.point_checks import positive_definite
+from roa.bound.proved_contact_level import prove_contact_level
 from roa.bound.statement import Bound
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
@@ -54,16 +55,18 @@ def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) ->
 
 
 def derive_bounds(configuration: Configuration, equilibrium: Equilibrium) -> Bounds:
-    """Derive the norm bound and the contact level of the configured V."""
+    """Derive the norm bound and the contact level of the configured V, proved as far as that can be done."""
     V = lyapunov_function(configuration, equilibrium)
     if equilibrium.stability == "marginal":
         return Bounds(V, (), "The equilibrium has an eigenvalue on the imaginary axis: there is no certificate.")
     if isinstance(V, Quadratic) and positive_definite(V.enclosed_P) != "proved":
         return Bounds(V, (), "P is not positive definite by proof: it bounds nothing.")
-    derived = [contact_level(V)]
+    contact = contact_level(V)
+    derived = [contact]
     if isinstance(V, Quadratic):
-        derived.insert(0, norm_bound(V))
+        norm = norm_bound(V)
+        derived = [norm, prove_contact_level(contact, norm.level)]
     missing = [f"No {bound.name}: {bound.note}." for bound in derived if not bound.level > 0]
     if not isinstance(V, Quadratic):
-        missing.insert(0, "A V that is not quadratic has no norm bound.")
+        missing.insert(0, "A V that is not quadratic has no norm bound, and its contact level is not proved.")
     return Bounds(V, tuple(bound for bound in derived if bound.level > 0), " ".join(missing))

@@ -32,6 +32,7 @@ class Bound:
     strength : Strength
     note : str, one sentence that says what limits the level or on what it stands
     contact : float64 (n,), state units: the point that limits the level, where one is known
+    level_estimated : where less could be proved than was found by floating-point search: what that found
     """
 
     name: str
@@ -40,3 +41,4 @@ class Bound:
     strength: Strength
     note: str = ""
     contact: NDArray[np.float64] | None = None
+    level_estimated: float | None = None

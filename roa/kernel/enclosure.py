@@ -26,7 +26,7 @@ Flags = NDArray[np.bool_]
 
 VARIABLE, CONSTANT = int(Op.VARIABLE), int(Op.CONSTANT)
 ADD, SUBTRACT, NEGATE, MULTIPLY = int(Op.ADD), int(Op.SUBTRACT), int(Op.NEGATE), int(Op.MULTIPLY)
-ATAN2, MIN, MAX = int(Op.ATAN2), int(Op.MIN), int(Op.MAX)
+ATAN2, MIN, MAX, ABS = int(Op.ATAN2), int(Op.MIN), int(Op.MAX), int(Op.ABS)
 WHERE_NEGATIVE, WHERE_NOT_POSITIVE = int(Op.WHERE_NEGATIVE), int(Op.WHERE_NOT_POSITIVE)
 
 
@@ -59,8 +59,8 @@ def enclose(program: Program, low: Array, high: Array, order: int) -> Enclosed:
     m, k, n = len(low), len(program.outputs), program.support.shape[1]
     row, column = np.tril_indices(n)
     jets = np.zeros((m, k, (1, 1 + n, 1 + n + len(row))[order], 2))
-    p, counts = program, np.ascontiguousarray(program.counts[:, order])
-    _interpret(p.ops, p.constants, p.support, p.slots, counts, p.outputs, low, high, order, jets)
+    p = program
+    _interpret(p.ops, p.constants, p.support, p.slots, p.counts, p.outputs, low, high, order, jets)
     gradient, hessian = np.zeros((m, k, n, 2)), np.zeros((m, k, n, n, 2) if order == 2 else (m, k, 0, 0, 2))
     if order >= 1:
         gradient = jets[:, :, 1 : 1 + n]
@@ -83,27 +83,50 @@ def _interpret_boxes(
     jets: Array,
 ) -> None:
     """Run the tape once for each box; what is outside `slots` stays exactly zero."""
-    rows = ops.shape[0]
-    d = np.zeros((rows, jets.shape[2], 2))
+    d = np.zeros((ops.shape[0], jets.shape[2], 2))
+    sides = np.zeros(ops.shape[0], dtype=np.int64)
     for box in range(low.shape[0]):
-        for t in range(rows):
-            if ops[t, 0] == VARIABLE:
-                i = ops[t, 1]
-                d[t, 0, 0], d[t, 0, 1] = low[box, i], high[box, i]
-                if order >= 1:
-                    d[t, 1 + i, 0] = d[t, 1 + i, 1] = 1.0
-            elif ops[t, 0] == CONSTANT:
-                d[t, 0, 0], d[t, 0, 1] = constants[t, 0], constants[t, 1]
-            else:
-                used = slots[t, : counts[t]]
-                if not _alike(d, t, ops[t], support.shape[1], used):
-                    _smooth(d, t, ops[t], constants[t], support[t], order)
-                if undefined(d[t, 0, 0], d[t, 0, 1]):
-                    for s in used:
-                        d[t, s, 0] = d[t, s, 1] = math.nan
+        interpret(ops, constants, support, slots, counts, sides, low[box], high[box], order, d)
         for j in range(outputs.shape[0]):
-            for s in range(jets.shape[2]):
-                jets[box, j, s, 0], jets[box, j, s, 1] = d[outputs[j], s, 0], d[outputs[j], s, 1]
+            jets[box, j] = d[outputs[j]]
+
+
+@inner
+def interpret(
+    ops: Integers,
+    constants: Array,
+    support: Flags,
+    slots: Integers,
+    counts: Integers,
+    sides: Integers,
+    low: Array,
+    high: Array,
+    order: int,
+    d: Array,
+) -> None:
+    """Run the tape over the box [low, high] (n,) and leave the jet of every row, up to `order`, in d.
+
+    Of d (rows, slots of a jet, 2) only what is in `slots` is written; the rest has to be zero from the start.
+    `sides` (rows,) picks the first (1) or second (2) of the two smooth functions that a minimum, a maximum or an
+    absolute value switches between, all over the box; 0 leaves the switching in.
+    """
+    for t in range(ops.shape[0]):
+        if ops[t, 0] == VARIABLE:
+            i = ops[t, 1]
+            d[t, 0, 0], d[t, 0, 1] = low[i], high[i]
+            if order >= 1:
+                d[t, 1 + i, 0] = d[t, 1 + i, 1] = 1.0
+        elif ops[t, 0] == CONSTANT:
+            d[t, 0, 0], d[t, 0, 1] = constants[t, 0], constants[t, 1]
+        else:
+            used = slots[t, : counts[t, order]]
+            if sides[t] != 0:
+                _one_side(d, t, ops[t], sides[t], used)
+            elif not _alike(d, t, ops[t], support.shape[1], used):
+                _smooth(d, t, ops[t], constants[t], support[t], order)
+            if undefined(d[t, 0, 0], d[t, 0, 1]):
+                for s in used:
+                    d[t, s, 0] = d[t, s, 1] = math.nan
 
 
 @inner
@@ -121,9 +144,11 @@ def _alike(d: Array, t: int, operation: Integers, n: int, used: Integers) -> boo
         for s in used:
             d[t, s, 0], d[t, s, 1] = -d[a, s, 1], -d[a, s, 0]
     elif op in (MIN, MAX):
-        if d[first, 0, 1] <= d[second, 0, 0]:
+        below, above = d[first, 0, 1] <= d[second, 0, 0], d[second, 0, 1] <= d[first, 0, 0]
+        # Both at a point where two functions may only touch: whose slope is the minimum's does not show there.
+        if below and not above:
             _copy(d, t, a, used)
-        elif d[second, 0, 1] <= d[first, 0, 0]:
+        elif above and not below:
             _copy(d, t, b, used)
         else:
             _kink(d, t, a, b, op == MIN, n, used)
@@ -142,6 +167,22 @@ def _alike(d: Array, t: int, operation: Integers, n: int, used: Integers) -> boo
     else:
         return False
     return True
+
+
+@inner
+def switches(d: Array, t: int, operation: Integers) -> bool:
+    """Say whether a row is a minimum, maximum or absolute value whose kink may lie in the box that d was run over."""
+    op, a, b = operation[0], operation[1], operation[2]
+    if op in (MIN, MAX):
+        return not (d[a, 0, 1] <= d[b, 0, 0] or d[b, 0, 1] <= d[a, 0, 0])
+    return op == ABS and not (d[a, 0, 0] > 0.0 or d[a, 0, 1] < 0.0)
+
+
+@inner
+def _one_side(d: Array, t: int, operation: Integers, side: int, used: Integers) -> None:
+    _copy(d, t, operation[2] if side == 2 and operation[0] != ABS else operation[1], used)
+    for s in used[: len(used) if side == 2 and operation[0] == ABS else 0]:
+        d[t, s, 0], d[t, s, 1] = -d[t, s, 1], -d[t, s, 0]
 
 
 @inner

@@ -74,7 +74,7 @@ def test_bound_and_check(write, tmp_path, capsys):
     config, out = small_run(write, tmp_path)
     assert main(["bound", config, "--out", out, "--quiet", "--json"]) == 0
     names = {one["name"]: one["strength"] for one in json.loads(capsys.readouterr().out)["bounds"]}
-    assert names == {"norm bound": "proved", "contact level": "estimated"}
+    assert names == {"norm bound": "proved", "contact level": "proved"}
     assert main(["check", config, "--quiet", "--json"]) == 0
     document = json.loads(capsys.readouterr().out)
     assert document["stability"] == "stable"
@@ -98,9 +98,21 @@ def test_proved_claim(write, tmp_path, capsys):
     assert (code, claim["result"], claim["decrease"]) == (0, "proved", "proved")
 
 
+# Khalil draws level 2.25 (from memory), below the level that is stated as proved; the contact level is 2.304478
+# (computed independently), and 2.3044 is proved for this claim alone.
+@pytest.mark.parametrize(("level", "argument"), [(2.25, "contact level"), (2.3044, "whole claimed set")])
+def test_claim_proved_by_branch_and_bound(write, tmp_path, capsys, level, argument):
+    code, claim = judge(write, tmp_path, capsys, f"level = {level}")
+    assert (code, claim["result"], claim["decrease"]) == (0, "proved", "proved")
+    assert argument in claim["reason"]
+    assert "boxes" in claim["reason"]
+
+
 @pytest.mark.parametrize(("accept", "code"), [("proved", 3), ("supported", 0)])
 def test_supported_claim(write, tmp_path, capsys, accept, code):
-    found, claim = judge(write, tmp_path, capsys, "level = 2.2", f'accept = "{accept}"')
+    # A formula that is no quadratic as it stands, though in truth it is one: no proof is tried.
+    bound = 'V = "1.5*x**2 - x*y + y**2 + 0*x**4"\nlevel = 2.2'
+    found, claim = judge(write, tmp_path, capsys, bound, f'accept = "{accept}"')
     assert (found, claim["result"], claim["decrease"]) == (code, "supported", "undecided")
     assert claim["nonconverging_fraction_upper"] <= 1e-3
 

@@ -53,9 +53,11 @@ def test_norm_bound_lies_between_the_two_hand_calculations(reversed_oscillator):
 def test_contact_level_of_the_reversed_oscillator(reversed_oscillator):
     """Largest level with V̇ < 0: 2.304478, area 6.475411 (computed independently); 2.25 is drawn (from memory)."""
     bound = reversed_oscillator.named("contact level")
-    assert bound.level == pytest.approx(2.304478, rel=1e-6)
+    assert bound.level_estimated == pytest.approx(2.304478, rel=1e-6)
+    assert volume_inside(bound.V, bound.level_estimated) == pytest.approx(6.475411, rel=1e-6)
+    assert bound.strength is Strength.PROVED
+    assert 0.999 * 2.304478 < bound.level < 2.304478
     assert bound.level > 2.25
-    assert volume_inside(bound.V, bound.level) == pytest.approx(6.475411, rel=1e-6)
 
 
 @pytest.mark.parametrize(("level", "area"), [(2.304478, 6.475411), (2.25, 6.322333), (0.8, 2.247941)])
@@ -70,6 +72,7 @@ def test_best_published_ellipse_is_valid_and_larger():
     """Area 6.63699 for P = [[.6310, -.2136], [-.2136, .4274]] at level 1 (computed independently, to four digits)."""
     given = van_der_pol(bound="P = [[0.6310, -0.2136], [-0.2136, 0.4274]]")
     bound = bounds_of(given).named("contact level")
+    assert bound.strength is Strength.PROVED
     assert bound.level == pytest.approx(1, abs=1e-3)
     assert volume_inside(bound.V, bound.level) == pytest.approx(6.637, rel=1e-3)
 
@@ -79,7 +82,10 @@ def test_circle_of_the_product_loop():
     for text in ('V = "x1**2 + x2**2"', "P = [[1, 0], [0, 1]]"):
         bounds = bounds_of(product(bound=text))
         assert isinstance(bounds.V, Quadratic)
-        assert bounds.named("contact level").level == pytest.approx(8 / (3 * sqrt(3)), rel=1e-6)
+        contact = bounds.named("contact level")
+        assert contact.level_estimated == pytest.approx(8 / (3 * sqrt(3)), rel=1e-6)
+        assert contact.strength is Strength.PROVED
+        assert 0.9998 * 8 / (3 * sqrt(3)) < contact.level < 8 / (3 * sqrt(3))
         assert 0 < bounds.named("norm bound").level < 8 / (3 * sqrt(3))
 
 
@@ -103,7 +109,8 @@ def test_maximal_function_of_the_product_loop():
 def test_loops_of_the_configurations(name, contact, norm):
     """Contact levels of the two plants, computed independently of this project."""
     bounds = bounds_of(read(CONFIGS / f"{name}.toml"))
-    assert bounds.named("contact level").level == pytest.approx(contact, rel=1e-3)
+    assert bounds.named("contact level").level_estimated == pytest.approx(contact, rel=1e-3)
+    assert bounds.named("contact level").strength is Strength.PROVED
     assert norm[0] < bounds.named("norm bound").level < norm[1]
 
 
