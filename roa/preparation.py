@@ -57,7 +57,10 @@ class Preparation:
     def bounds(self) -> Bounds:
         """Lyapunov function and the bounds that are derived from it."""
         from roa.bound.bounds import derive_bounds
+        from roa.kernel.machine_code import is_kept
 
+        if not is_kept():
+            self.progress.say("compiling the prover (once on this machine, about half a minute)")
         return derive_bounds(self.configuration, self.equilibrium)
 
     @cached_property

@@ -1,7 +1,7 @@
 """The contact level by proof: the largest level, close below the estimated one, that branch and bound can carry.
 
 V̇ = 0 at the contact point itself, so the level there is never provable; how close a proof comes depends on
-the loop. The first attempt is at 0.9999 of the estimate, which most loops reach at once; then a list of
+the loop. The first attempt is at 0.999999 of the estimate, which most loops reach at once; then a list of
 shares is searched by halves, with a budget of boxes that is the same on every machine.
 """
 
@@ -14,8 +14,8 @@ from roa.bound.lyapunov_function import Quadratic
 from roa.bound.statement import Bound, Strength
 from roa.kernel.branch_and_bound import Answer
 
-FIRST = 0.9999
-SHARES = (0.999, 0.99, 0.97, 0.9, 0.8, 0.6, 0.4, 0.2)  # of the estimate
+FIRST = 0.999999
+SHARES = (0.9999, 0.999, 0.99, 0.97, 0.9, 0.8, 0.6, 0.4, 0.2)  # of the estimate
 WORK, BOXES = 1.2e9, 200_000  # most elementary interval operations, and most boxes, of all attempts together
 FIRST_PART, PART = 0.15, 0.4  # of the budget for the first attempt; of what is left, for each later one
 LEAST = 100  # boxes without which no attempt is worth while

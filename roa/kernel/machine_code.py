@@ -27,6 +27,14 @@ F = TypeVar("F", bound=Callable[..., Any])
 inner: Callable[[F], F] = njit(error_model="numpy", no_cpython_wrapper=True, no_cfunc_wrapper=True)  # type: ignore[call-overload]
 
 
+_folders: list[Path | None] = []
+
+
+def is_kept() -> bool:
+    """Whether the machine code of all functions that were given to `compiled` so far is in the cache."""
+    return all(folder is not None and any(folder.rglob("*.nbi")) for folder in _folders)
+
+
 def compiled(function: Callable[..., Any], uses: Iterable[ModuleType]) -> Any:
     """Compile a function that calls compiled functions of the modules `uses`, and cache the result.
 
@@ -37,6 +45,7 @@ def compiled(function: Callable[..., Any], uses: Iterable[ModuleType]) -> Any:
     """
     files = [__file__, function.__code__.co_filename, *(str(module.__file__) for module in uses)]
     folder = _folder_of([Path(file).read_text(encoding="utf-8") for file in files])
+    _folders.append(folder)
     if folder is None:
         return njit(nogil=True, error_model="numpy")(function)
     settings: Any = numba.config  # its attributes are set at run time, unknown to a type checker

@@ -99,8 +99,8 @@ def test_proved_claim(write, tmp_path, capsys):
 
 
 # Khalil draws level 2.25 (from memory), below the level that is stated as proved; the contact level is 2.304478
-# (computed independently), and 2.3044 is proved for this claim alone.
-@pytest.mark.parametrize(("level", "argument"), [(2.25, "contact level"), (2.3044, "whole claimed set")])
+# (computed independently), and 2.304476 is proved for this claim alone.
+@pytest.mark.parametrize(("level", "argument"), [(2.25, "contact level"), (2.304476, "whole claimed set")])
 def test_claim_proved_by_branch_and_bound(write, tmp_path, capsys, level, argument):
     code, claim = judge(write, tmp_path, capsys, f"level = {level}")
     assert (code, claim["result"], claim["decrease"]) == (0, "proved", "proved")
