@@ -52,7 +52,7 @@ def test_mast():
 
 def test_cart_has_the_published_linearisation_and_the_gains_of_its_design():
     # The plant without feedback: rows as derived independently from the equations of motion; the equations and
-    # parameters are those of several course pages on the pendulum on a cart.
+    # parameters are those of many texts on the pendulum on a cart.
     text = (CONFIGS / "cart.toml").read_text()
     text = re.sub(r"(?m)^(k_\w+ *= \{ value = )[-\d.]+", r"\g<1>0", text)
     plant = find_equilibrium(read_text(text, "plant").loop, "plant").A
