@@ -14,7 +14,7 @@ from roa.bound.lyapunov_function import FormulaV, LyapunovFunction, Quadratic
 from roa.bound.norm_bound import norm_bound
 from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import prove_contact_level
-from roa.bound.statement import Bound
+from roa.bound.statement import Bound, Strength
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
 
@@ -37,6 +37,12 @@ class Bounds:
     def named(self, name: str) -> Bound | None:
         """The bound of that name, or None."""
         return next((bound for bound in self.stated if bound.name == name), None)
+
+    @property
+    def largest_proved(self) -> Bound | None:
+        """The proved bound of the largest level, or None where nothing is proved."""
+        proved = [bound for bound in self.stated if bound.strength is Strength.PROVED]
+        return max(proved, key=lambda bound: bound.level, default=None)
 
 
 def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) -> LyapunovFunction:

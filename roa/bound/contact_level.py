@@ -18,6 +18,7 @@ from scipy.stats import qmc
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.statement import Bound, Strength
 from roa.loop.model import Loop
+from roa.loop.wording import point_text
 
 Array = NDArray[np.float64]
 
@@ -65,7 +66,8 @@ def contact_level(V: LyapunovFunction) -> Bound:
         return Bound(NAME, V, level, Strength.ESTIMATED, _touching(V.loop, point), point)
     if not level > 0:
         return Bound(NAME, V, 0.0, Strength.ESTIMATED, "V̇ < 0 or V > 0 fails next to the equilibrium", point)
-    note = _touching(V.loop, point) if ends.at_face[i] else f"V̇ reaches zero at {_in_words(V.loop, point)}"
+    place = point_text(V.loop.states, V.loop.units, point)
+    note = _touching(V.loop, point) if ends.at_face[i] else f"V̇ reaches zero at {place}"
     return Bound(NAME, V, level, Strength.ESTIMATED, note, point)
 
 
@@ -159,11 +161,6 @@ def _touched_face(V: LyapunovFunction) -> tuple[float, Array] | None:
     levels = gaps**2 / np.diag(inverse)[:, None]
     i, side = np.unravel_index(np.argmin(levels), levels.shape)
     return float(levels[i, side]), V.centre + gaps[i, side] * inverse[:, i] / inverse[i, i]
-
-
-def _in_words(loop: Loop, x: Array) -> str:
-    each = zip(loop.states, loop.units, x, strict=True)
-    return ", ".join(f"{name} = {value:.6g} {unit}".rstrip() for name, unit, value in each)
 
 
 def _touching(loop: Loop, x: Array) -> str:

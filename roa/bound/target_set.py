@@ -13,7 +13,7 @@ from roa.bound.equilibrium_enclosure import enclose_equilibrium
 from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.norm_bound import norm_bound
-from roa.bound.statement import Bound, Strength
+from roa.bound.statement import Bound
 from roa.bound.volume import half_extents
 from roa.kernel.target import Target
 from roa.loop.configuration import Configuration
@@ -40,8 +40,7 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
     """
     loop, sweep = configuration.loop, configuration.sweep
     dwell = sweep.dwell if sweep.dwell is not None else TIME_CONSTANTS * equilibrium.slowest_time_constant
-    proved = [bound for bound in bounds.stated if bound.strength is Strength.PROVED]
-    best = max(proved, key=lambda bound: bound.level, default=None)
+    best = bounds.largest_proved
     note = ""
     if best is None:
         best = _bound_of_another_shape(configuration, equilibrium)

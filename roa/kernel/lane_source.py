@@ -13,7 +13,7 @@ an imported file.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import partial
+from functools import cache, partial
 from pathlib import Path
 
 import jinja2
@@ -55,9 +55,7 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
     # 1 is the target itself, where it is a ball; 2, 3, … are the other equilibria.
     balls = ([] if level else [1]) + [2 + k for k in range(len(target.elsewhere))]
     rows = _buffer_rows(states, bool(balls))
-    environment = jinja2.Environment(undefined=jinja2.StrictUndefined, keep_trailing_newline=True)
-    template = environment.from_string(Path(__file__).with_name("lanes.py.jinja").read_text(encoding="utf-8"))
-    text = template.render(
+    text = _template().render(
         outcome=Outcome,
         reason=Reason,
         signature=SIGNATURE,
@@ -79,6 +77,13 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         distance=lambda ball, x: " + ".join(f"(({x}{j} - at{ball}_{j}) * inverse{j}) ** 2" for j in states),
     )
     return LaneSource(vector_math.source(code.functions) + "\n\n" + text, code.constants)
+
+
+@cache
+def _template() -> jinja2.Template:
+    """The lane loop, read once: several steps of a run ask for the text of the same module."""
+    environment = jinja2.Environment(undefined=jinja2.StrictUndefined, keep_trailing_newline=True)
+    return environment.from_string(Path(__file__).with_name("lanes.py.jinja").read_text(encoding="utf-8"))
 
 
 def _buffer_rows(states: range, balls: bool) -> dict[str, int]:

@@ -12,6 +12,7 @@ from roa.loop.configuration import Configuration
 from roa.loop.evaluate import evaluate
 from roa.loop.expression import names_in
 from roa.loop.model import Loop
+from roa.loop.wording import point_text
 
 Array = NDArray[np.float64]
 
@@ -243,10 +244,7 @@ def _distance(loop: Loop, points: Array, x: Array) -> Array:
 
 
 def _point(loop: Loop, x: Array) -> str:
-    values = (
-        f"{name} = {value:.6g} {unit}".rstrip() for name, value, unit in zip(loop.states, x, loop.units, strict=True)
-    )
-    return f"({', '.join(values)})"
+    return f"({point_text(loop.states, loop.units, x)})"
 
 
 def _no_equilibrium(loop: Loop, x: Array, source: str, reason: str) -> str:

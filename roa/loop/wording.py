@@ -28,3 +28,9 @@ def shortened(text: str, longest: int = 20) -> str:
 def quoted(text: str) -> str:
     """Return the text in quotes on one line, line breaks escaped."""
     return json.dumps(text, ensure_ascii=False)
+
+
+def point_text(states: Iterable[str], units: Iterable[str], x: Iterable[float]) -> str:
+    """A state as `tilt = 0.31 rad, rate = -1.2 rad/s`."""
+    each = zip(states, units, x, strict=True)
+    return ", ".join(f"{name} = {value:.6g} {unit}".rstrip() for name, unit, value in each)

@@ -16,7 +16,6 @@ from typing import Any
 
 from roa import __version__
 from roa.bound.lyapunov_function import Quadratic
-from roa.bound.statement import Bound, Strength
 from roa.errors import MachineError, UserError
 from roa.sweep import designs
 from roa.sweep.fingerprint import differences
@@ -71,7 +70,7 @@ class Header:
     def of(cls, plan: Plan) -> Header:
         """Return the header of a run that begins now."""
         configuration, loop = plan.configuration, plan.configuration.loop
-        V = plan.bounds.V
+        V, proved = plan.bounds.V, plan.bounds.largest_proved
         return cls(
             title=loop.title,
             roa_version=__version__,
@@ -93,7 +92,7 @@ class Header:
             units=list(loop.units),
             V="(x - equilibrium)' P (x - equilibrium)" if isinstance(V, Quadratic) else V.text,
             P=V.P.tolist() if isinstance(V, Quadratic) else None,
-            level=_proved_level(plan.bounds.stated),
+            level=0.0 if proved is None else proved.level,
             equilibrium=plan.equilibrium.x.tolist(),
         )
 
@@ -138,7 +137,3 @@ class Header:
             raise UserError(
                 f"{where}: was begun with {self.samples:,} starts; it can be extended, not shortened to {new.samples:,}"
             )
-
-
-def _proved_level(stated: tuple[Bound, ...]) -> float:
-    return max((bound.level for bound in stated if bound.strength is Strength.PROVED), default=0.0)
