@@ -10,7 +10,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.kernel.trajectories import Trajectories
-from roa.sweep.designs import Design
 
 
 @dataclass(frozen=True)
@@ -43,12 +42,20 @@ class Runs(Protocol):
         ...
 
 
+class Drawn(Protocol):
+    """What gives an index its start: a design that knows all its starts, or the starts of one round."""
+
+    def points(self, first: int, count: int) -> NDArray[np.float64]:
+        """Return starts first, …, first + count - 1, float64 (count, n), state units."""
+        ...
+
+
 def blocks_of(samples: int, size: int) -> Iterator[Block]:
     """Yield the blocks of a sweep: `size` starts each, the last one what is left."""
     for index, first in enumerate(range(0, samples, size)):
         yield Block(index, first, min(size, samples - first))
 
 
-def simulate(block: Block, design: Design, lanes: Runs) -> Trajectories:
+def simulate(block: Block, drawn: Drawn, lanes: Runs) -> Trajectories:
     """Return the block's results, a pure function of the plan and the block."""
-    return lanes.run(design.points(block.first, block.count))
+    return lanes.run(drawn.points(block.first, block.count))

@@ -11,18 +11,23 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import replace
 
+import numpy as np
+
 from roa.errors import Interrupted, MachineError, UserError
 from roa.kernel.lanes import Lanes, compile_lanes
 from roa.kernel.trajectories import Trajectories
 from roa.sweep import executors, store
-from roa.sweep.block import Block, blocks_of, simulate
+from roa.sweep.block import Block, Drawn, simulate
 from roa.sweep.executors import attempt
 from roa.sweep.finished import Finished, look_through
 from roa.sweep.header import Header
 from roa.sweep.plan import Plan
 from roa.sweep.progress import Both, Log, Progress
+from roa.sweep.rounds import Course
 from roa.sweep.run_folder import RunFolder, write_atomically
 from roa.sweep.stop import StopRequest, stop_on_signals
+
+NO_ANSWERS = np.empty(0, np.bool_)
 
 
 def launch(plan: Plan, folder: RunFolder, jobs: int | None = None, progress: Progress | None = None) -> None:
@@ -50,16 +55,22 @@ def launch(plan: Plan, folder: RunFolder, jobs: int | None = None, progress: Pro
     with stop_on_signals() as stop, _one_sentence(folder), folder.locked():
         header = _begin(plan, folder)
         finished = look_through(folder, header, progress.say)
-        missing = [block for block in blocks_of(plan.samples, plan.block_size) if not finished.holds(block)]
-        if missing:
-            _require_space(plan, folder, missing)
-            _sweep(plan, folder, missing, min(jobs or _processors(), len(missing)), stop, progress)
-            finished = replace(finished, separate=finished.separate | set(missing))
-        if finished.merged_count < plan.samples:
-            progress.say(f"merging {plan.samples:,} samples")
-            store.write_samples(folder.sweep, header, _all_rows(finished, stop))
+        course = Course(plan)
+        work = _Work(plan, folder, jobs, stop, progress)
+        now = course.first()
+        while now is not None:
+            missing = [block for block in now.blocks if not finished.holds(block)]
+            if missing:
+                work.sweep(now.drawn, missing, finished.merged_count)
+                finished = replace(finished, separate=finished.separate | set(missing))
+            now = course.after(finished.answers(now.blocks) if course.needs_answers else NO_ANSWERS)
+        work.end()
+        count = course.blocks[-1].stop
+        if finished.merged_count < count:
+            progress.say(f"merging {count:,} samples")
+            store.write_samples(folder.sweep, replace(header, samples=count), _all_rows(finished, course.blocks, stop))
             progress.say(f"{folder.sweep} is written")
-        _remove_blocks(finished)
+        _remove_blocks(folder, course.blocks)
 
 
 @contextmanager
@@ -94,38 +105,65 @@ def _processors() -> int:
     return cpu_count()
 
 
-def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
-    """Refuse to begin what the disk cannot hold: the missing blocks, and all of the samples merged."""
+class _Work:
+    """Runs blocks and stores each as it finishes; what all rounds share is made at the first."""
+
+    def __init__(self, plan: Plan, folder: RunFolder, jobs: int | None, stop: StopRequest, progress: Progress) -> None:
+        self._plan, self._folder, self._stop, self._progress = plan, folder, stop, progress
+        self._jobs = jobs
+        self._lanes: Lanes | None = None
+
+    def sweep(self, drawn: Drawn, missing: list[Block], merged: int) -> None:
+        """Run the missing blocks of a round; `merged` samples of the sweep are in `sweep.h5` already."""
+        plan, stop = self._plan, self._stop
+        jobs = min(self._jobs or _processors(), len(missing))
+        lanes = self._lanes or self._begin(missing, merged, jobs)
+        self._lanes = lanes
+        failed = []
+        run = executors.load("serial" if jobs == 1 else "threads")
+        for block, result in run(lambda block: _unless(stop, block, drawn, lanes), _until(stop, missing), jobs):
+            if isinstance(result, Exception):
+                failed.append(block)
+            elif result is not None:
+                _store(block, result, plan, self._folder, self._progress)
+        for block in failed if not stop.made else []:
+            _retry(block, plan, drawn, lanes, self._folder, self._progress)
+        if stop.made:
+            self._progress.end()
+            raise _interrupted(self._folder)
+
+    def _begin(self, missing: list[Block], merged: int, jobs: int) -> Lanes:
+        """See to space and machine code, and say what is to be done; later rounds are not known yet."""
+        plan = self._plan
+        in_rounds = plan.design.in_rounds or plan.enough is not None
+        starts = plan.samples - merged if in_rounds else sum(block.count for block in missing)
+        _require_space(plan, self._folder, starts)
+        if in_rounds:
+            self._progress.say(
+                f"at most {starts:,} starts to run, in rounds that follow from the results of earlier ones"
+            )
+        else:
+            self._progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {jobs} at a time")
+        lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
+        self._progress.begin(plan.samples - starts, plan.samples)
+        return lanes
+
+    def end(self) -> None:
+        """Say that the rounds are over, if anything was run."""
+        if self._lanes is not None:
+            self._progress.end()
+
+
+def _require_space(plan: Plan, folder: RunFolder, starts: int) -> None:
+    """Refuse to begin what the disk cannot hold: the missing starts in blocks, and all of the samples merged."""
     row = 8 * (3 * plan.configuration.loop.n + 1) + 6
-    needed = row * (sum(block.count for block in missing) + plan.samples)
+    needed = row * (starts + plan.samples)
     free = shutil.disk_usage(folder.path).free
     if needed > free:
         raise MachineError(
             f"{folder.path}: the sweep needs {needed / 1e9:.2f} GB of disk, {free / 1e9:.2f} GB are free; "
             f"make room, then `{folder.resume_command}`"
         )
-
-
-def _sweep(
-    plan: Plan, folder: RunFolder, missing: list[Block], jobs: int, stop: StopRequest, progress: Progress
-) -> None:
-    """Run the missing blocks and store each as it finishes."""
-    starts = sum(block.count for block in missing)
-    progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {jobs} at a time")
-    lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
-    progress.begin(plan.samples - starts, plan.samples)
-    failed = []
-    run = executors.load("serial" if jobs == 1 else "threads")
-    for block, result in run(lambda block: _unless(stop, block, plan, lanes), _until(stop, missing), jobs):
-        if isinstance(result, Exception):
-            failed.append(block)
-        elif result is not None:
-            _store(block, result, plan, folder, progress)
-    for block in failed if not stop.made else []:
-        _retry(block, plan, lanes, folder, progress)
-    progress.end()
-    if stop.made:
-        raise _interrupted(folder)
 
 
 def _until(stop: StopRequest, blocks: list[Block]) -> Iterator[Block]:
@@ -135,15 +173,15 @@ def _until(stop: StopRequest, blocks: list[Block]) -> Iterator[Block]:
         yield block
 
 
-def _unless(stop: StopRequest, block: Block, plan: Plan, lanes: Lanes) -> Trajectories | None:
+def _unless(stop: StopRequest, block: Block, drawn: Drawn, lanes: Lanes) -> Trajectories | None:
     """Run a block; not one that was handed out before, but had not begun when the stop was asked for."""
-    return None if stop.made else simulate(block, plan.design, lanes)
+    return None if stop.made else simulate(block, drawn, lanes)
 
 
-def _retry(block: Block, plan: Plan, lanes: Lanes, folder: RunFolder, progress: Progress) -> None:
+def _retry(block: Block, plan: Plan, drawn: Drawn, lanes: Lanes, folder: RunFolder, progress: Progress) -> None:
     """Try a block that failed once more, alone: it may have failed for want of memory."""
     progress.say(f"{block} failed and is tried again alone")
-    result = attempt(lambda block: simulate(block, plan.design, lanes), block)
+    result = attempt(lambda block: simulate(block, drawn, lanes), block)
     if not isinstance(result, Trajectories):
         progress.end()
         raise MachineError(
@@ -158,22 +196,21 @@ def _store(block: Block, rows: Trajectories, plan: Plan, folder: RunFolder, prog
     progress.add(rows.outcome)
 
 
-def _all_rows(finished: Finished, stop: StopRequest) -> Iterator[tuple[Block, Trajectories]]:
-    for block in blocks_of(finished.header.samples, finished.header.block_size):
+def _all_rows(finished: Finished, blocks: list[Block], stop: StopRequest) -> Iterator[tuple[Block, Trajectories]]:
+    for block in blocks:
         if stop.made:
             raise _interrupted(finished.folder)
         yield block, finished.rows(block)
 
 
-def _remove_blocks(finished: Finished) -> None:
+def _remove_blocks(folder: RunFolder, blocks: list[Block]) -> None:
     """Remove the files of merged blocks, whole or not; foreign files stay, and the folder with them."""
-    folder = finished.folder.blocks
-    if not folder.is_dir():
+    if not folder.blocks.is_dir():
         return
-    for block in blocks_of(finished.header.samples, finished.header.block_size):
-        (folder / block.file_name).unlink(missing_ok=True)
-    if not any(folder.iterdir()):
-        folder.rmdir()
+    for block in blocks:
+        (folder.blocks / block.file_name).unlink(missing_ok=True)
+    if not any(folder.blocks.iterdir()):
+        folder.blocks.rmdir()
 
 
 def _interrupted(folder: RunFolder) -> Interrupted:
