@@ -42,7 +42,7 @@ class Preparation:
     def __init__(
         self, configuration: Configuration, samples: int | None, seed: int | None, progress: Progress | None = None
     ) -> None:
-        from roa.loop.equilibrium import check_V, find_equilibrium, require_stable
+        from roa.loop.equilibrium import check_V, find_equilibrium, require_given_V, require_stable
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
@@ -50,7 +50,10 @@ class Preparation:
         self.progress = progress or Progress()
         self._samples, self._seed = samples, seed
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
-        require_stable(self.equilibrium, configuration.loop, configuration.source)
+        if configuration.bound.inner is None:
+            require_stable(self.equilibrium, configuration.loop, configuration.source)
+        else:
+            require_given_V(configuration, self.equilibrium)
         check_V(configuration, self.equilibrium)
 
     @cached_property
