@@ -166,8 +166,8 @@ def _bound_table(
     table = _checked("bound", BoundTable, rest, BOUND_KEYS, faults)
     if "V" in content:
         tree = _lyapunov_formula(content["V"], tables, loop, faults)
-        given = {"level": table.level, "inner": table.inner} if table else {}
-        table = BoundTable(V=tree, V_text=content["V"], **given) if table and tree else None
+        levels = {"level": table.level, "inner": table.inner} if table else {}
+        table = BoundTable(V=tree, V_text=content["V"], **levels) if table and tree else None
     if table and loop:
         _check_matrices(table, loop.n, faults)
     return table
