@@ -10,8 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.basin.intervals import Interval
-from roa.basin.share import Tally
-from roa.basin.tally import tally_of
+from roa.basin.share import Share, Tally
+from roa.basin.tally import in_rounds, tally_of
 from roa.kernel.outcomes import Outcome, Reason
 from roa.loop.model import Loop
 from roa.sweep.samples import Samples
@@ -25,6 +25,8 @@ class Basin:
     ----------
     share : what the answers of the starts say of the share
     counts : by outcome word, every outcome listed
+    by_outcome : share of the samples with each outcome that occurred, by its word; none of a design in rounds, whose
+        samples are not spread evenly
     reasons : by reason word, only those that occurred
     partial : whether the sweep is to have more samples than these
     confidence : of the intervals, two-sided
@@ -33,6 +35,7 @@ class Basin:
 
     share: Tally
     counts: Mapping[str, int]
+    by_outcome: Mapping[str, Share]
     reasons: Mapping[str, int]
     partial: bool
     confidence: float
@@ -58,6 +61,11 @@ class Basin:
         """Interval of the share."""
         return self.interval_at(self.confidence)
 
+    @property
+    def outcome_intervals(self) -> Mapping[str, Interval]:
+        """Interval of the share of each outcome that occurred."""
+        return {word: share.interval(self.loop.n, self.confidence) for word, share in self.by_outcome.items()}
+
     def interval_at(self, confidence: float) -> Interval:
         """Interval of the share at another confidence."""
         return self.share.interval(self.loop.n, confidence)
@@ -79,15 +87,17 @@ def measure(samples: Samples, loop: Loop, confidence: float, centre: NDArray[np.
     Of a design in rounds the answers are kept, one byte each. `centre` is the equilibrium, float64 (n,), state units.
     """
     share = tally_of(samples, loop, np.zeros(loop.n) if centre is None else centre)
-    outcomes = np.zeros(len(Outcome), dtype=np.int64)
+    by_outcome = {outcome: Share(samples.design, samples.replicates) for outcome in Outcome}
     reasons = np.zeros(len(Reason), dtype=np.int64)
     for first, trajectories in samples.chunks():
         share.add(first, trajectories.in_basin)
-        outcomes += np.bincount(trajectories.outcome, minlength=len(Outcome))
+        for outcome, one in by_outcome.items():
+            one.add(first, trajectories.outcome == outcome)
         reasons += np.bincount(trajectories.reason, minlength=len(Reason))
     return Basin(
         share=share,
-        counts={outcome.word: int(outcomes[outcome]) for outcome in Outcome},
+        counts={outcome.word: int(one.hits.sum()) for outcome, one in by_outcome.items()},
+        by_outcome={} if in_rounds(samples) else {o.word: one for o, one in by_outcome.items() if one.hits.any()},
         reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
         partial=samples.partial,
         confidence=confidence,
