@@ -12,11 +12,17 @@ from typing import TYPE_CHECKING
 from roa.errors import UserError
 
 if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    import numpy as np
+    from numpy.typing import NDArray
+
     from roa.basin.claim import Claim
     from roa.bound.bounds import Bounds
     from roa.kernel.integration import Integration
     from roa.kernel.lanes import Lanes
     from roa.kernel.target import Target
+    from roa.kernel.trajectories import Trajectories
     from roa.loop.configuration import Configuration
     from roa.loop.equilibrium import Equilibrium
     from roa.sweep.pilot import Pilot
@@ -32,6 +38,7 @@ class Preparation:
     configuration : Configuration
     samples, seed : in place of the configuration's, where given
     progress : told what takes a while
+    jobs : threads for what is simulated beside the sweep; None for as many as this process may use processors
 
     Raises
     ------
@@ -40,15 +47,16 @@ class Preparation:
     """
 
     def __init__(
-        self, configuration: Configuration, samples: int | None, seed: int | None, progress: Progress | None = None
-    ) -> None:
+        self, configuration: Configuration, samples: int | None, seed: int | None, progress: Progress | None = None,
+        jobs: int | None = None,
+    ) -> None:  # fmt: skip
         from roa.loop.equilibrium import check_V, find_equilibrium, require_stable
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
         self.configuration = configuration
         self.progress = progress or Progress()
-        self._samples, self._seed = samples, seed
+        self._samples, self._seed, self._jobs = samples, seed, jobs
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
         require_stable(self.equilibrium, configuration.loop, configuration.source)
         check_V(configuration, self.equilibrium)
@@ -110,6 +118,14 @@ class Preparation:
 
         return compile_lanes(self.configuration.loop, self.target, self.integration)
 
+    @cached_property
+    def simulate(self) -> Callable[[NDArray[np.float64]], Trajectories]:
+        """Integrate any starts, float64 (m, n), on all jobs, by kernel calls of about a second."""
+        from roa.sweep.executors.threads import cpu_count
+        from roa.sweep.portions import Portions, side_by_side
+
+        return side_by_side(Portions(self.lanes.run).all, self._jobs or cpu_count())
+
     @property
     def seed(self) -> int:
         """Seed of the design and of every search."""
@@ -121,7 +137,7 @@ class Preparation:
             return None
         from roa.basin.claim import judge
 
-        return judge(self.configuration, self.bounds, self.target, self.integration, self.lanes.run, self.seed)
+        return judge(self.configuration, self.bounds, self.target, self.integration, self.simulate, self.seed)
 
 
 def _require_files(configuration: Configuration) -> None:

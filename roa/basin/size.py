@@ -29,7 +29,7 @@ class Basin:
     share : share of the samples in the basin, by replicate
     counts : by outcome word, every outcome listed
     reasons : by reason word, only those that occurred
-    partial : whether the sweep is to have more samples than these
+    wanted : number of starts that the sweep is to have
     confidence : of the intervals, two-sided
     loop : Loop
     """
@@ -37,7 +37,7 @@ class Basin:
     share: Share
     counts: Mapping[str, int]
     reasons: Mapping[str, int]
-    partial: bool
+    wanted: int
     confidence: float
     loop: Loop
 
@@ -45,6 +45,11 @@ class Basin:
     def samples(self) -> int:
         """Number of starts."""
         return self.share.samples
+
+    @property
+    def partial(self) -> bool:
+        """Whether the sweep is to have more samples than these."""
+        return self.samples < self.wanted
 
     @property
     def fraction(self) -> float:
@@ -89,7 +94,7 @@ def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
         share=share,
         counts={outcome.word: int(outcomes[outcome]) for outcome in Outcome},
         reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
-        partial=samples.partial,
+        wanted=samples.wanted,
         confidence=confidence,
         loop=loop,
     )

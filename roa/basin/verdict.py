@@ -159,6 +159,7 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "volume_interval": _ends(basin.volume_interval),
         "volume_unit": " · ".join(unit or "1" for unit in basin.loop.units),
         "samples": basin.samples,
+        "samples_wanted": basin.wanted,
         "partial": basin.partial,
         "counts": basin.counts,
         "reasons": basin.reasons,

@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from matplotlib.figure import Figure
 from numpy.typing import NDArray
 
 from roa.basin.independent import path
@@ -14,6 +15,7 @@ from roa.kernel.outcomes import Outcome
 from roa.kernel.trajectories import Trajectories
 from roa.loop.configuration import Configuration
 from roa.loop.model import Loop
+from roa.report.answer import partial_sentence
 from roa.report.level_sets import level_sets_of
 from roa.report.overlay import Trace, overlay_figure
 from roa.report.plane import Label, Plane, regions
@@ -61,14 +63,21 @@ def draw_figures(
             traces = [*sample_traces(configuration, samples), *counterexample_trace(configuration, verdict)]
             fraction = verdict["basin"]["fraction"]
             figure = overlay_figure(plane, regions(plane, label), level_sets, traces, fraction)
-            written += save(figure, folder, "overlay")
+            written += save(_marked(figure, verdict), folder, "overlay")
         elif loop.n > 2:
             slices = simulate_slices(loop.states, loop.units, loop.box, equilibrium, label)
-            written += save(slices_figure(slices, level_sets), folder, "slices")
+            written += save(_marked(slices_figure(slices, level_sets), verdict), folder, "slices")
         if any(shell["high"] > 0 for shell in verdict["levels"]):
             figure = share_by_level_figure(verdict["levels"], level_sets, verdict["confidence"])
-            written += save(figure, folder, "share_by_level")
+            written += save(_marked(figure, verdict), folder, "share_by_level")
     return tuple(written)
+
+
+def _marked(figure: Figure, verdict: Mapping[str, Any]) -> Figure:
+    """Write on a figure of a partial sweep that it is one."""
+    if sentence := partial_sentence(verdict):
+        figure.text(0.01, 0.005, sentence, fontsize=7, ha="left", va="bottom")
+    return figure
 
 
 def sample_traces(configuration: Configuration, samples: Samples) -> list[Trace]:
