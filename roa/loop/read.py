@@ -18,13 +18,14 @@ from roa.loop.expression import Expression
 from roa.loop.faults import ABSENT, Faults
 from roa.loop.formula import Vocabulary, parse
 from roa.loop.formula_syntax import FormulaError
+from roa.loop.hold import check_horizon
 from roa.loop.loop_tables import read_loop
 from roa.loop.model import Loop
 from roa.loop.values import kind
 from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
-TABLES = ("states", "parameters", "signals", "dynamics", "equilibrium", "domain", "bound", "sweep", "verdict")
+TABLES = ("states", "parameters", "signals", "dynamics", "equilibrium", "domain", "hold", "bound", "sweep", "verdict")
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
 BOUND_KEYS = ("Q", "P", "V", "level")
 
@@ -62,6 +63,8 @@ def read_text(text: str, source: str) -> Configuration:
     loop = read_loop(title, tables, faults)
     bound = _bound_table(tables.get("bound", {}), tables, loop, faults)
     sweep = _sweep_table(tables.get("sweep", {}), faults)
+    if loop and loop.hold and sweep:
+        check_horizon(loop.hold, sweep.horizon, faults)
     verdict = _checked("verdict", VerdictTable, tables.get("verdict", {}), VerdictTable.model_fields, faults)
     faults.raise_if_any()
     assert loop is not None
