@@ -81,10 +81,19 @@ def read_hold(
     return Hold(held, period, delay)
 
 
-def check_horizon(hold: Hold, horizon: float, faults: Faults) -> None:
-    """Record a fault where not even one period passes within the horizon (s)."""
+def check_with_hold(hold: Hold, horizon: float | None, ultimate: Mapping[str, bool], faults: Faults) -> None:
+    """Record what does not go together with a hold.
+
+    Parameters
+    ----------
+    horizon : s; None where it is not known
+    ultimate : by table and key, whether the configuration asks for an ultimate bound there
+    """
     period = hold.T
-    if period > horizon:
+    for place in (place for place, is_asked in ultimate.items() if is_asked):
+        sentence = f"not together with {place}: there is no proof of an ultimate bound of a sampled loop; remove one"
+        faults.add("hold", "", sentence)
+    if horizon is not None and period > horizon:
         sentence = f"must not be longer than horizon = {horizon:g} of [sweep]; a trajectory would meet one sample only"
         faults.add("hold", "period", sentence, hold.period)
 

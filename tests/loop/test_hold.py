@@ -92,6 +92,14 @@ def test_each_fault_is_one_sentence(table, words):
     assert words in fault
 
 
+@pytest.mark.parametrize(
+    "table", ["[disturbance]\nk = [1, 3]", "[bound]\nlevel = 1\ninner = 0.5\nP = [[1, 0], [0, 1]]"]
+)
+def test_no_ultimate_bound_of_a_sampled_loop(table):
+    (fault,) = faults_of(with_hold(f'signals = ["torque"]\nperiod = 0.1\n{table}'))
+    assert fault.startswith("a.toml: [hold]: not together with [")
+
+
 def test_all_faults_at_once():
     faults = faults_of(with_hold('signals = ["torqe", "tilt"]\nperiod = -1\nhold = 2'))
     assert len(faults) == 4
