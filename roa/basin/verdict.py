@@ -76,6 +76,7 @@ def conclude(
         "equilibrium": equilibrium.x,
         "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues],
         "stability": equilibrium.stability,
+        "sampled": None if equilibrium.sampled is None else equilibrium.sampled.document,
         "confidence": confidence,
         "claim": None if claim is None else _claim(claim),
         "bounds": [_bound(bound, by_name.get(bound.name)) for bound in stated],
