@@ -28,7 +28,7 @@ class Basin:
     by_outcome : share of the samples with each outcome that occurred, by its word; none of a design in rounds, whose
         samples are not spread evenly
     reasons : by reason word, only those that occurred
-    partial : whether the sweep is to have more samples than these
+    wanted : number of starts that the sweep is to have
     confidence : of the intervals, two-sided
     loop : Loop
     """
@@ -37,7 +37,7 @@ class Basin:
     counts: Mapping[str, int]
     by_outcome: Mapping[str, Share]
     reasons: Mapping[str, int]
-    partial: bool
+    wanted: int
     confidence: float
     loop: Loop
 
@@ -45,6 +45,11 @@ class Basin:
     def samples(self) -> int:
         """Number of starts."""
         return self.share.samples
+
+    @property
+    def partial(self) -> bool:
+        """Whether the sweep is to have more samples than these."""
+        return self.samples < self.wanted
 
     @property
     def fraction(self) -> float:
@@ -99,7 +104,7 @@ def measure(samples: Samples, loop: Loop, confidence: float, centre: NDArray[np.
         counts={outcome.word: int(one.hits.sum()) for outcome, one in by_outcome.items()},
         by_outcome={} if in_rounds(samples) else {o.word: one for o, one in by_outcome.items() if one.hits.any()},
         reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
-        partial=samples.partial,
+        wanted=samples.wanted,
         confidence=confidence,
         loop=loop,
     )

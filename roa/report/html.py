@@ -101,7 +101,8 @@ def _basin_rows(verdict: Verdict) -> Iterator[Row]:
         yield "share of the domain", f"not known: {basin['refusal']}"
     else:
         yield from _size_rows(basin)
-    yield "starts", f"{basin['samples']:,}" + (", a partial sweep" if basin["partial"] else "")
+    of_all = f" of {basin['samples_wanted']:,}, a partial sweep" if basin["partial"] else ""
+    yield "starts", f"{basin['samples']:,}{of_all}"
     for word, count in basin["reasons"].items():
         yield word.replace("_", " "), f"{count:,} starts (simulated): {Reason[word.upper()].sentence}"
 

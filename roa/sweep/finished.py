@@ -41,6 +41,11 @@ class Finished:
         """Number of samples in `sweep.h5`."""
         return self.merged.n if self.merged else 0
 
+    @property
+    def is_merged(self) -> bool:
+        """Whether `sweep.h5` holds the whole sweep; one in rounds may have fewer samples than were asked for."""
+        return self.merged is not None and self.merged.attributes["asked"] == self.header.asked
+
     def holds(self, block: Block) -> bool:
         """Whether nothing of the block is left to do."""
         return block.stop <= self.merged_count or block in self.separate
@@ -113,6 +118,8 @@ def open_partial(folder: RunFolder) -> Samples:
     """
     header = Header.read(folder.plan)
     finished = look_through(folder, header, say=lambda sentence: None)
+    if finished.merged is not None and finished.is_merged:
+        return finished.merged
     return Samples(header, list(_prefix(finished)))
 
 

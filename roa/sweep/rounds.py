@@ -9,15 +9,24 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from itertools import pairwise
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
-from roa.sweep.block import Block, Drawn
+from roa.sweep.block import Block
 from roa.sweep.designs import Answers, Rounds, following
 from roa.sweep.plan import Plan
 
 Array = NDArray[np.float64]
+
+
+class Drawn(Protocol):
+    """What gives an index its start: a design that knows all its starts, or the starts of one round."""
+
+    def points(self, first: int, count: int) -> Array:
+        """Return starts first, …, first + count - 1, float64 (count, n), state units."""
+        ...
 
 
 @dataclass(frozen=True)
