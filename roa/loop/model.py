@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from decimal import Decimal
 from functools import cached_property
 
@@ -38,6 +38,8 @@ class Loop:
     dynamics : tuple of n trees, the time derivative of each state, in state units per second
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
+    disturbances : names among the parameters that vary with time anywhere in an interval (low, high); the value of the
+        parameter is the nominal one, which is all that is simulated
     """
 
     title: str
@@ -48,6 +50,7 @@ class Loop:
     dynamics: tuple[Expression, ...]
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
+    disturbances: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
     @property
     def n(self) -> int:
