@@ -54,6 +54,8 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
     level = 0.0 if best is None else _safe_level(best)
     if best is not None and not _is_resolved(configuration, best.V, level):
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
+    if loop.hold is not None:
+        note = "; ".join(part for part in (note, "entry is judged at the sampling instants") if part)
     alone = Target(
         kind="level" if level > 0 else "ball",
         centre=equilibrium.x,
@@ -109,7 +111,7 @@ def _bound_of_another_shape(configuration: Configuration, equilibrium: Equilibri
     cycle inside the ball would count as convergence.
     """
     loop = configuration.loop
-    if equilibrium.stability != "stable":
+    if equilibrium.stability != "stable" or loop.hold is not None:  # a continuous V̇ says nothing of a sampled loop
         return None
     V = Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, weight_matrix("domain", loop)))
     norm = norm_bound(V)
