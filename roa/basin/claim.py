@@ -27,10 +27,9 @@ from roa.basin.counterexample import (
 from roa.basin.intervals import clopper_pearson_upper, success_run_samples
 from roa.basin.ring_attempt import attempt_ring
 from roa.bound.bounds import Bounds
-from roa.bound.level_proof import LevelProver
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
-from roa.bound.proved_contact_level import branch_and_bound, proof_budget
+from roa.bound.proved_contact_level import branch_and_bound, proof_budget, prover_of
 from roa.bound.statement import Bound, Strength
 from roa.kernel.branch_and_bound import Answer
 from roa.kernel.integration import Integration
@@ -246,9 +245,9 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         return None
     V, contact = case.claimed.V, bounds.named("contact level")
     # Above the estimate, which errs upwards only, there are points with V̇ >= 0 and no proof to be had.
-    if not isinstance(V, Quadratic) or contact is None or level > Decimal(contact.level_estimated or contact.level):
+    if contact is None or level > Decimal(contact.level_estimated or contact.level):
         return None
-    prover = LevelProver(V)
+    prover = prover_of(V)
     if not prover.is_ready:
         return None
     proof = prover.prove(level, proof_budget(prover))

@@ -113,11 +113,12 @@ def _convergence(V: LyapunovFunction, equilibrium: Equilibrium) -> Bounds:
     if V.loop.hold is not None:
         return Bounds(V, (), "No bound is derived: V̇ says nothing of a loop with [hold], whose commands lag behind.")
     contact = contact_level(V)
-    derived = [contact]
     if isinstance(V, Quadratic):
         norm = norm_bound(V)
         derived = [norm, prove_contact_level(contact, norm.level)]
+    else:
+        derived = [prove_contact_level(contact, 0.0)]
     missing = [f"No {bound.name}: {bound.note}." for bound in derived if not bound.level > 0]
     if not isinstance(V, Quadratic):
-        missing.insert(0, "A V that is not quadratic has no norm bound, and its contact level is not proved.")
+        missing.insert(0, "A V that is not quadratic has no norm bound.")
     return Bounds(V, tuple(bound for bound in derived if bound.level > 0), " ".join(missing))
