@@ -230,7 +230,7 @@ def _integrate(
     at = _Moment(0.0, start, watch.peak, 0)
     solver = _solver(method, loop, start, integration.longest, *tolerances)
     if solver is None:
-        return ended(Outcome.FAILED, Reason.NOT_FINITE, at)
+        return ended(Outcome.FAILED, Reason.OUTSIDE_TABLE if loop.leaves_tables(start) else Reason.NOT_FINITE, at)
     steps = 0
     while solver.status == "running":
         if steps >= cap:
@@ -256,5 +256,7 @@ def _trouble(loop: Loop, x: Array) -> tuple[Outcome, Reason]:
     slope = loop.rhs(x)
     with np.errstate(all="ignore"):  # a little further on: a millionth of the domain along the slope
         beyond = x + 1e-6 * np.min(loop.half_widths / np.abs(slope)) * slope
+    if loop.leaves_tables(x) or loop.leaves_tables(beyond):
+        return Outcome.FAILED, Reason.OUTSIDE_TABLE
     finite = np.isfinite(slope).all() and np.isfinite(loop.rhs(beyond)).all()
     return Outcome.FAILED, Reason.STEP_UNDERFLOW if finite else Reason.NOT_FINITE

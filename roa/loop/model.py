@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from decimal import Decimal
 from functools import cached_property
 
@@ -11,7 +11,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.loop.evaluate import evaluate
-from roa.loop.expression import Expression
+from roa.loop.expression import Expression, Lookup, walk
+from roa.loop.lookup_table import LookupTable
 from roa.loop.symbolic import Partials
 
 Array = NDArray[np.float64]
@@ -38,6 +39,7 @@ class Loop:
     dynamics : tuple of n trees, the time derivative of each state, in state units per second
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
+    tables : mapping from name to look-up table; the trees hold the same objects
     """
 
     title: str
@@ -48,6 +50,7 @@ class Loop:
     dynamics: tuple[Expression, ...]
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
+    tables: Mapping[str, LookupTable] = field(default_factory=dict)
 
     @property
     def n(self) -> int:
@@ -89,6 +92,20 @@ class Loop:
         """
         values = self.values_of(x)
         return np.stack([np.broadcast_to(evaluate(tree, values), x.shape[:-1]) for tree in self.dynamics], axis=-1)
+
+    @cached_property
+    def refusals(self) -> tuple[Lookup, ...]:
+        """The uses of tables that end with their points, each once, in the order in which they are worked out."""
+        used = (part for tree in (*self.signals.values(), *self.dynamics) for part in walk(tree))
+        return tuple(dict.fromkeys(part for part in used if isinstance(part, Lookup) and part.table.refuses))
+
+    def leaves_tables(self, x: Array) -> NDArray[np.bool_]:
+        """Whether some table that ends with its points is left at the points x, float64 (..., n) -> bool (...)."""
+        values = self.values_of(x)
+        left = np.zeros(x.shape[:-1], dtype=bool)
+        for use in self.refusals:
+            left = left | use.table.leaves(evaluate(use.argument, values))
+        return left
 
     @cached_property
     def _partials(self) -> Partials:

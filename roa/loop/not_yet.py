@@ -9,7 +9,6 @@ TABLES = {
     "hold": "sample-and-hold of signals by a digital controller",
     "limits": "limits on states and signals",
     "disturbance": "disturbances that vary in an interval",
-    "tables": "look-up tables",
 }
 
 KEYS = {
