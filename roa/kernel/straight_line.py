@@ -24,9 +24,14 @@ class StraightLine:
     constants : list of trees over parameters and numbers; the code calls them c0, c1, …
     functions : set of str, the names from `vector_math` that the lines call
     tables : look-up tables in the order in which the lines call them lookup0, lookup1, … or slope0, slope1, …
+
+    Parameters
+    ----------
+    loop : Loop
+    given : names whose values are variables already, such as the signals that are held
     """
 
-    def __init__(self, loop: Loop) -> None:
+    def __init__(self, loop: Loop, given: Mapping[Expression, str] | None = None) -> None:
         self.lines: list[str] = []
         self.constants: list[Expression] = []
         self.functions: set[str] = set()
@@ -34,7 +39,8 @@ class StraightLine:
         self._signals: Mapping[str, Expression] = loop.signals
         self._parameters = frozenset(loop.parameters)
         self._variables: dict[Expression, str] = {Name(s): f"x{i}" for i, s in enumerate(loop.states)}
-        self._constant: dict[Expression, bool] = {}
+        self._variables |= given or {}
+        self._constant: dict[Expression, bool] = dict.fromkeys(given or {}, False)
 
     def variable(self, tree: Expression) -> str:
         """Return the variable that holds the tree's value, appending the lines that compute it."""
@@ -150,6 +156,14 @@ def _integer_power(base: str, exponent: int) -> str:
 
 
 def right_hand_side(loop: Loop) -> tuple[StraightLine, list[str]]:
-    """Return the code of f and the variables that hold the n derivatives."""
-    code = StraightLine(loop)
+    """Return the code of f and the variables that hold the n derivatives; a held signal i is ui."""
+    held = loop.hold.signals if loop.hold else ()
+    code = StraightLine(loop, {Name(name): f"u{i}" for i, name in enumerate(held)})
     return code, [code.variable(tree) for tree in loop.dynamics]
+
+
+def commands(loop: Loop, code: StraightLine) -> tuple[StraightLine, list[str]]:
+    """Return the code of the held signals at a sample and their variables; constants are added to those of `code`."""
+    own = StraightLine(loop)
+    own.constants, own.functions, own.tables = code.constants, code.functions, code.tables
+    return own, [own.variable(Name(name)) for name in (loop.hold.signals if loop.hold else ())]

@@ -10,6 +10,7 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, mod
 
 from roa.loop.expression import Expression
 from roa.loop.formula_text import decimal_text, to_text
+from roa.loop.hold import Hold
 from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop
 from roa.loop.values import Matrix, number, real, symmetric_matrix, whole, word
@@ -52,6 +53,8 @@ class BoundTable(_Table):
     P : symmetric matrix; whether it is positive definite is for the verdict to say
     V, V_text : tree and text of a formula in states and parameters
     level : the claim {V <= level}, or None where nothing is claimed
+    inner : asks for a residual set: trajectories are to end in {V <= inner}, not at the equilibrium; None where they
+        are to converge
     """
 
     Q: Annotated[str | Matrix, BeforeValidator(_weights)] | None = None
@@ -59,11 +62,18 @@ class BoundTable(_Table):
     V: SkipValidation[Any] = None
     V_text: str | None = None
     level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    inner: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
 
     @model_validator(mode="before")
     @classmethod
     def _default_weights(cls, table: dict[str, Any]) -> dict[str, Any]:
         return table if table.keys() & {"Q", "P", "V"} else {"Q": "identity", **table}
+
+    @model_validator(mode="after")
+    def _inner_is_below(self) -> BoundTable:
+        if self.inner is not None and self.level is not None and not self.inner < self.level:
+            raise ValueError(f"inner = {self.inner} must be below level = {self.level}")
+        return self
 
 
 class SweepTable(_Table):
@@ -168,12 +178,17 @@ class Configuration:
             "tables": {name: _table(loop.tables[name]) for name in sorted(loop.tables)},
             "dynamics": [to_text(tree) for tree in loop.dynamics],
             "equilibrium": [decimal_text(value) for value in loop.guess],
+            **_resolved_hold(loop.hold),
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "disturbance": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
+            },
             "bound": {
                 "Q": _plain(bound.Q),
                 "P": _plain(bound.P),
                 "V": _plain(bound.V),
                 "level": _plain(bound.level),
+                "inner": _plain(bound.inner),
             },
             "sweep": self.sweep.model_dump(),
             "verdict": self.verdict.model_dump(),
@@ -183,6 +198,19 @@ class Configuration:
 def _table(table: LookupTable) -> dict[str, Any]:
     points = {"x": [decimal_text(value) for value in table.x], "y": [decimal_text(value) for value in table.y]}
     return {**points, "kind": table.kind, "beyond": table.beyond}
+
+
+def _resolved_hold(hold: Hold | None) -> dict[str, Any]:
+    """The table [hold], where there is one; without it nothing, as before there were holds."""
+    if hold is None:
+        return {}
+    return {
+        "hold": {
+            "signals": list(hold.signals),
+            "period": decimal_text(hold.period),
+            "delay": decimal_text(hold.delay),
+        }
+    }
 
 
 def _plain(value: str | Matrix | Decimal | Expression | None) -> Any:

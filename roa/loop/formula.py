@@ -197,8 +197,8 @@ class _Reader:
         return self.fault(node, f'unknown function "{shortened(function, 60)}"{hint(function, (*FUNCTIONS, "lookup"))}')
 
     def lookup(self, node: ast.Call) -> Expression:
-        table, *arguments = node.args or [None]
-        trees = [self.expression(argument) for argument in arguments]
+        table = node.args[0] if node.args else None
+        trees = [self.expression(argument) for argument in node.args[1:]]
         if node.keywords:
             return self.fault(node.keywords[0], "arguments have no names in formulas")
         if len(trees) != 1 or not isinstance(table, ast.Name):

