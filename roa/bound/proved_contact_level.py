@@ -21,13 +21,14 @@ FIRST_PART, PART = 0.15, 0.4  # of the budget for the first attempt; of what is 
 LEAST = 100  # boxes without which no attempt is worth while
 
 
-def prove_contact_level(estimate: Bound, known: float) -> Bound:
+def prove_contact_level(estimate: Bound, known: float, boxes: int | None = None) -> Bound:
     """Return the contact level with what could be proved of it, or the estimate where that is no more than `known`.
 
     Parameters
     ----------
     estimate : Bound of strength *estimated*
     known : a level of the same V that is proved already
+    boxes : most boxes of all attempts together; by default what a few seconds can do
     """
     V, highest = estimate.V, estimate.level
     if not isinstance(V, Quadratic) or not highest > 0:
@@ -35,7 +36,7 @@ def prove_contact_level(estimate: Bound, known: float) -> Bound:
     prover = LevelProver(V)
     if not prover.is_ready:
         return estimate
-    budget = proof_budget(prover)
+    budget = proof_budget(prover) if boxes is None else boxes
     level = FIRST * highest
     first = prover.prove(level, int(FIRST_PART * budget))
     proof: LevelProof | None = first

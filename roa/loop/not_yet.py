@@ -16,7 +16,6 @@ KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
     ("bound", "ball"): "a claim in the form of a ball",
     ("bound", "scale"): "the scale of a claimed ball",
-    ("bound", "search"): "the search for better bounds",
     ("bound", "inner"): "the inner level of an ultimate bound",
     ("sweep", "accuracy"): "stopping at an accuracy of the share",
     ("sweep", "goal"): "a goal in place of a number of samples",

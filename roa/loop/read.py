@@ -26,7 +26,7 @@ from roa.loop.wording import hint, listed, shortened
 LARGEST_FILE = 200_000  # bytes
 TABLES = ("states", "parameters", "signals", "dynamics", "equilibrium", "domain", "bound", "sweep", "verdict")
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
-BOUND_KEYS = ("Q", "P", "V", "level")
+BOUND_KEYS = ("Q", "P", "V", "level", "search", "degree", "boxes")
 
 TableT = TypeVar("TableT", bound=BaseModel)
 
@@ -164,7 +164,7 @@ def _bound_table(
     table = _checked("bound", BoundTable, rest, BOUND_KEYS, faults)
     if "V" in content:
         tree = _lyapunov_formula(content["V"], tables, loop, faults)
-        table = BoundTable(V=tree, V_text=content["V"], level=table.level) if table and tree else None
+        table = BoundTable(**{**dict(table), "Q": None, "P": None, "V": tree, "V_text": content["V"]}) if table and tree else None
     if table and loop:
         _check_matrices(table, loop.n, faults)
     return table
