@@ -3,7 +3,8 @@
 `LANES` trajectories advance in step, each with its own time, step size, error control and ends. The
 body of the loop over lanes is straight-line code on one local buffer `B[lane + row * LANES]`, so
 that the compiler packs it into vectors; whatever needs a branch (a lane that has ended, the next
-start of the queue) is done outside it, one lane at a time. `lanes.py.jinja` is the loop itself.
+start of the queue) is done outside it, one lane at a time. `lanes.py.jinja` is the loop itself; the
+attempted step within it is a part of its own for each kind of method (`tableau.step`).
 
 One file holds everything because a compiled function is found again by another process only when
 it neither receives nor closes over another one, and because numba's cache does not see changes in
@@ -82,8 +83,12 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
 @cache
 def _template() -> jinja2.Template:
     """The lane loop, read once: several steps of a run ask for the text of the same module."""
-    environment = jinja2.Environment(undefined=jinja2.StrictUndefined, keep_trailing_newline=True)
-    return environment.from_string(Path(__file__).with_name("lanes.py.jinja").read_text(encoding="utf-8"))
+    environment = jinja2.Environment(
+        loader=jinja2.FileSystemLoader(Path(__file__).parent),
+        undefined=jinja2.StrictUndefined,
+        keep_trailing_newline=True,
+    )
+    return environment.get_template("lanes.py.jinja")
 
 
 def _buffer_rows(states: range, balls: bool) -> dict[str, int]:

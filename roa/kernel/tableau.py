@@ -33,6 +33,11 @@ class Tableau:
     e: tuple[tuple[float, ...], ...]
 
     @property
+    def step(self) -> str:
+        """The part of the lane loop that attempts a step of this kind of method."""
+        return "explicit_step.py.jinja"
+
+    @property
     def stages(self) -> int:
         """Number of stages, the shared one included."""
         return len(self.c)
