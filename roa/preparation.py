@@ -32,6 +32,7 @@ class Preparation:
     configuration : Configuration
     samples, seed : in place of the configuration's, where given
     progress : told what takes a while
+    quick : leave out the search for better bounds
 
     Raises
     ------
@@ -40,13 +41,18 @@ class Preparation:
     """
 
     def __init__(
-        self, configuration: Configuration, samples: int | None, seed: int | None, progress: Progress | None = None
+        self,
+        configuration: Configuration,
+        samples: int | None,
+        seed: int | None,
+        progress: Progress | None = None,
+        quick: bool = False,
     ) -> None:
         from roa.loop.equilibrium import check_V, find_equilibrium, require_stable
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
-        self.configuration = configuration
+        self.configuration = configuration.quick() if quick else configuration
         self.progress = progress or Progress()
         self._samples, self._seed = samples, seed
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
@@ -61,7 +67,7 @@ class Preparation:
 
         if not is_kept():
             self.progress.say("compiling the prover (once on this machine, about half a minute)")
-        return derive_bounds(self.configuration, self.equilibrium)
+        return derive_bounds(self.configuration, self.equilibrium, self.progress.say)
 
     @cached_property
     def pilot(self) -> Pilot:

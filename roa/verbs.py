@@ -58,13 +58,13 @@ def init(file: str | Path) -> Result:
 
 def check(
     config: str | Path, samples: int | None = None, seed: int | None = None, jobs: int | None = None,
-    progress: Progress | None = None,
+    quick: bool = False, progress: Progress | None = None,
 ) -> Result:  # fmt: skip
     """Say whether a configuration is sound, where it rests, and what its sweep will cost."""
     from roa.report.soundness import soundness_document, soundness_text
     from roa.sweep.cost import forecast
 
-    prepared = _prepare(config, samples, seed, progress)
+    prepared = _prepare(config, samples, seed, progress, quick)
     cost = forecast(prepared.plan, prepared.lanes, jobs)
     text = soundness_text(prepared.plan, cost, shlex.quote(str(config)))
     return Result(text, soundness_document(prepared.plan, cost))
@@ -72,19 +72,19 @@ def check(
 
 def run(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
-    seed: int | None = None, progress: Progress | None = None, command: str = "roa.run",
+    seed: int | None = None, quick: bool = False, progress: Progress | None = None, command: str = "roa.run",
 ) -> Result:  # fmt: skip
     """Do the whole job: bound, sweep, comparison, figures, report, verdict."""
-    prepared, folder = _sweep(config, out, jobs, samples, seed, progress)
+    prepared, folder = _sweep(config, out, jobs, samples, seed, quick, progress)
     return _conclude(prepared, folder, command, jobs, figures=True)
 
 
 def sweep(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
-    seed: int | None = None, progress: Progress | None = None, command: str = "roa.sweep",
+    seed: int | None = None, quick: bool = False, progress: Progress | None = None, command: str = "roa.sweep",
 ) -> Result:  # fmt: skip
     """Do the simulation alone, with its counts and the bounds that it took its target set from."""
-    prepared, folder = _sweep(config, out, jobs, samples, seed, progress)
+    prepared, folder = _sweep(config, out, jobs, samples, seed, quick, progress)
     return _conclude(prepared, folder, command, jobs, figures=False)
 
 
@@ -101,15 +101,15 @@ def resume(
 
 
 def bound(
-    config: str | Path, out: str | Path | None = None, seed: int | None = None, progress: Progress | None = None,
-    command: str = "roa.bound",
+    config: str | Path, out: str | Path | None = None, seed: int | None = None, quick: bool = False,
+    progress: Progress | None = None, command: str = "roa.bound",
 ) -> Result:  # fmt: skip
     """Derive the analytic estimates alone, without a simulation."""
     from roa.basin.provenance import provenance
     from roa.basin.verdict import conclude
 
     folder = _new_folder(config, out)
-    prepared = _prepare(config, None, seed, progress)
+    prepared = _prepare(config, None, seed, progress, quick)
     verdict = conclude(
         prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed)
     )
@@ -117,15 +117,15 @@ def bound(
 
 
 def validate(
-    config: str | Path, out: str | Path | None = None, seed: int | None = None, progress: Progress | None = None,
-    command: str = "roa.validate",
+    config: str | Path, out: str | Path | None = None, seed: int | None = None, quick: bool = False,
+    progress: Progress | None = None, command: str = "roa.validate",
 ) -> Result:  # fmt: skip
     """Judge the claimed bound: prove it, break it, or say how far it is supported."""
     from roa.basin.provenance import provenance
     from roa.basin.verdict import conclude, exit_code
 
     folder = _new_folder(config, out)
-    prepared = _prepare(config, None, seed, progress)
+    prepared = _prepare(config, None, seed, progress, quick)
     configuration = prepared.configuration
     if configuration.bound.level is None:
         raise UserError(
@@ -192,21 +192,23 @@ def report(run: str | Path) -> Result:
     return Result(str(folder.report), {"report": str(folder.report)}, 0, folder.path)
 
 
-def _prepare(config: str | Path, samples: int | None, seed: int | None, progress: Progress | None) -> Preparation:
+def _prepare(
+    config: str | Path, samples: int | None, seed: int | None, progress: Progress | None, quick: bool = False
+) -> Preparation:
     from roa.loop.read import read
     from roa.preparation import Preparation
 
-    return Preparation(read(Path(config)), samples, seed, progress)
+    return Preparation(read(Path(config)), samples, seed, progress, quick)
 
 
 def _sweep(
     config: str | Path, out: str | Path | None, jobs: int | None, samples: int | None, seed: int | None,
-    progress: Progress | None,
+    quick: bool, progress: Progress | None,
 ) -> tuple[Preparation, RunFolder]:  # fmt: skip
     from roa.sweep.launch import launch
 
     folder = _new_folder(config, out)
-    prepared = _prepare(config, samples, seed, progress)
+    prepared = _prepare(config, samples, seed, progress, quick)
     launch(prepared.plan, folder, jobs, progress)
     return prepared, folder
 
@@ -221,7 +223,8 @@ def _stored(run: str | Path, samples: int | None, progress: Progress | None) -> 
     folder = RunFolder.existing(Path(run))
     header = Header.read(folder.plan)
     configuration = read_text(header.config, str(folder.config))
-    return Preparation(configuration, samples or header.samples, header.seed, progress), folder
+    quick = header.fingerprint_parts.get("config.bound.search") == []
+    return Preparation(configuration, samples or header.samples, header.seed, progress, quick), folder
 
 
 def _samples_of(folder: RunFolder) -> Samples:

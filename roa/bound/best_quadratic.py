@@ -28,7 +28,7 @@ Array = NDArray[np.float64]
 
 NAME = "best quadratic"
 DIGITS = 12  # of the entries of P
-DRAWN = 2  # starts from weights Q that are drawn, beside those that have a reason
+DRAWN = 1  # start from weights Q that are drawn, beside those that have a reason
 
 
 def best_quadratic(configuration: Configuration, equilibrium: Equilibrium, known: Bound | None) -> Bound:

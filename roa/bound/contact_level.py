@@ -24,7 +24,7 @@ Array = NDArray[np.float64]
 
 NAME = "contact level"
 RAYS_IN_THE_PLANE = 2048  # equally spaced
-RAYS = 4096
+RAYS, RAYS_ROUGH = 4096, 512
 SCAN, SCAN_TURNED = 128, 32  # points on a ray, and on one that has been turned
 BISECTIONS, BISECTIONS_FIRST = 48, 10
 KEPT = 8  # rays that are turned
@@ -69,6 +69,16 @@ def contact_level(V: LyapunovFunction) -> Bound:
     place = point_text(V.loop.states, V.loop.units, point)
     note = _touching(V.loop, point) if ends.at_face[i] else f"V̇ reaches zero at {place}"
     return Bound(NAME, V, level, Strength.ESTIMATED, note, point)
+
+
+def rough_level(V: LyapunovFunction) -> float:
+    """The contact level by rays that are not turned: above it, by little in the plane; 0 where there is none."""
+    frame = _frame(V)
+    if frame is None:
+        return 0.0
+    rays = unit_vectors(V.loop.n, RAYS_ROUGH)
+    face = _touched_face(V)
+    return float(min(_cast(V, frame, rays, SCAN, BISECTIONS_FIRST).level.min(), np.inf if face is None else face[0]))
 
 
 def _frame(V: LyapunovFunction) -> Array | None:

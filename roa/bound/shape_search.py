@@ -17,7 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import linprog
 
-from roa.bound.contact_level import contact_level, unit_vectors
+from roa.bound.contact_level import contact_level, rough_level, unit_vectors
 from roa.bound.lyapunov_function import Quadratic
 from roa.loop.model import Loop
 
@@ -25,6 +25,7 @@ Array = NDArray[np.float64]
 
 ROUNDS = 6  # of whitening, each with rays of its own
 ROUNDS_FIRST = 2  # after which only the best start goes on
+CHECKS = 4  # of what was found, each with further rounds where it fails
 CUTS = 6  # times in a round that turned rays join
 STEPS = 15  # linear programmes between two cuts
 RAYS = {1: 2, 2: 360, 3: 1024}
@@ -36,7 +37,9 @@ ENOUGH = 1e-4  # gain of the logarithm of the volume in a round that is not wort
 ROWS = 1000  # most rows of a kind in a linear programme
 EIGENVECTOR_CUTS = 12  # rounds of them for one step
 LEAST_DECAY = 1e-4  # of V by the linear part, against the norm of A in the whitened frame
-TURNED, TRIALS, TURNS = 16, 24, 14  # lowest rays that are turned, trials for each, and rounds of turning
+TURNED, TRIALS = (6, 16), (8, 24)  # lowest rays that are turned, and trials for each: in the plane, and beyond
+TURNS = 14  # rounds of turning
+KEPT = 256  # directions that the next round takes over
 FIRST_TURN, SHRINK = 0.25, 0.65  # rad, and by how much it shrinks from round to round
 
 
@@ -55,58 +58,65 @@ def search_shape(loop: Loop, centre: Array, starts: Sequence[Array]) -> Array | 
     climbs = [_Climb(loop, centre, scaled) for scaled in found]
     for climb in climbs:
         climb.go(ROUNDS_FIRST)
-    best = max(climbs, key=lambda climb: climb.best.log_volume)
+    best = max(climbs, key=lambda climb: climb.log_volume)
     best.go(ROUNDS - ROUNDS_FIRST)
-    return best.best.P
+    for _ in range(CHECKS):
+        if best.is_confirmed():
+            break
+        best.go(ROUNDS_FIRST)
+    return best.P
 
 
-@dataclass(frozen=True)
-class _Scaled:
-    """P whose level 1 is its contact level, the contact relative to the equilibrium, the logarithm of its volume."""
-
-    P: Array
-    contact: Array
-    log_volume: float
-
-
-def _scaled(loop: Loop, centre: Array, P: Array) -> _Scaled | None:
-    bound = contact_level(Quadratic(loop, centre, P))
-    if not bound.level > 0 or bound.contact is None:
-        return None
-    P = P / bound.level
-    return _Scaled(P, bound.contact - centre, -0.5 * float(np.linalg.slogdet(P)[1]))
+def _scaled(loop: Loop, centre: Array, P: Array) -> Array | None:
+    """P with its contact level at about 1."""
+    level = rough_level(Quadratic(loop, centre, P))
+    return P / level if level > 0 else None
 
 
 class _Climb:
     """The climb from one start: rounds of whitening, and in each of them linear programmes and cuts."""
 
-    def __init__(self, loop: Loop, centre: Array, start: _Scaled) -> None:
+    def __init__(self, loop: Loop, centre: Array, P: Array) -> None:
         self._loop, self._centre = loop, centre
-        self.best = start
-        self._contacts = [start.contact]
+        self.P = P
+        self._ends = np.zeros((0, loop.n))  # directions that were found to end early, relative to the equilibrium
         self._trust = TRUST
+
+    @property
+    def log_volume(self) -> float:
+        """Logarithm of the volume of {V <= 1}, but for a constant."""
+        return -0.5 * float(np.linalg.slogdet(self.P)[1])
+
+    def is_confirmed(self) -> bool:
+        """Whether the finer rays of `contact_level` find no lower end; what they find is taken over."""
+        bound = contact_level(Quadratic(self._loop, self._centre, self.P))
+        if bound.contact is None or not bound.level > 0 or bound.level > 1 - ENOUGH:
+            return True
+        self.P = self.P / bound.level
+        self._ends = np.concatenate([self._ends, (bound.contact - self._centre)[None]])
+        self._trust = TRUST
+        return False
 
     def go(self, rounds: int) -> None:
         """Climb so many rounds further."""
+        n = self._loop.n
         for _ in range(rounds):
             if self._trust < LEAST_TRUST:
                 return
-            T = np.linalg.inv(np.linalg.cholesky(self.best.P)).T
+            T = np.linalg.inv(np.linalg.cholesky(self.P)).T
             back = np.linalg.inv(T)
-            n = self._loop.n
-            ends = np.array(self._contacts) @ back.T
-            ends /= np.linalg.norm(ends, axis=1, keepdims=True)
             rays = _Rays(self._loop, self._centre, T)
-            rays.join(np.concatenate([unit_vectors(n, RAYS.get(n, RAYS_MORE)), ends]))
-            M = rays.climb(self._trust)
-            new = _scaled(self._loop, self._centre, back.T @ M @ back)
-            if new is not None:
-                self._contacts.append(new.contact)
-            gain = -np.inf if new is None else new.log_volume - self.best.log_volume
-            if new is not None and gain > 0:
-                self.best = new
+            rays.join(unit_vectors(n, RAYS.get(n, RAYS_MORE)))
+            rays.join(_unit(self._ends @ back.T))
+            M, gain = rays.climb(self._trust)
+            self._ends = np.concatenate([self._ends, rays.turned @ T.T])[-KEPT:]
+            self.P = back.T @ M @ back
             if gain < ENOUGH:
                 self._trust /= 4
+
+
+def _unit(vectors: Array) -> Array:
+    return np.asarray(vectors / np.linalg.norm(vectors, axis=-1, keepdims=True).clip(1e-300))
 
 
 @dataclass(frozen=True)
@@ -155,6 +165,7 @@ class _Rays:
         A = np.linalg.inv(T) @ loop.jacobian(centre) @ T
         self._A = A / np.linalg.norm(A)
         self._slowest = np.zeros((0, loop.n))  # directions in which the linear part once failed to decrease V
+        self.turned = np.zeros((0, loop.n))  # where turning has ended
         self._u = np.zeros((0, loop.n))
         self._g = np.zeros((0, len(RADII), loop.n))
         self._known = np.zeros((0, len(RADII)), dtype=bool)
@@ -166,21 +177,22 @@ class _Rays:
         self._g = np.concatenate([self._g, g])
         self._known = np.concatenate([self._known, known])
 
-    def climb(self, trust: float) -> Array:
-        """Climb from M = I; M of the largest ellipsoid that no ray cuts."""
+    def climb(self, trust: float) -> tuple[Array, float]:
+        """Climb from M = I; M of the largest ellipsoid that no ray cuts, at level 1, and what it gained."""
         start = np.eye(self._n)
-        self.join(self._turned(start))
-        M = start
+        self._turn(start)
+        M = start / self._look(start, trust).level
         for _ in range(CUTS):
             M = self._climb_between_cuts(M, trust)
             before = self._look(M, trust).size
-            self.join(self._turned(M))
-            after = self._look(M, trust).size
-            if after > before - ENOUGH:
-                break
-            if after < self._look(start, trust).size:
+            self._turn(M)
+            after = self._look(M, trust)
+            if not after.size > self._look(start, trust).size:
                 M = start
-        return M
+            elif after.size > before - ENOUGH:
+                break
+        view, first = self._look(M, trust), self._look(start, trust)
+        return M / view.level, view.size - first.size
 
     def _climb_between_cuts(self, M: Array, trust: float) -> Array:
         view = self._look(M, trust)
@@ -231,31 +243,31 @@ class _Rays:
         level = r**2 * np.einsum("mi,mi->m", uM[ray], u[ray])
         return _Ends(ray, j, part, r, level, slope), q
 
-    def _turned(self, M: Array) -> Array:
-        """Turn the rays of the lowest ends by random steps of shrinking length, and return what was lower."""
+    def _turn(self, M: Array) -> None:
+        """Turn the rays of the lowest ends by random steps of shrinking length; what is lower joins the rays."""
         ends, _ = self._ends(self._u, self._g, self._known, M)
         if self._n == 1 or not len(ends.ray):
-            return np.zeros((0, self._n))
-        order = np.argsort(ends.level, kind="stable")[:TURNED]
+            return
+        order = np.argsort(ends.level, kind="stable")[: TURNED[self._n > 2]]
         u, level = self._u[ends.ray[order]], ends.level[order]
         random = np.random.default_rng(13)
-        size, found = FIRST_TURN, [np.zeros((0, self._n))]
+        size, trials, found = FIRST_TURN, TRIALS[self._n > 2], [np.zeros((0, self._n))]
         for _ in range(TURNS):
-            trials = u[:, None] + size * random.normal(size=(len(u), TRIALS, self._n)) / np.sqrt(self._n)
-            trials /= np.linalg.norm(trials, axis=2, keepdims=True)
-            flat = trials.reshape(-1, self._n)
+            turned = _unit(u[:, None] + size * random.normal(size=(len(u), trials, self._n)) / np.sqrt(self._n))
+            flat = turned.reshape(-1, self._n)
             new, _ = self._ends(flat, *self._sample(flat), M)
             levels = np.full(len(flat), np.inf)
             levels[new.ray] = new.level
-            levels = levels.reshape(len(u), TRIALS)
-            choice = levels.argmin(axis=1)
-            lowest = levels[np.arange(len(u)), choice]
+            by_ray = levels.reshape(len(u), trials)
+            choice = by_ray.argmin(axis=1)
+            lowest = by_ray[np.arange(len(u)), choice]
             better = lowest < level
-            u = np.where(better[:, None], trials[np.arange(len(u)), choice], u)
+            u = np.where(better[:, None], turned[np.arange(len(u)), choice], u)
             level = np.where(better, lowest, level)
             found.append(u[better])
             size *= SHRINK
-        return np.concatenate(found)
+        self.turned = np.concatenate([self.turned, u])
+        self.join(np.concatenate(found))
 
     def _step(self, M: Array, view: _View, trust: float) -> Array | None:
         """Δ that makes the ellipsoid larger to first order: least tr(M^-1 Δ) with rows Δ >= limits.
@@ -300,7 +312,9 @@ class _Rays:
         v = self._u[ray]
         at = (1 - part) * self._g[ray, j - 1] + part * self._g[ray, j]
         by_r = 2 * r * np.einsum("mi,ij,mj->m", v, M, v) / ends.slope[near]
-        by_M = r[:, None, None] ** 2 * v[:, :, None] * v[:, None] - by_r[:, None, None] * v[:, :, None] * at[:, None]
+        by_M: Array = (
+            r[:, None, None] ** 2 * v[:, :, None] * v[:, None] - by_r[:, None, None] * v[:, :, None] * at[:, None]
+        )
         inner, inner_limits = self._inner_rows(q, M, level, trust)
         return _View(
             size,
@@ -324,10 +338,11 @@ class _Rays:
         form = np.einsum("mi,ij,mj->m", self._u, M, self._u)
         top = (decay >= earlier) & (decay > later) & (decay < 0) & (RADII**2 * form[:, None] < level * (1 + trust))
         ray, j = np.nonzero(top)
-        size = np.linalg.norm(self._g[ray, j], axis=1) / RADII[j]
+        size: Array = np.linalg.norm(self._g[ray, j], axis=1) / RADII[j]
         share = -decay[ray, j] / size
         order = np.argsort(share, kind="stable")[:ROWS]
         order = order[share[order] <= 4 * trust * self._n]
         ray, j = ray[order], j[order]
         g = self._g[ray, j] / (RADII[j] * size[order])[:, None]
-        return -self._entries(self._u[ray][:, :, None] * g[:, None]), -share[order]
+        inner: Array = self._u[ray][:, :, None] * g[:, None]
+        return -self._entries(inner), -share[order]

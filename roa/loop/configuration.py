@@ -70,12 +70,11 @@ class BoundTable(_Table):
     level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
     search: Annotated[tuple[str, ...], BeforeValidator(_searches)] | None = None
     degree: (
-        Annotated[int, BeforeValidator(whole("an even number from 2 to 12", lambda n: n in (2, 4, 6, 8, 10, 12)))] | None
+        Annotated[int, BeforeValidator(whole("an even number from 2 to 12", lambda n: n in (2, 4, 6, 8, 10, 12)))]
+        | None
     ) = None
     boxes: (
-        Annotated[
-            int, BeforeValidator(whole("a whole number from 1 to 1000000000", lambda n: 1 <= n <= 1_000_000_000))
-        ]
+        Annotated[int, BeforeValidator(whole("a whole number from 1 to 1000000000", lambda n: 1 <= n <= 1_000_000_000))]
         | None
     ) = None
 

@@ -164,7 +164,8 @@ def _bound_table(
     table = _checked("bound", BoundTable, rest, BOUND_KEYS, faults)
     if "V" in content:
         tree = _lyapunov_formula(content["V"], tables, loop, faults)
-        table = BoundTable(**{**dict(table), "Q": None, "P": None, "V": tree, "V_text": content["V"]}) if table and tree else None
+        formula = {"Q": None, "P": None, "V": tree, "V_text": content["V"]}
+        table = table.model_copy(update=formula) if table and tree else None
     if table and loop:
         _check_matrices(table, loop.n, faults)
     return table

@@ -44,6 +44,7 @@ Q = "identity"              # from A'P + PA = -Q; or "domain", or a matrix [[2, 
 # P = [[1.0, 0.2], [0.2, 1.5]]              # or V = (x - x_eq)'P(x - x_eq) as given
 # V = "depth**2 + depth*speed + speed**2"   # or a formula in states and parameters, zero at the equilibrium
 # level = 0.05              # the claim that `roa validate` judges: {V <= level} lies in the basin
+# search = ["quadratic"]    # what else is derived: "quadratic", "polynomial", "no_return"; by default as the states afford
 
 [sweep]                     # the simulation
 design  = "sobol"           # or "grid"
