@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from roa.basin.size import Basin
 from roa.kernel.target import Target
+from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
 
 ALWAYS = (
@@ -15,17 +16,37 @@ ALWAYS = (
 )
 
 
-def cautions(equilibrium: Equilibrium, target: Target | None, basin: Basin | None) -> list[str]:
+def cautions(
+    configuration: Configuration, equilibrium: Equilibrium, target: Target | None, basin: Basin | None
+) -> list[str]:
     """Return the cautions of a verdict, those of every verdict first."""
-    return [*ALWAYS, *_of_the_loop(equilibrium, target), *_of_the_sweep(basin)]
+    varying = _of_the_disturbances(configuration)
+    return [*ALWAYS, *varying, *_of_the_loop(equilibrium, target), *_of_the_sweep(basin)]
+
+
+def _of_the_disturbances(configuration: Configuration) -> list[str]:
+    loop = configuration.loop
+    if not loop.disturbances:
+        return []
+    nominal = ", ".join(f"{name} = {loop.parameters[name].value}" for name in loop.disturbances)
+    return [
+        f"Disturbances are not simulated: equilibrium and trajectories are those of the nominal {nominal}. What is "
+        "said of every course of a disturbance rests on proof alone."
+    ]
 
 
 def _of_the_loop(equilibrium: Equilibrium, target: Target | None) -> list[str]:
     found = []
     if equilibrium.stability == "marginal":
+        where = "multiplier on the unit circle" if equilibrium.sampled else "eigenvalue on the imaginary axis"
         found.append(
-            "The linearisation has an eigenvalue on the imaginary axis: it gives no certificate, and convergence is "
-            "judged by simulation alone."
+            f"The linearisation has a{'' if equilibrium.sampled else 'n'} {where}: it gives no certificate, and "
+            "convergence is judged by simulation alone."
+        )
+    if equilibrium.sampled is not None:
+        found.append(
+            "The loop is sampled: its stability is that of one period, the eigenvalues are those that it would have "
+            "with every signal continuous, and nothing that rests on a continuous V̇ is stated."
         )
     if target is not None and target.kind == "ball":
         found.append(f"No target set is proved, so that a trajectory converged means: it entered {target.words}.")

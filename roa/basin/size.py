@@ -28,16 +28,18 @@ class Basin:
     ----------
     share : share of the samples in the basin, by replicate
     counts : by outcome word, every outcome listed
+    by_outcome : share of the samples with each outcome that occurred, by its word
     reasons : by reason word, only those that occurred
-    partial : whether the sweep is to have more samples than these
+    wanted : number of starts that the sweep is to have
     confidence : of the intervals, two-sided
     loop : Loop
     """
 
     share: Share
     counts: Mapping[str, int]
+    by_outcome: Mapping[str, Share]
     reasons: Mapping[str, int]
-    partial: bool
+    wanted: int
     confidence: float
     loop: Loop
 
@@ -45,6 +47,11 @@ class Basin:
     def samples(self) -> int:
         """Number of starts."""
         return self.share.samples
+
+    @property
+    def partial(self) -> bool:
+        """Whether the sweep is to have more samples than these."""
+        return self.samples < self.wanted
 
     @property
     def fraction(self) -> float:
@@ -55,6 +62,11 @@ class Basin:
     def interval(self) -> Interval:
         """Interval of the share."""
         return self.interval_at(self.confidence)
+
+    @property
+    def outcome_intervals(self) -> Mapping[str, Interval]:
+        """Interval of the share of each outcome that occurred."""
+        return {word: share.interval(self.loop.n, self.confidence) for word, share in self.by_outcome.items()}
 
     def interval_at(self, confidence: float) -> Interval:
         """Interval of the share at another confidence."""
@@ -79,17 +91,19 @@ def in_basin(trajectories: Trajectories) -> NDArray[np.bool_]:
 def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
     """Measure the basin in one pass over the stored samples; the memory does not grow with their number."""
     share = Share(samples.design, samples.replicates)
-    outcomes = np.zeros(len(Outcome), dtype=np.int64)
+    by_outcome = {outcome: Share(samples.design, samples.replicates) for outcome in Outcome}
     reasons = np.zeros(len(Reason), dtype=np.int64)
     for first, trajectories in samples.chunks():
         share.add(first, in_basin(trajectories))
-        outcomes += np.bincount(trajectories.outcome, minlength=len(Outcome))
+        for outcome, one in by_outcome.items():
+            one.add(first, trajectories.outcome == outcome)
         reasons += np.bincount(trajectories.reason, minlength=len(Reason))
     return Basin(
         share=share,
-        counts={outcome.word: int(outcomes[outcome]) for outcome in Outcome},
+        counts={outcome.word: int(one.hits.sum()) for outcome, one in by_outcome.items()},
+        by_outcome={outcome.word: one for outcome, one in by_outcome.items() if one.hits.any()},
         reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
-        partial=samples.partial,
+        wanted=samples.wanted,
         confidence=confidence,
         loop=loop,
     )

@@ -78,6 +78,7 @@ def conclude(
         "equilibrium": equilibrium.x,
         "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues],
         "stability": equilibrium.stability,
+        "sampled": None if equilibrium.sampled is None else equilibrium.sampled.document,
         "confidence": confidence,
         "claim": None if claim is None else _claim(claim),
         "bounds": [_bound(bound, by_name.get(bound.name)) for bound in stated],
@@ -86,7 +87,7 @@ def conclude(
         "comparison": _comparison(stated, claim, by_name),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
-        "cautions": cautions(equilibrium, target, basin),
+        "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
     plain: dict[str, Any] = _plain(verdict)
@@ -113,6 +114,9 @@ def _claim(claim: Claim) -> dict[str, Any]:
             "strength": Strength.SIMULATED,
         },
         "witness": claim.witness,
+        "witness_disturbance": claim.witness_disturbance,
+        "inner": claim.inner,
+        "disturbance": claim.disturbances,
         "largest_level_inside": claim.largest_level_inside,
         "nonconverging_fraction_upper": claim.nonconverging_fraction_upper,
         "confidence": claim.confidence,
@@ -127,6 +131,7 @@ def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
         "name": bound.name,
         "level": bound.level,
         "level_estimated": bound.level_estimated,
+        "inner": bound.inner,
         "strength": bound.strength,
         "note": bound.note,
         **_function(bound),
@@ -161,8 +166,10 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "volume_interval": _ends(basin.volume_interval),
         "volume_unit": " · ".join(unit or "1" for unit in basin.loop.units),
         "samples": basin.samples,
+        "samples_wanted": basin.wanted,
         "partial": basin.partial,
         "counts": basin.counts,
+        "count_intervals": {word: _ends(interval) for word, interval in basin.outcome_intervals.items()},
         "reasons": basin.reasons,
         "by_replicate": {"converged": basin.share.hits, "samples": basin.share.sizes},
         "strength": Strength.SIMULATED,
@@ -171,7 +178,12 @@ def _basin(basin: Basin) -> dict[str, Any]:
 
 def _comparison(stated: Sequence[Bound], claim: Claim | None, by_name: Mapping[str, Comparison]) -> dict[str, Any]:
     """Return the claim beside the basin, or else the proved bound of the largest volume."""
-    proved = [by_name[bound.name] for bound in stated if bound.strength is Strength.PROVED and bound.name in by_name]
+    # An ultimate bound says nothing of convergence, unless the sweep's target is its inner set: then it is the claim.
+    proved = [
+        by_name[bound.name]
+        for bound in stated
+        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name
+    ]
     compared = by_name.get("claim") if claim else max(proved, key=lambda one: one.volume, default=None)
     return {
         "bound": None if compared is None else compared.bound.name,

@@ -274,7 +274,8 @@ class _Rays:
 
         The linear part must go on to decrease V; that is no row but a matrix inequality, taken by eigenvectors.
         """
-        cost = self._entries(np.linalg.inv(M))
+        inverse: Array = np.linalg.inv(M)
+        cost = self._entries(inverse)
         for _ in range(EIGENVECTOR_CUTS):
             v = self._slowest
             turned = v @ self._A.T

@@ -10,6 +10,7 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, mod
 
 from roa.loop.expression import Expression
 from roa.loop.formula_text import decimal_text, to_text
+from roa.loop.hold import Hold
 from roa.loop.model import Loop
 from roa.loop.values import Matrix, kind, number, real, symmetric_matrix, whole, word
 
@@ -58,6 +59,8 @@ class BoundTable(_Table):
     P : symmetric matrix; whether it is positive definite is for the verdict to say
     V, V_text : tree and text of a formula in states and parameters
     level : the claim {V <= level}, or None where nothing is claimed
+    inner : asks for a residual set: trajectories are to end in {V <= inner}, not at the equilibrium; None where they
+        are to converge
     search : what is searched for beyond the configured V; None for what the number of states affords
     degree : of the best polynomial and of the no-return set, even; None where the search chooses
     boxes : most boxes of the proof of one bound; None for what a few seconds can do
@@ -68,6 +71,7 @@ class BoundTable(_Table):
     V: SkipValidation[Any] = None
     V_text: str | None = None
     level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    inner: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
     search: Annotated[tuple[str, ...], BeforeValidator(_searches)] | None = None
     degree: (
         Annotated[int, BeforeValidator(whole("an even number from 2 to 12", lambda n: n in (2, 4, 6, 8, 10, 12)))]
@@ -82,6 +86,12 @@ class BoundTable(_Table):
     @classmethod
     def _default_weights(cls, table: dict[str, Any]) -> dict[str, Any]:
         return table if table.keys() & {"Q", "P", "V"} else {"Q": "identity", **table}
+
+    @model_validator(mode="after")
+    def _inner_is_below(self) -> BoundTable:
+        if self.inner is not None and self.level is not None and not self.inner < self.level:
+            raise ValueError(f"inner = {self.inner} must be below level = {self.level}")
+        return self
 
 
 class SweepTable(_Table):
@@ -196,12 +206,17 @@ class Configuration:
             "signals": [[name, to_text(tree)] for name, tree in loop.signals.items()],
             "dynamics": [to_text(tree) for tree in loop.dynamics],
             "equilibrium": [decimal_text(value) for value in loop.guess],
+            **_resolved_hold(loop.hold),
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "disturbance": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
+            },
             "bound": {
                 "Q": _plain(bound.Q),
                 "P": _plain(bound.P),
                 "V": _plain(bound.V),
                 "level": _plain(bound.level),
+                "inner": _plain(bound.inner),
                 "search": list(self.searches),
                 "degree": bound.degree,
                 "boxes": bound.boxes,
@@ -209,6 +224,19 @@ class Configuration:
             "sweep": self.sweep.model_dump(),
             "verdict": self.verdict.model_dump(),
         }
+
+
+def _resolved_hold(hold: Hold | None) -> dict[str, Any]:
+    """The table [hold], where there is one; without it nothing, as before there were holds."""
+    if hold is None:
+        return {}
+    return {
+        "hold": {
+            "signals": list(hold.signals),
+            "period": decimal_text(hold.period),
+            "delay": decimal_text(hold.delay),
+        }
+    }
 
 
 def _plain(value: str | Matrix | Decimal | Expression | None) -> Any:

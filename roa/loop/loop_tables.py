@@ -3,16 +3,18 @@
 from __future__ import annotations
 
 import keyword
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from decimal import Decimal
 from typing import Any
 
 from roa.loop import not_yet
+from roa.loop.disturbance_table import check_use, constants, read_disturbances
 from roa.loop.expression import FUNCTIONS, Expression
 from roa.loop.faults import Faults
 from roa.loop.formula import Vocabulary, parse
 from roa.loop.formula_syntax import FormulaError
+from roa.loop.hold import Hold, read_hold
 from roa.loop.model import Loop, Parameter
 from roa.loop.values import kind, number, pair
 from roa.loop.wording import hint, listed, quoted
@@ -34,9 +36,13 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
     reader = _LoopTables(tables, faults)
     reader.check_names()
     units = reader.units()
-    parameters = reader.parameters()
-    signals = reader.signals(parameters)
-    dynamics = reader.dynamics(parameters)
+    parameters, disturbances = read_disturbances(tables.get("disturbance", {}), reader.parameters(), faults)
+    known = constants(parameters, disturbances)
+    signals = reader.signals([*parameters], known)
+    dynamics = reader.dynamics([*parameters], known)
+    if len(faults.found) == before:  # a faulty formula may be the one that uses it
+        check_use(disturbances, [*signals.values(), *dynamics.values()], [*tables.get("parameters", {})], faults)
+    hold = reader.hold(signals, dynamics)
     guess = reader.guess()
     domain = reader.domain(guess)
     if len(faults.found) > before:
@@ -51,6 +57,8 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
         dynamics=tuple(dynamics[name] for name in states),
         domain=tuple(domain[name] for name in states),
         guess=tuple(guess.get(name, Decimal(0)) for name in states),
+        hold=hold,
+        disturbances=disturbances,
     )
 
 
@@ -68,8 +76,10 @@ class _LoopTables:
 
     def check_names(self) -> None:
         owner: dict[str, str] = {}
-        for table in ("states", "parameters", "signals"):
+        for table in ("states", "parameters", "signals", "disturbance"):
             for name in self.table(table):
+                if table == "disturbance" and owner.get(name) == "parameters":
+                    continue  # a parameter that varies; its value there is the nominal one
                 if sentence := _name_fault(name):
                     self.faults.add(table, name, sentence)
                 elif name in owner:
@@ -115,25 +125,32 @@ class _LoopTables:
             self.faults.add(table, name, str(error), value)
             return otherwise
 
-    def signals(self, parameters: Mapping[str, Parameter]) -> dict[str, Expression]:
+    def signals(self, parameters: Sequence[str], known: Mapping[str, Decimal]) -> dict[str, Expression]:
         trees: dict[str, Expression] = {}
         above = [*self.states, *parameters]
         for name, text in self.table("signals").items():
             refused = {later: _too_early(name, later) for later in self.table("signals")}  # unless it stands above
-            tree = self._formula("signals", name, text, Vocabulary(above, _values(parameters), refused))
+            tree = self._formula("signals", name, text, Vocabulary(above, known, refused))
             if tree is not None:
                 trees[name] = tree
             above.append(name)
         return trees
 
-    def dynamics(self, parameters: Mapping[str, Parameter]) -> dict[str, Expression]:
+    def dynamics(self, parameters: Sequence[str], known: Mapping[str, Decimal]) -> dict[str, Expression]:
         trees: dict[str, Expression] = {}
-        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], _values(parameters))
+        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], known)
         for name, text in self._of_states("dynamics", "its time derivative", complete=True).items():
             tree = self._formula("dynamics", name, text, vocabulary)
             if tree is not None:
                 trees[name] = tree
         return trees
+
+    def hold(self, signals: Mapping[str, Expression], dynamics: Mapping[str, Expression]) -> Hold | None:
+        if "hold" not in self.tables or len(signals) < len(self.table("signals")):
+            return None  # one slip, one fault: what a broken signal means for the hold shows once it is mended
+        return read_hold(
+            self.table("hold"), {**self.states, **self.table("parameters")}, signals, dynamics, self.faults
+        )
 
     def _formula(self, table: str, name: str, text: Any, vocabulary: Vocabulary) -> Expression | None:
         if not isinstance(text, str):
@@ -196,7 +213,3 @@ def _too_early(name: str, later: str) -> str:
     if later == name:
         return f'signal "{name}" uses itself; a signal may use only those above it'
     return f'signal "{later}" is defined further down; a signal may use only those above it'
-
-
-def _values(parameters: Mapping[str, Parameter]) -> dict[str, Decimal]:
-    return {name: parameter.value for name, parameter in parameters.items()}

@@ -6,9 +6,7 @@ They are refused by name: a table that is ignored in silence would give a wrong 
 from __future__ import annotations
 
 TABLES = {
-    "hold": "sample-and-hold of signals by a digital controller",
     "limits": "limits on states and signals",
-    "disturbance": "disturbances that vary in an interval",
     "tables": "look-up tables",
 }
 
@@ -16,7 +14,6 @@ KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
     ("bound", "ball"): "a claim in the form of a ball",
     ("bound", "scale"): "the scale of a claimed ball",
-    ("bound", "inner"): "the inner level of an ultimate bound",
     ("sweep", "accuracy"): "stopping at an accuracy of the share",
     ("sweep", "goal"): "a goal in place of a number of samples",
     ("sweep", "stop_outside"): "stopping outside by proof",

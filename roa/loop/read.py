@@ -18,15 +18,19 @@ from roa.loop.expression import Expression
 from roa.loop.faults import ABSENT, Faults
 from roa.loop.formula import Vocabulary, parse
 from roa.loop.formula_syntax import FormulaError
+from roa.loop.hold import check_with_hold
 from roa.loop.loop_tables import read_loop
 from roa.loop.model import Loop
 from roa.loop.values import kind
 from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
-TABLES = ("states", "parameters", "signals", "dynamics", "equilibrium", "domain", "bound", "sweep", "verdict")
+TABLES = (
+    "states", "parameters", "signals", "dynamics", "equilibrium", "domain", "hold", "disturbance", "bound", "sweep",
+    "verdict",
+)  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
-BOUND_KEYS = ("Q", "P", "V", "level", "search", "degree", "boxes")
+BOUND_KEYS = ("Q", "P", "V", "level", "inner", "search", "degree", "boxes")
 
 TableT = TypeVar("TableT", bound=BaseModel)
 
@@ -62,6 +66,9 @@ def read_text(text: str, source: str) -> Configuration:
     loop = read_loop(title, tables, faults)
     bound = _bound_table(tables.get("bound", {}), tables, loop, faults)
     sweep = _sweep_table(tables.get("sweep", {}), faults)
+    if loop and loop.hold:
+        ultimate = {"[disturbance]": bool(loop.disturbances), "[bound] inner": bool(bound and bound.inner)}
+        check_with_hold(loop.hold, sweep.horizon if sweep else None, ultimate, faults)
     verdict = _checked("verdict", VerdictTable, tables.get("verdict", {}), VerdictTable.model_fields, faults)
     faults.raise_if_any()
     assert loop is not None
@@ -175,12 +182,15 @@ def _lyapunov_formula(text: Any, tables: Mapping[str, Any], loop: Loop | None, f
     if not isinstance(text, str):
         faults.add("bound", "V", f"must be a formula in quotes, {kind(text)} found", text)
         return None
-    states, parameters = tables.get("states", {}), tables.get("parameters", {})
+    varying = tables.get("disturbance", {})
+    states = tables.get("states", {})
+    parameters = [name for name in tables.get("parameters", {}) if name not in varying]
     signals = {
         name: f'"{name}" is a signal; V is a formula in states and parameters: write the signal out'
         for name in tables.get("signals", {})
     }
-    constants = {name: parameter.value for name, parameter in loop.parameters.items()} if loop else {}
+    signals |= {name: f'"{name}" varies with time; V is a formula in states and constants' for name in varying}
+    constants = {name: loop.parameters[name].value for name in parameters} if loop else {}
     try:
         return parse(text, Vocabulary([*states, *parameters], constants, signals))
     except FormulaError as error:

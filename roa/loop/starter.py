@@ -10,6 +10,9 @@ STARTER = """\
 
 title = "Diving float that holds its depth with a limited thruster"
 
+# A digital controller computes signals from samples every `period` and holds them; each acts `delay` after its sample.
+# hold = { signals = ["thrust"], period = 0.1, delay = 0.05 }     # s; or as a table [hold] further down
+
 [states]                    # name = unit, in order; "" where there is no unit
 depth = "m"                 # below the set depth
 speed = "m/s"               # downwards
@@ -39,12 +42,16 @@ speed = 0.0
 depth = [-2.0, 2.0]
 speed = [-0.8, 0.8]
 
+[disturbance]               # what varies with time anywhere in an interval; only proofs of an ultimate bound use it
+# drag = [35.0, 45.0]       # a parameter, or a new name whose nominal value is the middle
+
 [bound]                     # the Lyapunov function V
 Q = "identity"              # from A'P + PA = -Q; or "domain", or a matrix [[2, 0], [0, 1]]
 # P = [[1.0, 0.2], [0.2, 1.5]]              # or V = (x - x_eq)'P(x - x_eq) as given
 # V = "depth**2 + depth*speed + speed**2"   # or a formula in states and parameters, zero at the equilibrium
 # level = 0.05              # the claim that `roa validate` judges: {V <= level} lies in the basin
-# search = ["quadratic"]    # what else is derived: "quadratic", "polynomial", "no_return"; by default as the states afford
+# inner = 0.001             # or only: whatever starts in {V <= level} ends in {V <= inner} (dead zone, disturbance)
+# search = ["quadratic"]    # what else is derived: quadratic, polynomial, no_return; unasked, as the states afford
 
 [sweep]                     # the simulation
 design  = "sobol"           # or "grid"

@@ -2,10 +2,10 @@
 
 import dataclasses
 
-import gallery
 import numpy as np
 import pytest
 
+import gallery
 from roa.bound.bounds import Bounds, derive_bounds
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.statement import Strength
