@@ -274,7 +274,7 @@ class _Rays:
 
         The linear part must go on to decrease V; that is no row but a matrix inequality, taken by eigenvectors.
         """
-        inverse: Array = np.linalg.inv(M)
+        inverse = np.asarray(np.linalg.inv(M), dtype=np.float64)
         cost = self._entries(inverse)
         for _ in range(EIGENVECTOR_CUTS):
             v = self._slowest
