@@ -65,6 +65,8 @@ def conclude(
         basin = measure(samples, configuration.loop, confidence, equilibrium.x)
         levels = by_level(samples, bounds.V, confidence)
         stated += [levels.bound] if levels.bound else []
+    stated += bounds.searched
+    if samples is not None and basin is not None:
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
     by_name = {comparison.bound.name: comparison for comparison in comparisons}
     loop = configuration.loop
