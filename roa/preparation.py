@@ -42,7 +42,7 @@ class Preparation:
     def __init__(
         self, configuration: Configuration, samples: int | None, seed: int | None, progress: Progress | None = None
     ) -> None:
-        from roa.loop.equilibrium import check_V, find_equilibrium, require_stable
+        from roa.loop.equilibrium import check_V, find_equilibrium, require_stable, require_within_limits
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
@@ -51,6 +51,7 @@ class Preparation:
         self._samples, self._seed = samples, seed
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
         require_stable(self.equilibrium, configuration.loop, configuration.source)
+        require_within_limits(self.equilibrium, configuration.loop, configuration.source)
         check_V(configuration, self.equilibrium)
 
     @cached_property

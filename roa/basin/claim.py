@@ -12,6 +12,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from roa.basin.claimed_limits import LimitsOfSet, limits_of
 from roa.basin.claimed_set import ClaimedSet
 from roa.basin.counterexample import (
     Counterexample,
@@ -40,7 +41,7 @@ Array = NDArray[np.float64]
 
 # Streams of random numbers, apart from each other and (by the first number) from those of the designs: points that
 # helped to look for a counterexample never count as independent draws.
-SEARCH_STREAM, DRAW_STREAM, DECREASE_STREAM = (1, 0), (1, 1), (1, 2)
+SEARCH_STREAM, DRAW_STREAM, DECREASE_STREAM, LIMITS_STREAM = (1, 0), (1, 1), (1, 2), (1, 3)
 
 
 class Result(StrEnum):
@@ -73,7 +74,7 @@ class Claim:
     counterexample : where refuted by a trajectory
     replay : how to see the counterexample again, a command line
     witness : float64 (n,), a point of the set with V̇ > 0, where the decrease is refuted
-    largest_level_inside : where the set leaves the domain
+    largest_level_inside : where the set leaves the domain or crosses a limit
     draws, failures : independent draws, and those of them that did not converge; 0 draws where none were needed
     nonconverging_fraction_upper : one-sided exact binomial limit from them
     """
@@ -128,7 +129,11 @@ def judge(
     claimed = ClaimedSet(bounds.V, _at_most(level))
     case = _Case(configuration, claimed, target, integration, run, seed)
     return (
-        _not_positive_definite(case) or _leaves_the_domain(case) or _proved(case, level, bounds) or _by_simulation(case)
+        _not_positive_definite(case)
+        or _leaves_the_domain(case)
+        or _crosses_a_limit(case)
+        or _proved(case, level, bounds)
+        or _by_simulation(case)
     )
 
 
@@ -150,6 +155,13 @@ class _Case:
     def witness(self) -> Array | None:
         """A point of the set with V̇ > 0, if one was found."""
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
+
+    @cached_property
+    def limits(self) -> LimitsOfSet:
+        """What is known of the limits on the set."""
+        level = self.configuration.bound.level
+        assert level is not None
+        return limits_of(self.claimed, level, self.stream(LIMITS_STREAM))
 
     @property
     def decrease(self) -> Decrease:
@@ -214,11 +226,33 @@ def _leaves_the_domain(case: _Case) -> Claim | None:
         return None
     largest = claimed.largest_level_inside
     reason = f"The claimed set leaves the domain; the largest level of this V that stays inside is {largest:.6g}."
+    if case.limits.largest_level is not None and case.limits.largest_level < largest:
+        largest = case.limits.largest_level
+        reason = f"The claimed set leaves the domain and the limits; up to level {largest:.6g} it stays within both."
     return case.judged(Result.NOT_SETTLED, case.decrease, reason, witness=case.witness, largest_level_inside=largest)
+
+
+def _crosses_a_limit(case: _Case) -> Claim | None:
+    limits = case.limits
+    if not limits.crossed:
+        return None
+    reason = f"The claimed set crosses the limit on {' and '.join(limits.crossed)}"
+    if limits.largest_level is not None:
+        shown = "proved to stay" if limits.is_proved else "estimated to stay"
+        reason += f"; the largest level of this V that is {shown} within the limits is {limits.largest_level:.6g}"
+    return case.judged(
+        Result.NOT_SETTLED,
+        case.decrease,
+        f"{reason}.",
+        witness=case.witness,
+        largest_level_inside=limits.largest_level,
+    )
 
 
 def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     """Prove the claim by a bound that is proved already, or by branch and bound at the very level."""
+    if not case.limits.kept:
+        return None
     for bound in bounds.stated:
         if bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
@@ -272,6 +306,8 @@ def _by_draws(case: _Case, trajectories: Trajectories) -> Claim:
     )
     if not supported:
         reason += f", where {_percent_up(1 - verdict.fraction)} is allowed"
+    if not case.limits.kept:
+        reason += "; that the set stays within the limits is not proved"
     if case.decrease is Decrease.REFUTED:
         reason += "; V̇ > 0 at a point of the set, so the set may be safe but the argument for it is wrong"
     return case.judged(

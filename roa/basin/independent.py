@@ -74,6 +74,8 @@ class _Watch:
         self.target = target
         self.low, self.high = _escape_box(loop, integration.escape)
         self.peak = np.zeros(loop.n)
+        self.loop = loop
+        self.over_limit = False
         centres = [] if target.kind == "level" else [(target.centre, Outcome.CONVERGED)]
         centres += [(centre, Outcome.SETTLED_ELSEWHERE) for centre in target.elsewhere]
         self.balls = centres
@@ -83,9 +85,10 @@ class _Watch:
         """Return the outcome with the moment that counts, or None while undecided."""
         offset = x - self.target.centre
         self.peak = np.maximum(self.peak, np.abs(offset))
+        self.over_limit |= not self.loop.within_limits(x)
         now = _Moment(time, x, self.peak, steps)
         if self.target.P is not None and offset @ self.target.P @ offset <= self.target.level:
-            return Outcome.CONVERGED, now
+            return self._converged, now
         for i, (centre, outcome) in enumerate(self.balls):
             distance = float(np.linalg.norm((x - centre) / self.target.half_widths))
             entry = self.entries[i]
@@ -95,11 +98,15 @@ class _Watch:
                 self.entries[i] = _Moment(time, x, self.peak, steps, distance)
             elif time - entry.time >= self.target.dwell:
                 if distance <= entry.distance / 2:
-                    return outcome, entry
+                    return (self._converged if outcome is Outcome.CONVERGED else outcome), entry
                 self.entries[i] = _Moment(time, x, self.peak, steps, distance)  # too slow: the dwell starts again
         if np.any(x < self.low) or np.any(x > self.high):
             return Outcome.ESCAPED, now
         return None
+
+    @property
+    def _converged(self) -> Outcome:
+        return Outcome.CONVERGED_OVER_LIMIT if self.over_limit else Outcome.CONVERGED
 
 
 def decide(loop: Loop, target: Target, integration: Integration, start: Array, rtol: float, atol: float) -> Decision:

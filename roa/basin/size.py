@@ -27,6 +27,7 @@ class Basin:
     Attributes
     ----------
     share : share of the samples in the basin, by replicate
+    safe : share of the samples that converge without crossing a limit, by replicate; None without limits
     counts : by outcome word, every outcome listed
     reasons : by reason word, only those that occurred
     partial : whether the sweep is to have more samples than these
@@ -40,6 +41,7 @@ class Basin:
     partial: bool
     confidence: float
     loop: Loop
+    safe: Share | None = None
 
     @property
     def samples(self) -> int:
@@ -79,10 +81,13 @@ def in_basin(trajectories: Trajectories) -> NDArray[np.bool_]:
 def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
     """Measure the basin in one pass over the stored samples; the memory does not grow with their number."""
     share = Share(samples.design, samples.replicates)
+    safe = Share(samples.design, samples.replicates) if loop.limits else None
     outcomes = np.zeros(len(Outcome), dtype=np.int64)
     reasons = np.zeros(len(Reason), dtype=np.int64)
     for first, trajectories in samples.chunks():
         share.add(first, in_basin(trajectories))
+        if safe is not None:
+            safe.add(first, trajectories.outcome == Outcome.CONVERGED)
         outcomes += np.bincount(trajectories.outcome, minlength=len(Outcome))
         reasons += np.bincount(trajectories.reason, minlength=len(Reason))
     return Basin(
@@ -92,4 +97,5 @@ def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
         partial=samples.partial,
         confidence=confidence,
         loop=loop,
+        safe=safe,
     )

@@ -13,6 +13,7 @@ from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
 from roa.basin.levels import Levels, by_level
+from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import Quadratic
@@ -73,6 +74,7 @@ def conclude(
         "states": loop.states,
         "units": loop.units,
         "domain": loop.box,
+        "limits": {name: [float(low), float(high)] for name, (low, high) in loop.limits.items()},
         "equilibrium": equilibrium.x,
         "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues],
         "stability": equilibrium.stability,
@@ -163,6 +165,20 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "counts": basin.counts,
         "reasons": basin.reasons,
         "by_replicate": {"converged": basin.share.hits, "samples": basin.share.sizes},
+        "safe": None if basin.safe is None else _safe(basin, basin.safe),
+        "strength": Strength.SIMULATED,
+    }
+
+
+def _safe(basin: Basin, safe: Share) -> dict[str, Any]:
+    """What converges without crossing a limit."""
+    interval = safe.interval(basin.loop.n, basin.confidence)
+    return {
+        "fraction": safe.fraction,
+        "interval": _ends(interval),
+        "volume": safe.fraction * basin.loop.domain_volume,
+        "volume_interval": _ends(interval.scaled(basin.loop.domain_volume)),
+        "by_replicate": {"converged": safe.hits, "samples": safe.sizes},
         "strength": Strength.SIMULATED,
     }
 

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from roa.bound.bounds import Bounds
 from roa.bound.definite import largest_eigenvalue, smallest_eigenvalue
 from roa.bound.equilibrium_enclosure import enclose_equilibrium
+from roa.bound.limited_level import LimitProver
 from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.norm_bound import norm_bound
@@ -46,6 +47,8 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
         best = _bound_of_another_shape(configuration, equilibrium)
         note = "no level of the configured V is proved"
         note += "" if best is None else '; the V meant here is that of A\'P + PA = -Q with Q = "domain"'
+    if best is not None and loop.limits:
+        best, note = _within_limits(best, note)
     level = 0.0 if best is None else _safe_level(best)
     if best is not None and not _is_resolved(configuration, best.V, level):
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
@@ -84,6 +87,18 @@ def _bound_of_another_shape(configuration: Configuration, equilibrium: Equilibri
         return None
     bound = norm_bound(Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, weight_matrix("domain", loop))))
     return bound if bound.level > 0 else None
+
+
+def _within_limits(best: Bound, note: str) -> tuple[Bound | None, str]:
+    """Lower a proved bound until its set is proved to lie within the limits, and say so."""
+    if not isinstance(best.V, Quadratic):
+        return best, note
+    level = LimitProver(best.V).largest(best.level)
+    if level == best.level:
+        return best, note
+    lowered = replace(best, level=level) if level > 0 else None
+    found = "no level is proved to lie within the limits" if lowered is None else "lowered until within the limits"
+    return lowered, "; ".join(words for words in (note, found) if words)
 
 
 def _safe_level(bound: Bound) -> float:

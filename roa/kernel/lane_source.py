@@ -24,15 +24,15 @@ from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.straight_line import right_hand_side
 from roa.kernel.tableau import Tableau
 from roa.kernel.target import Target
-from roa.loop.expression import Expression
+from roa.loop.expression import Expression, Name
 from roa.loop.model import Loop
 
 # 8 lanes do not vectorise, 16 give 0.89-0.96 of the speed of 32, and 64-128 no more than 1.03 of it.
 LANES = 32
 
 SIGNATURE = (
-    "void(f8[:,::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[:,::1], f8, f8[:,::1], f8, f8, "
-    "f8, f8, f8, i8, u1[::1], f8[::1], f8[:,::1], f8[:,::1], i4[::1], u1[::1])"
+    "void(f8[:,::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[:,::1], f8[:,::1], f8, f8[:,::1], f8, "
+    "f8, f8, f8, f8, i8, u1[::1], f8[::1], f8[:,::1], f8[:,::1], i4[::1], u1[::1])"
 )
 
 
@@ -55,7 +55,9 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
     level = target.kind == "level"
     # 1 is the target itself, where it is a ball; 2, 3, … are the other equilibria.
     balls = ([] if level else [1]) + [2 + k for k in range(len(target.elsewhere))]
-    rows = _buffer_rows(states, bool(balls))
+    lines = list(code.lines)
+    limits = [code.variable(Name(name)) for name in loop.limits]
+    rows = _buffer_rows(states, bool(balls), bool(limits))
     text = _template().render(
         outcome=Outcome,
         reason=Reason,
@@ -67,7 +69,11 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         rows=rows,
         n=loop.n,
         states=states,
-        lines=code.lines,
+        lines=lines,
+        limits=limits,
+        limit_lines=code.lines,
+        limit_ends="".join(f", low{i}, high{i}" for i in range(len(limits))),
+        hermite=_hermite,
         derivatives=derivatives,
         n_constants=len(code.constants),
         constants="".join(f", c{i}" for i in range(len(code.constants))),
@@ -91,12 +97,14 @@ def _template() -> jinja2.Template:
     return environment.get_template("lanes.py.jinja")
 
 
-def _buffer_rows(states: range, balls: bool) -> dict[str, int]:
+def _buffer_rows(states: range, balls: bool, limits: bool) -> dict[str, int]:
     """Name the rows of the lanes' buffer."""
     names = ["t", "h", "steps", *(f"{row}{j}" for row in ("x", "k", "peak") for j in states)]
     if balls:
         names += ["ball", "since", "entry", "entry_steps"]
         names += [f"{row}{j}" for row in ("entry_x", "entry_peak") for j in states]
+    if limits:
+        names += ["over"]
     return {name: row for row, name in enumerate(names)}
 
 
@@ -107,3 +115,11 @@ def _cell(rows: dict[str, int], name: str, lane: str = "l") -> str:
 def _combination(weights: tuple[float, ...], state: int) -> str:
     """Write the weighted sum of one state's slopes over the stages."""
     return " + ".join(f"{weight!r} * k{stage}_{state}" for stage, weight in enumerate(weights) if weight != 0.0)
+
+
+def _hermite(part: float, state: int) -> str:
+    """Write a state inside the step, on the cubic through the states and slopes of its ends."""
+    rest = 1.0 - part
+    old, new = rest * rest * (1.0 + 2.0 * part), part * part * (3.0 - 2.0 * part)
+    slope_old, slope_new = rest * rest * part, -part * part * rest
+    return f"{old} * x{state} + {new} * y{state} + taken * ({slope_old} * k0_{state} + {slope_new} * f{state})"

@@ -167,6 +167,9 @@ class Configuration:
             "dynamics": [to_text(tree) for tree in loop.dynamics],
             "equilibrium": [decimal_text(value) for value in loop.guess],
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "limits": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.limits.items())
+            },
             "bound": {
                 "Q": _plain(bound.Q),
                 "P": _plain(bound.P),

@@ -82,6 +82,19 @@ def require_stable(equilibrium: Equilibrium, loop: Loop, source: str) -> None:
         )
 
 
+def require_within_limits(equilibrium: Equilibrium, loop: Loop, source: str) -> None:
+    """Raise `UserError` with every limit that does not hold the equilibrium strictly inside."""
+    values = loop.values_of(equilibrium.x)
+    faults = [
+        f"{source}: [limits] {name} = [{low}, {high}]: excludes the equilibrium {_point(loop, equilibrium.x)}, where "
+        f"{name} = {float(values[name]):.6g}, which must lie strictly inside; widen the limit"
+        for name, (low, high) in loop.limits.items()
+        if not float(low) < float(values[name]) < float(high)
+    ]
+    if faults:
+        raise UserError(faults)
+
+
 def eigenvalue_text(eigenvalues: NDArray[np.complex128]) -> str:
     """Write eigenvalues for a sentence, a conjugate pair as one: -0.5 ± 2i, -3."""
     words = []

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from decimal import Decimal
 from functools import cached_property
 
@@ -38,6 +38,7 @@ class Loop:
     dynamics : tuple of n trees, the time derivative of each state, in state units per second
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
+    limits : mapping from state or signal to (low, high), exact decimals: values that must never be left
     """
 
     title: str
@@ -48,6 +49,7 @@ class Loop:
     dynamics: tuple[Expression, ...]
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
+    limits: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
     @property
     def n(self) -> int:
@@ -89,6 +91,17 @@ class Loop:
         """
         values = self.values_of(x)
         return np.stack([np.broadcast_to(evaluate(tree, values), x.shape[:-1]) for tree in self.dynamics], axis=-1)
+
+    def within_limits(self, x: Array) -> NDArray[np.bool_]:
+        """Whether all limited values are within their limits at the points x, float64 (..., n) -> (...).
+
+        False of a NaN: a value that nobody knows is not within its limits.
+        """
+        values = self.values_of(x)
+        inside = np.ones(x.shape[:-1], dtype=bool)
+        for name, (low, high) in self.limits.items():
+            inside &= (values[name] >= float(low)) & (values[name] <= float(high))
+        return inside
 
     @cached_property
     def _partials(self) -> Partials:

@@ -7,7 +7,6 @@ from __future__ import annotations
 
 TABLES = {
     "hold": "sample-and-hold of signals by a digital controller",
-    "limits": "limits on states and signals",
     "disturbance": "disturbances that vary in an interval",
     "tables": "look-up tables",
 }

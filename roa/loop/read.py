@@ -24,7 +24,7 @@ from roa.loop.values import kind
 from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
-TABLES = ("states", "parameters", "signals", "dynamics", "equilibrium", "domain", "bound", "sweep", "verdict")
+TABLES = ("states", "parameters", "signals", "dynamics", "equilibrium", "domain", "limits", "bound", "sweep", "verdict")
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
 BOUND_KEYS = ("Q", "P", "V", "level")
 
