@@ -132,7 +132,15 @@ def _parser() -> argparse.ArgumentParser:
     which = replay.add_mutually_exclusive_group(required=True)
     which.add_argument("index", metavar="INDEX", type=int, nargs="?", help="number of a stored start")
     which.add_argument("--from", dest="start", metavar="STATE=VALUE,…", help="any start, every state named")
-    verb("overlay", "draw the figures of a run again").add_argument("run", **folder)
+    overlay = verb("overlay", "draw the figures of a run again, or two runs in one picture")
+    overlay.add_argument("run", **folder)
+    overlay.add_argument("other", metavar="RUN2", nargs="?", help="a second run, to be drawn against the first")
+    overlay.add_argument("--states", metavar="A,B", help="the pair of states that is shown")
+    overlay.add_argument("--at", metavar="STATE=VALUE,…", help="where other states are held (default: the equilibrium)")
+    overlay.add_argument("--only", metavar="NAME,…", help="the figures that are wanted (default: all)")
+    overlay.add_argument("--format", dest="formats", metavar="KIND,…", help="png, svg, pdf (default: png,svg)")
+    overlay.add_argument("--dpi", metavar="N", type=_whole(20, 2400, "from 20 to 2400"), help="dots an inch (200)")
+    overlay.add_argument("--rising", action="store_true", help="hatch where V does not decrease")
     verb("report", "write the report of a run again, from what is stored").add_argument("run", **folder)
     return parser
 

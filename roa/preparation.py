@@ -7,11 +7,13 @@ target set, plan, lanes. No mathematics of its own.
 from __future__ import annotations
 
 from functools import cached_property
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from roa.errors import UserError
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from roa.basin.claim import Claim
     from roa.bound.bounds import Bounds
     from roa.kernel.integration import Integration
@@ -19,9 +21,11 @@ if TYPE_CHECKING:
     from roa.kernel.target import Target
     from roa.loop.configuration import Configuration
     from roa.loop.equilibrium import Equilibrium
+    from roa.report.evidence import Evidence
     from roa.sweep.pilot import Pilot
     from roa.sweep.plan import Plan
     from roa.sweep.progress import Progress
+    from roa.sweep.samples import Samples
 
 
 class Preparation:
@@ -32,6 +36,7 @@ class Preparation:
     configuration : Configuration
     samples, seed : in place of the configuration's, where given
     progress : told what takes a while
+    target : that of a stored run, which is then not derived again
 
     Raises
     ------
@@ -40,7 +45,12 @@ class Preparation:
     """
 
     def __init__(
-        self, configuration: Configuration, samples: int | None, seed: int | None, progress: Progress | None = None
+        self,
+        configuration: Configuration,
+        samples: int | None,
+        seed: int | None,
+        progress: Progress | None = None,
+        target: Target | None = None,
     ) -> None:
         from roa.loop.equilibrium import check_V, find_equilibrium, require_stable, require_within_limits
         from roa.sweep.progress import Progress
@@ -48,7 +58,7 @@ class Preparation:
         _require_files(configuration)
         self.configuration = configuration
         self.progress = progress or Progress()
-        self._samples, self._seed = samples, seed
+        self._samples, self._seed, self._stored_target = samples, seed, target
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
         require_stable(self.equilibrium, configuration.loop, configuration.source)
         require_within_limits(self.equilibrium, configuration.loop, configuration.source)
@@ -88,6 +98,8 @@ class Preparation:
         """The target set, other equilibria included."""
         from roa.bound.target_set import watching
 
+        if self._stored_target is not None:
+            return self._stored_target
         return watching(self._target_alone, self.pilot.elsewhere)
 
     @cached_property
@@ -115,6 +127,18 @@ class Preparation:
     def seed(self) -> int:
         """Seed of the design and of every search."""
         return self.configuration.sweep.seed if self._seed is None else self._seed
+
+    def evidence(self, verdict: Mapping[str, Any], samples: Samples) -> Evidence:
+        """What the figures of a run are drawn from."""
+        from dataclasses import replace
+
+        from roa.kernel.lanes import compile_lanes
+        from roa.report.evidence import Evidence
+
+        loose = self.integration
+        tight = replace(loose, rtol=loose.rtol / 10, atol=loose.atol / 10)
+        tighter = compile_lanes(self.configuration.loop, self.target, tight)
+        return Evidence(self.configuration, verdict, samples, self.lanes.run, tighter.run)
 
     def claim(self) -> Claim | None:
         """Judge the claimed level, where there is one."""

@@ -17,6 +17,7 @@ from roa.errors import MachineError, UserError
 if TYPE_CHECKING:
     from roa.loop.configuration import Configuration
     from roa.preparation import Preparation
+    from roa.report.evidence import Evidence
     from roa.sweep.progress import Progress
     from roa.sweep.run_folder import RunFolder
     from roa.sweep.samples import Samples
@@ -173,20 +174,54 @@ def replay(
     return Result(replay_text(found, loop), replay_document(found, loop), 0 if found.agrees else 1)
 
 
-def overlay(run: str | Path, progress: Progress | None = None) -> Result:
-    """Draw the figures of a run again."""
-    prepared, folder = _stored(run, None, progress)
-    verdict = _verdict_of(folder)
-    files = _draw(prepared, folder, verdict)
+def overlay(
+    run: str | Path, other: str | Path | None = None, states: str | None = None, at: str | None = None,
+    only: str | None = None, formats: str | None = None, dpi: int | None = None, rising: bool = False,
+    progress: Progress | None = None,
+) -> Result:  # fmt: skip
+    """Draw the figures of a run again, from what is stored; or two runs in one picture.
+
+    Parameters
+    ----------
+    run : its folder, into which the figures go
+    other : a second run, whose basin is drawn against that of the first
+    states : "a,b", the pair of states that is shown
+    at : "state=value,…", where other states are held
+    only : "name,…", the figures that are wanted
+    formats : "png,svg,pdf" or a part of it
+    dpi : dots an inch of what consists of pixels
+    rising : whether the region with V̇ >= 0 is hatched
+    """
+    from roa.report.draw import draw_difference, draw_figures
+    from roa.report.save import read_formats
+    from roa.report.view import read_view
+
+    first = evidence(run, progress)
+    view = read_view(first.loop, states, at, rising)
+    seen = first.seen(view.pair, view.at(first.equilibrium), rising)
+    folder, kinds = _existing(run), read_formats(formats)
+    if other is not None:
+        names = _existing(run).path.name, _existing(other).path.name
+        files = draw_difference(folder.figures, seen, evidence(other, progress), names, kinds, dpi)
+    else:
+        wanted = [name.strip() for name in only.split(",")] if only else []
+        files = draw_figures(folder.figures, seen, wanted, kinds, dpi, view.suffix(first.loop))
     return Result("\n".join(str(file) for file in files), {"figures": [str(file) for file in files]}, 0, folder.path)
+
+
+def evidence(run: str | Path, progress: Progress | None = None) -> Evidence:
+    """Open a run for its figures: `roa.report.figures` holds the functions that draw it into axes of your own."""
+    folder = _existing(run)
+    verdict = _verdict_of(folder)
+    prepared = _stored(run, None, progress, with_target=True)[0]
+    return prepared.evidence(verdict, _samples_of(folder))
 
 
 def report(run: str | Path) -> Result:
     """Write the report of a run again, from what is stored."""
     from roa.report.html import write_report
-    from roa.sweep.run_folder import RunFolder
 
-    folder = RunFolder.existing(Path(run))
+    folder = _existing(run)
     _verdict_of(folder)
     write_report(folder)
     return Result(str(folder.report), {"report": str(folder.report)}, 0, folder.path)
@@ -211,17 +246,29 @@ def _sweep(
     return prepared, folder
 
 
-def _stored(run: str | Path, samples: int | None, progress: Progress | None) -> tuple[Preparation, RunFolder]:
-    """Prepare a run again from its own folder, with the seed and the samples that it was begun with."""
-    from roa.loop.read import read_text
-    from roa.preparation import Preparation
-    from roa.sweep.header import Header
+def _existing(run: str | Path) -> RunFolder:
     from roa.sweep.run_folder import RunFolder
 
-    folder = RunFolder.existing(Path(run))
+    return RunFolder.existing(Path(run))
+
+
+def _stored(
+    run: str | Path, samples: int | None, progress: Progress | None, with_target: bool = False
+) -> tuple[Preparation, RunFolder]:
+    """Prepare a run again from its own folder, with the seed and the samples that it was begun with.
+
+    `with_target`: with its target set too, as it is stored, so that no bound has to be derived again.
+    """
+    from roa.loop.read import read_text
+    from roa.preparation import Preparation
+    from roa.sweep.fingerprint import target_of
+    from roa.sweep.header import Header
+
+    folder = _existing(run)
     header = Header.read(folder.plan)
     configuration = read_text(header.config, str(folder.config))
-    return Preparation(configuration, samples or header.samples, header.seed, progress), folder
+    target = target_of(header.fingerprint_parts) if with_target else None
+    return Preparation(configuration, samples or header.samples, header.seed, progress, target), folder
 
 
 def _samples_of(folder: RunFolder) -> Samples:
@@ -236,6 +283,7 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
     """Judge what the folder holds; write verdict, figures and report."""
     from roa.basin.provenance import provenance
     from roa.basin.verdict import conclude, exit_code
+    from roa.report.draw import draw_figures
     from roa.report.html import write_report
 
     samples, plan = _samples_of(folder), prepared.plan
@@ -251,22 +299,9 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
     )
     _write_verdict(folder, verdict)
     if figures:
-        _draw(prepared, folder, verdict)
+        draw_figures(folder.figures, prepared.evidence(verdict, samples))
         write_report(folder)
     return _result(folder, verdict, exit_code(claim, prepared.configuration.verdict.accept))
-
-
-def _draw(prepared: Preparation, folder: RunFolder, verdict: dict[str, Any]) -> tuple[Path, ...]:
-    from roa.report.draw import draw_figures
-
-    return draw_figures(
-        folder.figures,
-        prepared.configuration,
-        verdict,
-        _samples_of(folder),
-        lambda points: prepared.lanes.run(points).outcome,
-        prepared.bounds.V.value,
-    )
 
 
 def _new_folder(config: str | Path, out: str | Path | None) -> RunFolder:

@@ -27,16 +27,18 @@ class Basin:
     Attributes
     ----------
     share : share of the samples in the basin, by replicate
-    safe : share of the samples that converge without crossing a limit, by replicate; None without limits
     counts : by outcome word, every outcome listed
+    by_outcome : share of the samples with each outcome that occurred, by its word
     reasons : by reason word, only those that occurred
     partial : whether the sweep is to have more samples than these
     confidence : of the intervals, two-sided
     loop : Loop
+    safe : share of the samples that converge without crossing a limit; None where there are no limits
     """
 
     share: Share
     counts: Mapping[str, int]
+    by_outcome: Mapping[str, Share]
     reasons: Mapping[str, int]
     partial: bool
     confidence: float
@@ -57,6 +59,11 @@ class Basin:
     def interval(self) -> Interval:
         """Interval of the share."""
         return self.interval_at(self.confidence)
+
+    @property
+    def outcome_intervals(self) -> Mapping[str, Interval]:
+        """Interval of the share of each outcome that occurred."""
+        return {word: share.interval(self.loop.n, self.confidence) for word, share in self.by_outcome.items()}
 
     def interval_at(self, confidence: float) -> Interval:
         """Interval of the share at another confidence."""
@@ -81,21 +88,20 @@ def in_basin(trajectories: Trajectories) -> NDArray[np.bool_]:
 def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
     """Measure the basin in one pass over the stored samples; the memory does not grow with their number."""
     share = Share(samples.design, samples.replicates)
-    safe = Share(samples.design, samples.replicates) if loop.limits else None
-    outcomes = np.zeros(len(Outcome), dtype=np.int64)
+    by_outcome = {outcome: Share(samples.design, samples.replicates) for outcome in Outcome}
     reasons = np.zeros(len(Reason), dtype=np.int64)
     for first, trajectories in samples.chunks():
         share.add(first, in_basin(trajectories))
-        if safe is not None:
-            safe.add(first, trajectories.outcome == Outcome.CONVERGED)
-        outcomes += np.bincount(trajectories.outcome, minlength=len(Outcome))
+        for outcome, one in by_outcome.items():
+            one.add(first, trajectories.outcome == outcome)
         reasons += np.bincount(trajectories.reason, minlength=len(Reason))
     return Basin(
         share=share,
-        counts={outcome.word: int(outcomes[outcome]) for outcome in Outcome},
+        counts={outcome.word: int(one.hits.sum()) for outcome, one in by_outcome.items()},
+        by_outcome={outcome.word: one for outcome, one in by_outcome.items() if one.hits.any()},
         reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
         partial=samples.partial,
         confidence=confidence,
         loop=loop,
-        safe=safe,
+        safe=by_outcome[Outcome.CONVERGED] if loop.limits else None,
     )

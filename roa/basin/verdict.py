@@ -163,6 +163,7 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "samples": basin.samples,
         "partial": basin.partial,
         "counts": basin.counts,
+        "count_intervals": {word: _ends(interval) for word, interval in basin.outcome_intervals.items()},
         "reasons": basin.reasons,
         "by_replicate": {"converged": basin.share.hits, "samples": basin.share.sizes},
         "safe": None if basin.safe is None else _safe(basin, basin.safe),

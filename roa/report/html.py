@@ -13,6 +13,7 @@ from jinja2 import Environment, PackageLoader, StrictUndefined, select_autoescap
 from roa.kernel.outcomes import Reason
 from roa.loop.configuration import Configuration
 from roa.loop.read import read_text
+from roa.report import figures
 from roa.report.answer import Verdict, answer, next_steps
 from roa.report.tables import bound_rows, outcome_rows
 from roa.report.wording import (
@@ -40,18 +41,18 @@ def write_report(folder: RunFolder) -> None:
     """Write `report.html` from what the run folder holds: configuration, verdict and figures."""
     verdict = json.loads(folder.verdict.read_text(encoding="utf-8"))
     configuration = read_text(folder.config.read_text(encoding="utf-8"), folder.config.name)
-    figures = {file.stem: file.read_bytes() for file in sorted(folder.figures.glob("*.svg"))}
-    write_atomically(folder.report, report_html(verdict, configuration, figures).encode())
+    drawn = {file.stem: file.read_bytes() for file in sorted(folder.figures.glob("*.svg"))}
+    write_atomically(folder.report, report_html(verdict, configuration, drawn).encode())
 
 
-def report_html(verdict: Verdict, configuration: Configuration, figures: Mapping[str, bytes]) -> str:
+def report_html(verdict: Verdict, configuration: Configuration, drawn: Mapping[str, bytes]) -> str:
     """The whole report as text.
 
     Parameters
     ----------
     verdict : as in `verdict.json`
     configuration : that of the run
-    figures : content of the SVG files by name, as `draw_figures` writes them
+    drawn : content of the SVG files by name, as `draw_figures` writes them; other views of the run are left out
     """
     environment = Environment(
         loader=PackageLoader("roa.report", "."),
@@ -60,13 +61,13 @@ def report_html(verdict: Verdict, configuration: Configuration, figures: Mapping
         trim_blocks=True,
         lstrip_blocks=True,
     )
-    pictures = {name: _picture(name, content, verdict) for name, content in figures.items() if name in _CAPTIONS}
+    pictures = {name: _picture(name, drawn[name], verdict) for name in figures.names() if name in drawn}
     return environment.get_template("report.html").render(
         verdict=verdict,
         answer=answer(verdict),
         next_steps=next_steps(verdict),
         overlay=pictures.get("overlay") or pictures.get("slices"),
-        share_by_level=pictures.get("share_by_level"),
+        pictures=pictures,
         bounds=bound_rows(verdict),
         outcomes=outcome_rows(verdict),
         basin_rows=list(_basin_rows(verdict)),
@@ -79,23 +80,14 @@ def report_html(verdict: Verdict, configuration: Configuration, figures: Mapping
     )
 
 
-_CAPTIONS = {
-    "overlay": "The simulated basin under the level sets of the bounds. Every start of a raster was simulated, and "
-    "its edge refined by further simulations between neighbours that ended differently.",
-    "slices": "Slices of the simulated basin in pairs of states, with the level sets of the bounds where they meet "
-    "the slice. States that a panel does not show are at the equilibrium; nothing is projected.",
-    "share_by_level": "Share of the stored starts that converged, in shells of V from the equilibrium outward, with "
-    "the level of each bound. Up to the level of a true bound it is 1.",
-}
-
-
 def _picture(name: str, content: bytes, verdict: Verdict) -> Picture:
+    caption = figures.load(name).CAPTION
     sets = "; ".join(f"{one.name} ({one.strength}) at level {one.level}" for one in bound_rows(verdict))
-    text = f"{_CAPTIONS[name]} States: {', '.join(verdict['states'])}. Level sets: {sets or 'none'}."
+    text = f"{caption} States: {', '.join(verdict['states'])}. Level sets: {sets or 'none'}."
     if verdict["basin"]:
         text += f" The basin fills {percent(verdict['basin']['fraction'])} of the domain (simulated)."
     # As an image of its own, so that names inside one drawing cannot meet those inside another.
-    return Picture(f"data:image/svg+xml;base64,{b64encode(content).decode()}", _CAPTIONS[name], text)
+    return Picture(f"data:image/svg+xml;base64,{b64encode(content).decode()}", caption, text)
 
 
 Row = tuple[str, str]

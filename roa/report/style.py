@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from contextlib import AbstractContextManager
 from dataclasses import dataclass
+from textwrap import wrap
 from typing import Literal
 
 import matplotlib
@@ -37,6 +38,8 @@ SETTINGS = {
     "ytick.color": INK,
     "xtick.labelsize": 8.5,
     "ytick.labelsize": 8.5,
+    "figure.titlesize": 10.5,
+    "figure.titleweight": "bold",
     "legend.fontsize": 8.5,
     "legend.title_fontsize": 8.5,
     "legend.frameon": False,
@@ -68,6 +71,9 @@ BOUNDS = {
     "norm bound": Line("#9a3412", "solid", 2.0),
     "contact level": Line("#b7790f", (0, (5.5, 1.8)), 2.0),
     "unfalsified level": Line("#6d3fa0", (0, (1.2, 1.3)), 2.2),
+    "best quadratic": Line("#14918a", (0, (8, 2.4)), 2.0),
+    "best polynomial": Line("#153f7f", (0, (4, 1.2, 1.2, 1.2)), 2.2),
+    "no-return set": Line("#292524", (0, (3.2, 1.2)), 1.8),
     "claim": Line("#000000", (0, (7, 1.6, 1.4, 1.6)), 2.6),
 }
 OTHER_BOUND = Line("#3f4a56", (0, (3, 1.2, 1, 1.2, 1, 1.2)), 1.8)
@@ -84,7 +90,17 @@ AREAS = {
 
 TRAJECTORY = Line("#4b6a88", "solid", 0.9)
 COUNTEREXAMPLE = Line("#b0004f", (0, (3, 1.4)), 1.5)
+# Of two basins in one picture.
+KEPT = Area("#cfe1f0", Line("#123a63", "solid", 1.1))
+LOST = Area("#f3d9c9", Line("#9a3412", "solid", 1.3), "\\\\\\\\")
+GAINED = Area("#d5e8dc", Line("#0f766e", "solid", 1.3), "////")
+
+LIMIT = Line("#7f1d1d", (0, (9, 3, 2, 3)), 1.1)
+FIELD = "#aab4c2"
+RISING = Area(PAPER, Line("#b0004f", "solid", 0.4), "////")
 EQUILIBRIUM_MARK = "P"
+REST_MARK = "D"
+WITNESS_MARK = "^"
 # The mark at the start of a trajectory says how it ends.
 START_MARKS = {
     Outcome.CONVERGED: "o",
@@ -109,6 +125,11 @@ def settings() -> AbstractContextManager[None]:
 def new_figure(width: float, height: float) -> Figure:
     """Empty figure of the given size in inches; call it inside `settings()`."""
     return Figure(figsize=(width, height), facecolor=PAPER, layout="constrained")
+
+
+def title_lines(title: str, width: int) -> str:
+    """The title of the configuration, broken into lines of so many letters."""
+    return "\n".join(wrap(title, width))
 
 
 def label_axes(axes: Axes, names: tuple[str, str], units: tuple[str, str]) -> None:

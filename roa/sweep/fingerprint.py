@@ -12,6 +12,8 @@ from collections.abc import Mapping
 from importlib.metadata import version
 from typing import Any
 
+import numpy as np
+
 from roa import __version__
 from roa.kernel.target import Target
 
@@ -50,6 +52,19 @@ def target_parts(target: Target) -> dict[str, Any]:
         "target.dwell": target.dwell,
         "target.elsewhere": target.elsewhere.tolist(),
     }
+
+
+def target_of(parts: Mapping[str, Any]) -> Target:
+    """Return the target set that `target_parts` described; what was written as words only is not in it."""
+    stored = {key.removeprefix("target."): value for key, value in parts.items() if key.startswith("target.")}
+    n = len(stored["centre"])
+    arrays = {
+        "centre": np.array(stored["centre"]),
+        "half_widths": np.array(stored["half_widths"]),
+        "P": None if stored["P"] is None else np.array(stored["P"]),
+        "elsewhere": np.array(stored["elsewhere"], dtype=np.float64).reshape(-1, n),
+    }
+    return Target(**(stored | arrays))
 
 
 def version_parts() -> dict[str, Any]:

@@ -14,6 +14,7 @@ import pytest
 from roa.kernel.outcomes import Outcome
 from roa.kernel.trajectories import Trajectories
 from roa.loop.read import read_text
+from roa.report.evidence import Evidence
 
 DISC = """
 title = "Disc whose <script>alert('inside')</script> title is no code & stays text"
@@ -35,10 +36,28 @@ P = [[2.0, 0.5], [0.5, 1.0]]
 """
 
 
-def outcome_in_disc(points):
-    """Outcomes of starts of the disc, float64 (m, n) -> uint8 (m,); further states are let go to zero at once."""
-    inside = np.hypot(points[:, 0], points[:, 1]) < 1
-    return np.where(inside, Outcome.CONVERGED, Outcome.ESCAPED).astype(np.uint8)
+def simulate_disc(points, threshold=1.0):
+    """Results of starts of the disc of that radius, float64 (m, n): the closer to the edge the later."""
+    m = len(points)
+    radius = np.hypot(points[:, 0], points[:, 1])
+    return Trajectories(
+        initial=points,
+        outcome=np.where(radius < threshold, Outcome.CONVERGED, Outcome.ESCAPED).astype(np.uint8),
+        time=4.0 * radius,
+        final=points,
+        peak=np.abs(points),
+        steps=np.full(m, 20, np.int32),
+        reason=np.zeros(m, np.uint8),
+    )
+
+
+def states_table(n):
+    """Configuration of n states that decay, each on [-1.5, 1.5]."""
+    names = ["position", "speed", "tilt", "rate", "a", "b", "c"][:n]
+    lines = ["[states]", *(f'{name} = "m/s"' for name in names)]
+    lines += ["[dynamics]", *(f'{name} = "-{name}"' for name in names)]
+    lines += ["[domain]", *(f"{name} = [-1.5, 1.5]" for name in names)]
+    return read_text('title = "Decay"\n' + "\n".join(lines), "decay.toml")
 
 
 class StoredDisc:
@@ -49,17 +68,7 @@ class StoredDisc:
         self.initial = np.random.default_rng(20).uniform(box[:, 0], box[:, 1], (n, len(box)))
 
     def read(self, first, count):
-        initial = self.initial[first : first + count]
-        m = len(initial)
-        return Trajectories(
-            initial=initial,
-            outcome=outcome_in_disc(initial),
-            time=np.full(m, 4.0),
-            final=initial,
-            peak=np.abs(initial),
-            steps=np.full(m, 20, np.int32),
-            reason=np.zeros(m, np.uint8),
-        )
+        return simulate_disc(self.initial[first : first + count])
 
 
 def bound(name, level, strength, ratio):
@@ -115,6 +124,7 @@ VERDICT = {
             "unresolved": 0,
             "failed": 0,
         },
+        "count_intervals": {"converged": [0.41752, 0.42014], "escaped": [0.57986, 0.58248]},
         "reasons": {"blow_up": 12},
         "by_replicate": {"converged": [6862] * 16, "samples": [16384] * 16},
         "strength": "simulated",
@@ -158,6 +168,7 @@ CLAIM = {
     "decrease": "refuted",
     "reason": "A start inside the claimed set, with V = 1.99, escaped, and so it does again.",
     "level": 2.0,
+    "P": [[2.0, 0.5], [0.5, 1.0]],
     "strength": "estimated",
     "counterexample": {
         "initial": [0.9, 0.6],
@@ -198,11 +209,29 @@ def claimed(verdict):
 
 
 @pytest.fixture
-def in_disc():
-    """Return the function that labels starts of the disc."""
-    return outcome_in_disc
+def stored(configuration):
+    return StoredDisc(configuration.loop.box)
 
 
 @pytest.fixture
-def stored(configuration):
-    return StoredDisc(configuration.loop.box)
+def evidence(configuration, verdict, stored):
+    """The run of the disc, as figures see it; ten times tighter tolerances move its edge by 0.004."""
+    return Evidence(configuration, verdict, stored, simulate_disc, lambda points: simulate_disc(points, 1.004))
+
+
+@pytest.fixture
+def evidence_of(verdict):
+    """Return a function that gives the run of n decaying states with bounds of the given level."""
+
+    def with_states(n, level=0.05, **changes):
+        configuration = states_table(n)
+        P = np.eye(n).tolist()
+        bounds = [one | {"level": level, "P": P} for one in verdict["bounds"]]
+        loop = configuration.loop
+        changed = verdict | {
+            "states": list(loop.states), "units": list(loop.units), "domain": loop.box.tolist(),
+            "equilibrium": [0.0] * n, "bounds": bounds,
+        } | changes  # fmt: skip
+        return Evidence(configuration, changed, StoredDisc(loop.box), simulate_disc, simulate_disc)
+
+    return with_states

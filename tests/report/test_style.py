@@ -2,7 +2,7 @@ import matplotlib
 import numpy as np
 from matplotlib.figure import Figure
 
-from roa.report.save import png_bytes, svg_bytes
+from roa.report.save import figure_bytes
 from roa.report.style import AREAS, BOUNDS, START_MARKS, settings
 
 
@@ -25,6 +25,6 @@ def test_nothing_outside_changes_the_figures():
     with settings():
         figure = Figure()
         figure.subplots()
-    assert svg_bytes(figure) == svg_bytes(figure)
-    assert png_bytes(figure) == png_bytes(figure)
+    for kind in ("png", "svg", "pdf"):
+        assert figure_bytes(figure, kind) == figure_bytes(figure, kind)
     assert dict(matplotlib.rcParams) == before

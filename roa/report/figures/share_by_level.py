@@ -6,18 +6,32 @@ from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 import numpy as np
+from matplotlib.artist import Artist
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.patches import Patch
 from numpy.typing import NDArray
 
+from roa.bound.lyapunov_function import Quadratic
+from roa.report import legends
+from roa.report.evidence import Evidence
 from roa.report.level_sets import LevelSet
-from roa.report.overlay import add_legends, level_set_entries
-from roa.report.style import BASIN, bound_line, new_figure
+from roa.report.style import BASIN, bound_line, new_figure, title_lines
 from roa.report.wording import confidence_text
 
 Array = NDArray[np.float64]
+
+PLACE = 30
+CAPTION = (
+    "Share of the stored starts that converged, in shells of V from the equilibrium outward, with the level of each "
+    "bound. Up to the level of a true bound it is 1."
+)
+
+
+def applies(evidence: Evidence) -> bool:
+    """Whether there are shells of V that hold samples."""
+    return any(shell["high"] > 0 for shell in evidence.verdict["levels"])
 
 
 def share_by_level(axes: Axes, levels: Sequence[Mapping[str, Any]], level_sets: Sequence[LevelSet]) -> Axes:
@@ -45,18 +59,27 @@ def share_by_level(axes: Axes, levels: Sequence[Mapping[str, Any]], level_sets: 
     return axes
 
 
-def share_by_level_figure(
-    levels: Sequence[Mapping[str, Any]], level_sets: Sequence[LevelSet], confidence: float
-) -> Figure:
+def figure(evidence: Evidence) -> Figure:
     """Converged share against V, with its legend."""
-    figure = new_figure(7.8, 4.8)
-    share_by_level(figure.subplots(), levels, level_sets)
-    shells = [
+    drawn = new_figure(7.8, 5.0)
+    drawn.suptitle(title_lines(evidence.title, 84), x=0.01, ha="left")
+    level_sets = [one for one in evidence.level_sets if _same_V(one, evidence)]
+    share_by_level(drawn.subplots(), evidence.verdict["levels"], level_sets)
+    confidence = confidence_text(evidence.verdict["confidence"])
+    shells: list[Artist] = [
         Line2D([], [], color=BASIN.edge.colour, linewidth=1.6, label="converged share in a shell of V"),
-        Patch(facecolor=BASIN.tone, label=f"its {confidence_text(confidence)} interval"),
+        Patch(facecolor=BASIN.tone, label=f"its {confidence} interval"),
     ]
-    add_legends(figure, shells, level_set_entries(level_sets))
-    return figure
+    legends.add_legends(drawn, shells, legends.level_set_entries(level_sets))
+    return drawn
+
+
+def _same_V(one: LevelSet, evidence: Evidence) -> bool:
+    """Whether the level is one of the V of the shells, and not of another shape."""
+    V = evidence.V
+    if not isinstance(V, Quadratic):
+        return one.P is None and not one.is_outer
+    return one.P is not None and np.array_equal(one.P, V.P)
 
 
 def _steps(levels: Sequence[Mapping[str, Any]], value: Callable[[Mapping[str, Any]], float]) -> Array:
