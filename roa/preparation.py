@@ -52,7 +52,13 @@ class Preparation:
         progress: Progress | None = None,
         target: Target | None = None,
     ) -> None:
-        from roa.loop.equilibrium import check_V, find_equilibrium, require_stable, require_within_limits
+        from roa.loop.equilibrium import (
+            check_V,
+            find_equilibrium,
+            require_given_V,
+            require_stable,
+            require_within_limits,
+        )
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
@@ -60,7 +66,10 @@ class Preparation:
         self.progress = progress or Progress()
         self._samples, self._seed, self._stored_target = samples, seed, target
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
-        require_stable(self.equilibrium, configuration.loop, configuration.source)
+        if configuration.bound.inner is None:
+            require_stable(self.equilibrium, configuration.loop, configuration.source)
+        else:
+            require_given_V(configuration, self.equilibrium)
         require_within_limits(self.equilibrium, configuration.loop, configuration.source)
         check_V(configuration, self.equilibrium)
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from roa.basin.size import Basin
 from roa.kernel.target import Target
+from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
 
 ALWAYS = (
@@ -15,9 +16,23 @@ ALWAYS = (
 )
 
 
-def cautions(equilibrium: Equilibrium, target: Target | None, basin: Basin | None) -> list[str]:
+def cautions(
+    configuration: Configuration, equilibrium: Equilibrium, target: Target | None, basin: Basin | None
+) -> list[str]:
     """Return the cautions of a verdict, those of every verdict first."""
-    return [*ALWAYS, *_of_the_loop(equilibrium, target), *_of_the_sweep(basin)]
+    varying = _of_the_disturbances(configuration)
+    return [*ALWAYS, *varying, *_of_the_loop(equilibrium, target), *_of_the_sweep(basin)]
+
+
+def _of_the_disturbances(configuration: Configuration) -> list[str]:
+    loop = configuration.loop
+    if not loop.disturbances:
+        return []
+    nominal = ", ".join(f"{name} = {loop.parameters[name].value}" for name in loop.disturbances)
+    return [
+        f"Disturbances are not simulated: equilibrium and trajectories are those of the nominal {nominal}. What is "
+        "said of every course of a disturbance rests on proof alone."
+    ]
 
 
 def _of_the_loop(equilibrium: Equilibrium, target: Target | None) -> list[str]:

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import shlex
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
 from decimal import ROUND_CEILING, Context, Decimal
 from enum import StrEnum
 from functools import cached_property
@@ -15,6 +16,7 @@ from numpy.typing import NDArray
 from roa.basin.claimed_limits import LimitsOfSet, limits_of
 from roa.basin.claimed_set import ClaimedSet
 from roa.basin.counterexample import (
+    REFUTING,
     Counterexample,
     Run,
     confirm,
@@ -24,6 +26,7 @@ from roa.basin.counterexample import (
     suspects_of,
 )
 from roa.basin.intervals import clopper_pearson_upper, success_run_samples
+from roa.basin.ring_attempt import attempt_ring
 from roa.bound.bounds import Bounds
 from roa.bound.level_proof import LevelProver
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
@@ -75,6 +78,9 @@ class Claim:
     replay : how to see the counterexample again, a command line
     witness : float64 (n,), a point of the set with V̇ > 0, where the decrease is refuted
     largest_level_inside : where the set leaves the domain or crosses a limit
+    inner : where the claim is an ultimate bound: every trajectory from the set enters {V <= inner}, for good
+    disturbances : name -> (low, high), under every course of which the claim is meant
+    witness_disturbance : name -> value, under which V̇ > 0 at the witness
     draws, failures : independent draws, and those of them that did not converge; 0 draws where none were needed
     nonconverging_fraction_upper : one-sided exact binomial limit from them
     """
@@ -90,6 +96,9 @@ class Claim:
     replay: str | None = None
     witness: Array | None = None
     largest_level_inside: float | None = None
+    inner: float | None = None
+    disturbances: Mapping[str, tuple[float, float]] = field(default_factory=dict)
+    witness_disturbance: Mapping[str, float] | None = None
     draws: int = 0
     failures: int = 0
     nonconverging_fraction_upper: float | None = None
@@ -103,7 +112,7 @@ class Claim:
     @property
     def bound(self) -> Bound:
         """The claim as a bound, to be compared with the basin."""
-        return Bound("claim", self.V, self.level, self.strength, self.reason)
+        return Bound("claim", self.V, self.level, self.strength, self.reason, inner=self.inner)
 
 
 def judge(
@@ -128,6 +137,13 @@ def judge(
     assert level is not None
     claimed = ClaimedSet(bounds.V, _at_most(level))
     case = _Case(configuration, claimed, target, integration, run, seed)
+    if configuration.bound.inner is not None or configuration.loop.disturbances:
+        return (
+            _not_positive_definite(case)
+            or _leaves_the_domain(case)
+            or _crosses_a_limit(case)
+            or _ultimately(case, level)
+        )
     return (
         _not_positive_definite(case)
         or _leaves_the_domain(case)
@@ -153,7 +169,9 @@ class _Case:
 
     @cached_property
     def witness(self) -> Array | None:
-        """A point of the set with V̇ > 0, if one was found."""
+        """A point of the set with V̇ > 0, if one was found; not looked for where a ring is all that is claimed."""
+        if self.configuration.bound.inner is not None:
+            return None
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
 
     @cached_property
@@ -168,11 +186,14 @@ class _Case:
         return Decrease.UNDECIDED if self.witness is None else Decrease.REFUTED
 
     def judged(self, result: Result, decrease: Decrease, reason: str, **more: Any) -> Claim:
-        verdict, level = self.configuration.verdict, self.configuration.bound.level
-        assert level is not None
+        verdict, table, loop = self.configuration.verdict, self.configuration.bound, self.configuration.loop
+        assert table.level is not None
         return Claim(
-            result, decrease, reason, self.claimed.V, float(level), verdict.confidence, verdict.fraction, **more
-        )
+            result, decrease, reason, self.claimed.V, float(table.level), verdict.confidence, verdict.fraction,
+            inner=None if table.inner is None else float(table.inner),
+            disturbances={name: (float(low), float(high)) for name, (low, high) in loop.disturbances.items()},
+            **more,
+        )  # fmt: skip
 
     def refuted(self, found: Counterexample) -> Claim:
         ending = "came to rest at another equilibrium"
@@ -269,6 +290,31 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         return None
     reason = f"{branch_and_bound(proof)} on the whole claimed set, which lies inside the domain."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
+
+
+def _ultimately(case: _Case, level: Decimal) -> Claim:
+    """Judge a claim that is meant for every disturbance, or only promises a residual set."""
+    loop, inner = case.configuration.loop, case.configuration.bound.inner
+    attempt = attempt_ring(case.claimed.V, inner, level)
+    decrease, reason = Decrease(attempt.decrease), attempt.reason
+    if decrease is Decrease.PROVED and case.limits.kept:
+        return case.judged(Result.PROVED, decrease, reason)
+    if not case.limits.kept:
+        reason += " That the set stays within the limits is not proved."
+    found_by_proof: dict[str, Any] = {"witness": attempt.witness, "witness_disturbance": attempt.disturbance}
+    if not loop.disturbances and case.target.residual:
+        claim = _by_simulation(case)
+        return replace(claim, decrease=decrease, **found_by_proof, reason=f"{claim.reason} {reason}")
+    # The nominal trajectory is one of those that the claim is about: if it escapes, the claim is wrong. Where the
+    # residual set is no target, rest inside it is no failure.
+    refuting = REFUTING if inner is None else (Outcome.ESCAPED,)
+    suspects = search(case.claimed, case.run, case.stream(SEARCH_STREAM), refuting)
+    found = confirm(case.claimed, suspects, case.target, case.integration, refuting)
+    if found is not None:
+        return replace(case.refuted(found), decrease=decrease, **found_by_proof)
+    if loop.disturbances:
+        reason += " A disturbance is not simulated, so that nothing but a proof could support the claim."
+    return case.judged(Result.NOT_SETTLED, decrease, reason, **found_by_proof)
 
 
 def _by_simulation(case: _Case) -> Claim:

@@ -77,25 +77,25 @@ class _Worst:
         self.ball, self.score = ball[worst], score[worst]
 
 
-def search(claimed: ClaimedSet, run: Run, rng: np.random.Generator) -> Array:
+def search(claimed: ClaimedSet, run: Run, rng: np.random.Generator, refuting: tuple[Outcome, ...] = REFUTING) -> Array:
     """Return starts of the set that escaped or settled elsewhere, float64 (m, n); none if m = 0."""
     worst = _Worst(claimed.loop.n, rng)
     for _ in range(1 + ROUNDS):
         ball = worst.throw()
         trajectories = run(claimed.at(ball))
-        suspects = suspects_of(claimed, trajectories)
+        suspects = suspects_of(claimed, trajectories, refuting)
         if len(suspects):
             return suspects
         worst.keep(ball, trajectories.time)
     return np.empty((0, claimed.loop.n))
 
 
-def suspects_of(claimed: ClaimedSet, trajectories: Trajectories) -> Array:
+def suspects_of(claimed: ClaimedSet, trajectories: Trajectories, refuting: tuple[Outcome, ...] = REFUTING) -> Array:
     """Starts whose outcome would refute a claim, float64 (m, n), m <= EXAMINED, the most telling first.
 
     In turn the innermost, which says most about the level, and the soonest to end, which is the clearest case.
     """
-    against = np.flatnonzero(np.isin(trajectories.outcome, REFUTING))
+    against = np.flatnonzero(np.isin(trajectories.outcome, refuting))
     starts, time = trajectories.initial[against], trajectories.time[against]
     innermost = np.argsort(claimed.V.value(starts), kind="stable")
     soonest = np.argsort(time, kind="stable")
@@ -103,14 +103,20 @@ def suspects_of(claimed: ClaimedSet, trajectories: Trajectories) -> Array:
     return starts[list(dict.fromkeys(in_turn.tolist()))[:EXAMINED]]
 
 
-def confirm(claimed: ClaimedSet, suspects: Array, target: Target, integration: Integration) -> Counterexample | None:
+def confirm(
+    claimed: ClaimedSet,
+    suspects: Array,
+    target: Target,
+    integration: Integration,
+    refuting: tuple[Outcome, ...] = REFUTING,
+) -> Counterexample | None:
     """Return the first suspect that verifiably lies in the set and ends so under the independent integrator too."""
     for start in suspects:
         if not claimed.contains(start):
             continue
         tolerances = integration.rtol / TIGHTER, integration.atol / TIGHTER
         decision = decide(claimed.loop, target, integration, start, *tolerances)
-        if decision.outcome in REFUTING:
+        if decision.outcome in refuting:
             return Counterexample(start, float(claimed.V.value(start)), decision)
     return None
 

@@ -86,7 +86,7 @@ def conclude(
         "comparison": _comparison(stated, claim, by_name),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
-        "cautions": cautions(equilibrium, target, basin),
+        "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
     plain: dict[str, Any] = _plain(verdict)
@@ -113,6 +113,9 @@ def _claim(claim: Claim) -> dict[str, Any]:
             "strength": Strength.SIMULATED,
         },
         "witness": claim.witness,
+        "witness_disturbance": claim.witness_disturbance,
+        "inner": claim.inner,
+        "disturbance": claim.disturbances,
         "largest_level_inside": claim.largest_level_inside,
         "nonconverging_fraction_upper": claim.nonconverging_fraction_upper,
         "confidence": claim.confidence,
@@ -127,6 +130,7 @@ def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
         "name": bound.name,
         "level": bound.level,
         "level_estimated": bound.level_estimated,
+        "inner": bound.inner,
         "strength": bound.strength,
         "note": bound.note,
         **_function(bound),
@@ -186,7 +190,12 @@ def _safe(basin: Basin, safe: Share) -> dict[str, Any]:
 
 def _comparison(stated: Sequence[Bound], claim: Claim | None, by_name: Mapping[str, Comparison]) -> dict[str, Any]:
     """Return the claim beside the basin, or else the proved bound of the largest volume."""
-    proved = [by_name[bound.name] for bound in stated if bound.strength is Strength.PROVED and bound.name in by_name]
+    # An ultimate bound says nothing of convergence, unless the sweep's target is its inner set: then it is the claim.
+    proved = [
+        by_name[bound.name]
+        for bound in stated
+        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name
+    ]
     compared = by_name.get("claim") if claim else max(proved, key=lambda one: one.volume, default=None)
     return {
         "bound": None if compared is None else compared.bound.name,

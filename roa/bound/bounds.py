@@ -15,6 +15,7 @@ from roa.bound.norm_bound import norm_bound
 from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import prove_contact_level
 from roa.bound.statement import Bound, Strength
+from roa.bound.ultimate_bound import BEST, best_ring_shape, ultimate_bound
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
 
@@ -40,8 +41,8 @@ class Bounds:
 
     @property
     def largest_proved(self) -> Bound | None:
-        """The proved bound of the largest level, or None where nothing is proved."""
-        proved = [bound for bound in self.stated if bound.strength is Strength.PROVED]
+        """The proved bound of the largest level from which all starts converge, or None where nothing is proved."""
+        proved = [bound for bound in self.stated if bound.strength is Strength.PROVED and bound.inner is None]
         return max(proved, key=lambda bound: bound.level, default=None)
 
 
@@ -61,10 +62,47 @@ def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) ->
 
 
 def derive_bounds(configuration: Configuration, equilibrium: Equilibrium) -> Bounds:
-    """Derive the norm bound and the contact level of the configured V, proved as far as that can be done."""
+    """Derive norm bound, contact level and ultimate bounds of the configured V, proved as far as that can be done."""
     V = lyapunov_function(configuration, equilibrium)
+    rings = _rings(V, configuration, equilibrium)
+    bounds = _convergence(V, equilibrium)
+    missing = [f"No {ring.name}: {ring.note}." for ring in rings if not ring.level > 0]
+    note = " ".join([bounds.note, *missing, *_nominal(configuration, bounds)]).strip()
+    return Bounds(V, (*bounds.stated, *(ring for ring in rings if ring.level > 0)), note)
+
+
+def _rings(V: LyapunovFunction, configuration: Configuration, equilibrium: Equilibrium) -> list[Bound]:
+    """The ultimate bounds, where there are disturbances or a residual set is asked for."""
+    inner = configuration.bound.inner
+    if (inner is None and not V.loop.disturbances) or not _may_bound(V):
+        return []
+    ring = ultimate_bound(V, inner)
+    if inner is not None and ring.strength is not Strength.PROVED:
+        ring = ultimate_bound(V, None)  # what can be had in place of what was asked for
+    shape = best_ring_shape(V, equilibrium)
+    return [ring, *([] if shape is None else [ultimate_bound(shape, None, BEST)])]
+
+
+def _may_bound(V: LyapunovFunction) -> bool:
+    return not isinstance(V, Quadratic) or positive_definite(V.enclosed_P) == "proved"
+
+
+def _nominal(configuration: Configuration, bounds: Bounds) -> list[str]:
+    """Say of which loop the bounds are where there are disturbances."""
+    varying = configuration.loop.disturbances
+    if not varying or not bounds.stated:
+        return []
+    values = ", ".join(f"{name} = {configuration.loop.parameters[name].value}" for name in varying)
+    which = " and ".join(bound.name for bound in bounds.stated)
+    return [f"The {which} hold for the nominal {values} alone."]
+
+
+def _convergence(V: LyapunovFunction, equilibrium: Equilibrium) -> Bounds:
+    """The bounds within which all starts converge to the equilibrium."""
     if equilibrium.stability == "marginal":
         return Bounds(V, (), "The equilibrium has an eigenvalue on the imaginary axis: there is no certificate.")
+    if equilibrium.stability == "unstable":
+        return Bounds(V, (), "The equilibrium is unstable: nothing converges to it.")
     if isinstance(V, Quadratic) and positive_definite(V.enclosed_P) != "proved":
         return Bounds(V, (), "P is not positive definite by proof: it bounds nothing.")
     contact = contact_level(V)

@@ -102,7 +102,11 @@ class LevelProver:
             return Answer.UNDECIDED
         reach = float(np.nextafter(np.sqrt(np.nextafter(c / self._shape, np.inf)), np.inf))
         tape = Tape(self._n)
-        value, end = tape.loop(self._V.loop, self._states(tape))[side.name], tape.number(side.end)
+        varying = {
+            name: tape.interval(enclose_number(low)[0], enclose_number(high)[1])
+            for name, (low, high) in self._V.loop.disturbances.items()
+        }
+        value, end = tape.loop(self._V.loop, self._states(tape), varying)[side.name], tape.number(side.end)
         beyond = tape.subtract(value, end) if side.sign > 0 else tape.subtract(end, value)
         program = tape.program([beyond, self._value(tape)])
         cube, nowhere = np.full(self._n, reach), np.full(self._n, -1.0)

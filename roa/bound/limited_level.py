@@ -83,7 +83,7 @@ def _constant(tree: Expression, loop: Loop) -> Decimal | None:
     match tree:
         case Number(value):
             return value
-        case Name(name) if name in loop.parameters:
+        case Name(name) if name in loop.parameters and name not in loop.disturbances:
             return loop.parameters[name].value
         case Name(name) if name in loop.signals:
             return _constant(loop.signals[name], loop)

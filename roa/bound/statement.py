@@ -22,17 +22,18 @@ class Strength(StrEnum):
 
 @dataclass(frozen=True)
 class Bound:
-    """The set {V <= level}, said to lie in the basin.
+    """The set {V <= level}, said to lie in the basin, or (with `inner`) to lead into {V <= inner}.
 
     Attributes
     ----------
-    name : one of "norm bound", "contact level", "unfalsified level"
+    name : one of "norm bound", "contact level", "unfalsified level", "ultimate bound", "best ring"
     V : LyapunovFunction
     level : float, 0.0 where no level above zero was found
     strength : Strength
     note : str, one sentence that says what limits the level or on what it stands
     contact : float64 (n,), state units: the point that limits the level, where one is known
     level_estimated : where less could be proved than was found by floating-point search: what that found
+    inner : of an ultimate bound: every trajectory from {V <= level} enters {V <= inner}, for good; no more is said
     """
 
     name: str
@@ -42,3 +43,4 @@ class Bound:
     note: str = ""
     contact: NDArray[np.float64] | None = None
     level_estimated: float | None = None
+    inner: float | None = None

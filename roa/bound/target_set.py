@@ -14,7 +14,8 @@ from roa.bound.limited_level import LimitProver
 from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.norm_bound import norm_bound
-from roa.bound.statement import Bound
+from roa.bound.statement import Bound, Strength
+from roa.bound.ultimate_bound import NAME as ULTIMATE
 from roa.bound.volume import half_extents
 from roa.kernel.target import Target
 from roa.loop.configuration import Configuration
@@ -41,6 +42,8 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
     """
     loop, sweep = configuration.loop, configuration.sweep
     dwell = sweep.dwell if sweep.dwell is not None else TIME_CONSTANTS * equilibrium.slowest_time_constant
+    if configuration.bound.inner is not None:
+        return watching(_residual_set(configuration, equilibrium, bounds, dwell), elsewhere)
     best = bounds.largest_proved
     note = ""
     if best is None:
@@ -63,6 +66,32 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
         note=note,
     )
     return watching(alone, elsewhere)
+
+
+def _residual_set(configuration: Configuration, equilibrium: Equilibrium, bounds: Bounds, dwell: float) -> Target:
+    """The inner level set that is asked for, where it is proved to keep what enters it; else a ball."""
+    loop, sweep, ring = configuration.loop, configuration.sweep, bounds.named(ULTIMATE)
+    inner = float(configuration.bound.inner or 0)
+    proved = ring is not None and ring.strength is Strength.PROVED and (ring.inner or np.inf) <= inner < ring.level
+    note = "" if proved else "the inner level that is asked for is not proved"
+    if proved and ring and loop.limits and not (isinstance(ring.V, Quadratic) and LimitProver(ring.V).holds(inner)):
+        proved, note = False, "the inner level that is asked for is not proved to lie within the limits"
+    level = _safe_level(replace(ring, level=inner), exact=True) if proved and ring else 0.0
+    if ring is not None and proved and not _is_resolved(configuration, ring.V, level):
+        level, note = 0.0, "the inner level is proved but cannot be tested by the sweep, which takes only a quadratic V"
+        if isinstance(ring.V, Quadratic):
+            note = f"the inner level {inner:.3g} is too small for the integrator's tolerance to resolve"
+    return Target(
+        kind="level" if level > 0 else "ball",
+        centre=equilibrium.x,
+        half_widths=loop.half_widths,
+        P=ring.V.P if level > 0 and ring is not None and isinstance(ring.V, Quadratic) else None,
+        level=level,
+        radius=sweep.ball_radius,
+        dwell=float(min(dwell, sweep.horizon)),
+        note=note,
+        residual=level > 0,
+    )
 
 
 def watching(target: Target, elsewhere: Array) -> Target:
@@ -101,25 +130,27 @@ def _within_limits(best: Bound, note: str) -> tuple[Bound | None, str]:
     return lowered, "; ".join(words for words in (note, found) if words)
 
 
-def _safe_level(bound: Bound) -> float:
+def _safe_level(bound: Bound, exact: bool = False) -> float:
     """Lower a proved level to one that the sweep may test with floats.
 
     The proof is about the true equilibrium x* and the true P; the sweep tests fl((x - c)'P(x - c)) <= level
     with the float equilibrium c and P in floats. With d >= |x* - c| the triangle inequality in the norm of P,
     sqrt(V*(x)) <= sqrt(V(x)) + sqrt(λ_max(P)) d, takes care of the centre. Evaluating the form errs by at
     most some n^2 2^-53 |y|'|P||y| <= n^3 2^-53 λ_max |y|^2 and rounding P to floats by less, both relative to
-    V >= λ_min |y|^2: hence the condition number in the margin.
+    V >= λ_min |y|^2: hence the condition number in the margin. Where no equilibrium is proved, a ring (`exact`) is
+    about the float centre itself.
     """
     V = bound.V
     if not isinstance(V, Quadratic):
         return 0.0
     root = enclose_equilibrium(V.loop, V.centre)
     smallest, largest = smallest_eigenvalue(V.enclosed_P)[0], largest_eigenvalue(V.enclosed_P)[1]
-    if root is None or not smallest > 0:
+    if (root is None and not exact) or not smallest > 0:
         return 0.0
     n = V.loop.n
     margin = max(1e-12, 4 * n**3 * 2.3e-16 * largest / smallest)
-    reach = np.sqrt(bound.level) - np.sqrt(largest) * root.distance(V.centre)
+    away = 0.0 if root is None else root.distance(V.centre)
+    reach = np.sqrt(bound.level) - np.sqrt(largest) * away
     return float(reach**2 * (1 - margin)) if reach > 0 and margin < 1 else 0.0
 
 

@@ -179,10 +179,11 @@ class Tape:
                 return self._call(function, [self.expression(argument, names) for argument in arguments])
         raise AssertionError(tree)
 
-    def loop(self, loop: Loop, states: Iterable[int]) -> dict[str, int]:
-        """Rows of all names of a loop, with its states at the given rows."""
+    def loop(self, loop: Loop, states: Iterable[int], varying: Mapping[str, int] | None = None) -> dict[str, int]:
+        """Rows of all names of a loop, with its states, and parameters that vary, at the given rows."""
         names = dict(zip(loop.states, states, strict=True))
         names.update({name: self.number(parameter.value) for name, parameter in loop.parameters.items()})
+        names.update(varying or {})
         for name, tree in loop.signals.items():
             names[name] = self.expression(tree, names)
         return names

@@ -25,6 +25,7 @@ class Target:
         from the centre as at its entry
     elsewhere : float64 (k, n), other stable equilibria; each gets a ball of the same radius
     note : why this kind and size, where that needs saying
+    residual : whether the level is the inner one of a ring on which V decreases by proof, and nothing is known inside
     """
 
     kind: str
@@ -36,11 +37,17 @@ class Target:
     dwell: float = 0.0
     elsewhere: Array = field(default_factory=lambda: np.empty((0, 0)))
     note: str = ""
+    residual: bool = False
 
     @property
     def words(self) -> str:
         """What entering the target set means, in words and numbers: attribute `target` of the store."""
-        if self.kind == "level":
+        if self.residual:
+            entered = (
+                f"V <= {self.level:.6g}, a residual set: V decreases by proof on a ring about it, so that no "
+                "trajectory that is inside leaves it; none has to come to rest"
+            )
+        elif self.kind == "level":
             entered = f"V <= {self.level:.6g}, a level set in which V decreases by proof"
         else:
             entered = (

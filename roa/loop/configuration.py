@@ -51,6 +51,8 @@ class BoundTable(_Table):
     P : symmetric matrix; whether it is positive definite is for the verdict to say
     V, V_text : tree and text of a formula in states and parameters
     level : the claim {V <= level}, or None where nothing is claimed
+    inner : asks for a residual set: trajectories are to end in {V <= inner}, not at the equilibrium; None where they
+        are to converge
     """
 
     Q: Annotated[str | Matrix, BeforeValidator(_weights)] | None = None
@@ -58,11 +60,18 @@ class BoundTable(_Table):
     V: SkipValidation[Any] = None
     V_text: str | None = None
     level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    inner: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
 
     @model_validator(mode="before")
     @classmethod
     def _default_weights(cls, table: dict[str, Any]) -> dict[str, Any]:
         return table if table.keys() & {"Q", "P", "V"} else {"Q": "identity", **table}
+
+    @model_validator(mode="after")
+    def _inner_is_below(self) -> BoundTable:
+        if self.inner is not None and self.level is not None and not self.inner < self.level:
+            raise ValueError(f"inner = {self.inner} must be below level = {self.level}")
+        return self
 
 
 class SweepTable(_Table):
@@ -170,11 +179,15 @@ class Configuration:
             "limits": {
                 name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.limits.items())
             },
+            "disturbance": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
+            },
             "bound": {
                 "Q": _plain(bound.Q),
                 "P": _plain(bound.P),
                 "V": _plain(bound.V),
                 "level": _plain(bound.level),
+                "inner": _plain(bound.inner),
             },
             "sweep": self.sweep.model_dump(),
             "verdict": self.verdict.model_dump(),

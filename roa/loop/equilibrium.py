@@ -95,6 +95,17 @@ def require_within_limits(equilibrium: Equilibrium, loop: Loop, source: str) -> 
         raise UserError(faults)
 
 
+def require_given_V(configuration: Configuration, equilibrium: Equilibrium) -> None:
+    """Raise `UserError` where a residual set is asked for about an equilibrium that gives no V by itself."""
+    table = configuration.bound
+    if equilibrium.stability != "stable" and table.P is None and table.V is None:
+        raise UserError(
+            f"{configuration.source}: [bound]: the equilibrium {_point(configuration.loop, equilibrium.x)} is "
+            f"{equilibrium.stability}, with eigenvalues {eigenvalue_text(equilibrium.eigenvalues)} 1/s, so that no V "
+            "follows from Q; give P or V for the residual set that `inner` asks for"
+        )
+
+
 def eigenvalue_text(eigenvalues: NDArray[np.complex128]) -> str:
     """Write eigenvalues for a sentence, a conjugate pair as one: -0.5 ± 2i, -3."""
     words = []

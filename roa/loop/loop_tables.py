@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import keyword
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from decimal import Decimal
 from typing import Any
 
 from roa.loop import not_yet
+from roa.loop.disturbance_table import check_use, constants, read_disturbances
 from roa.loop.expression import FUNCTIONS, Expression
 from roa.loop.faults import Faults
 from roa.loop.formula import Vocabulary, parse
@@ -34,9 +35,12 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
     reader = _LoopTables(tables, faults)
     reader.check_names()
     units = reader.units()
-    parameters = reader.parameters()
-    signals = reader.signals(parameters)
-    dynamics = reader.dynamics(parameters)
+    parameters, disturbances = read_disturbances(tables.get("disturbance", {}), reader.parameters(), faults)
+    known = constants(parameters, disturbances)
+    signals = reader.signals([*parameters], known)
+    dynamics = reader.dynamics([*parameters], known)
+    if len(faults.found) == before:  # a faulty formula may be the one that uses it
+        check_use(disturbances, [*signals.values(), *dynamics.values()], [*tables.get("parameters", {})], faults)
     guess = reader.guess()
     domain = reader.domain(guess)
     limits = reader.limits()
@@ -53,6 +57,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
         domain=tuple(domain[name] for name in states),
         guess=tuple(guess.get(name, Decimal(0)) for name in states),
         limits=limits,
+        disturbances=disturbances,
     )
 
 
@@ -70,8 +75,10 @@ class _LoopTables:
 
     def check_names(self) -> None:
         owner: dict[str, str] = {}
-        for table in ("states", "parameters", "signals"):
+        for table in ("states", "parameters", "signals", "disturbance"):
             for name in self.table(table):
+                if table == "disturbance" and owner.get(name) == "parameters":
+                    continue  # a parameter that varies; its value there is the nominal one
                 if sentence := _name_fault(name):
                     self.faults.add(table, name, sentence)
                 elif name in owner:
@@ -117,20 +124,20 @@ class _LoopTables:
             self.faults.add(table, name, str(error), value)
             return otherwise
 
-    def signals(self, parameters: Mapping[str, Parameter]) -> dict[str, Expression]:
+    def signals(self, parameters: Sequence[str], known: Mapping[str, Decimal]) -> dict[str, Expression]:
         trees: dict[str, Expression] = {}
         above = [*self.states, *parameters]
         for name, text in self.table("signals").items():
             refused = {later: _too_early(name, later) for later in self.table("signals")}  # unless it stands above
-            tree = self._formula("signals", name, text, Vocabulary(above, _values(parameters), refused))
+            tree = self._formula("signals", name, text, Vocabulary(above, known, refused))
             if tree is not None:
                 trees[name] = tree
             above.append(name)
         return trees
 
-    def dynamics(self, parameters: Mapping[str, Parameter]) -> dict[str, Expression]:
+    def dynamics(self, parameters: Sequence[str], known: Mapping[str, Decimal]) -> dict[str, Expression]:
         trees: dict[str, Expression] = {}
-        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], _values(parameters))
+        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], known)
         for name, text in self._of_states("dynamics", "its time derivative", complete=True).items():
             tree = self._formula("dynamics", name, text, vocabulary)
             if tree is not None:
@@ -213,7 +220,3 @@ def _too_early(name: str, later: str) -> str:
     if later == name:
         return f'signal "{name}" uses itself; a signal may use only those above it'
     return f'signal "{later}" is defined further down; a signal may use only those above it'
-
-
-def _values(parameters: Mapping[str, Parameter]) -> dict[str, Decimal]:
-    return {name: parameter.value for name, parameter in parameters.items()}

@@ -39,6 +39,8 @@ class Loop:
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
     limits : mapping from state or signal to (low, high), exact decimals: values that must never be left
+    disturbances : names among the parameters that vary with time anywhere in an interval (low, high); the value of the
+        parameter is the nominal one, which is all that is simulated
     """
 
     title: str
@@ -50,6 +52,7 @@ class Loop:
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
     limits: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
+    disturbances: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
     @property
     def n(self) -> int:

@@ -7,7 +7,6 @@ from __future__ import annotations
 
 TABLES = {
     "hold": "sample-and-hold of signals by a digital controller",
-    "disturbance": "disturbances that vary in an interval",
     "tables": "look-up tables",
 }
 
@@ -16,7 +15,6 @@ KEYS = {
     ("bound", "ball"): "a claim in the form of a ball",
     ("bound", "scale"): "the scale of a claimed ball",
     ("bound", "search"): "the search for better bounds",
-    ("bound", "inner"): "the inner level of an ultimate bound",
     ("sweep", "accuracy"): "stopping at an accuracy of the share",
     ("sweep", "goal"): "a goal in place of a number of samples",
     ("sweep", "stop_outside"): "stopping outside by proof",

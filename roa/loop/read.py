@@ -24,9 +24,12 @@ from roa.loop.values import kind
 from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
-TABLES = ("states", "parameters", "signals", "dynamics", "equilibrium", "domain", "limits", "bound", "sweep", "verdict")
+TABLES = (
+    "states", "parameters", "signals", "dynamics", "equilibrium", "domain", "limits", "disturbance", "bound", "sweep",
+    "verdict",
+)  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
-BOUND_KEYS = ("Q", "P", "V", "level")
+BOUND_KEYS = ("Q", "P", "V", "level", "inner")
 
 TableT = TypeVar("TableT", bound=BaseModel)
 
@@ -164,7 +167,8 @@ def _bound_table(
     table = _checked("bound", BoundTable, rest, BOUND_KEYS, faults)
     if "V" in content:
         tree = _lyapunov_formula(content["V"], tables, loop, faults)
-        table = BoundTable(V=tree, V_text=content["V"], level=table.level) if table and tree else None
+        levels = {"level": table.level, "inner": table.inner} if table else {}
+        table = BoundTable(V=tree, V_text=content["V"], **levels) if table and tree else None
     if table and loop:
         _check_matrices(table, loop.n, faults)
     return table
@@ -174,12 +178,15 @@ def _lyapunov_formula(text: Any, tables: Mapping[str, Any], loop: Loop | None, f
     if not isinstance(text, str):
         faults.add("bound", "V", f"must be a formula in quotes, {kind(text)} found", text)
         return None
-    states, parameters = tables.get("states", {}), tables.get("parameters", {})
+    varying = tables.get("disturbance", {})
+    states = tables.get("states", {})
+    parameters = [name for name in tables.get("parameters", {}) if name not in varying]
     signals = {
         name: f'"{name}" is a signal; V is a formula in states and parameters: write the signal out'
         for name in tables.get("signals", {})
     }
-    constants = {name: parameter.value for name, parameter in loop.parameters.items()} if loop else {}
+    signals |= {name: f'"{name}" varies with time; V is a formula in states and constants' for name in varying}
+    constants = {name: loop.parameters[name].value for name in parameters} if loop else {}
     try:
         return parse(text, Vocabulary([*states, *parameters], constants, signals))
     except FormulaError as error:

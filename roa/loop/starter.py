@@ -39,11 +39,15 @@ speed = 0.0
 depth = [-2.0, 2.0]
 speed = [-0.8, 0.8]
 
+[disturbance]               # what varies with time anywhere in an interval; only proofs of an ultimate bound use it
+# drag = [35.0, 45.0]       # a parameter, or a new name whose nominal value is the middle
+
 [bound]                     # the Lyapunov function V
 Q = "identity"              # from A'P + PA = -Q; or "domain", or a matrix [[2, 0], [0, 1]]
 # P = [[1.0, 0.2], [0.2, 1.5]]              # or V = (x - x_eq)'P(x - x_eq) as given
 # V = "depth**2 + depth*speed + speed**2"   # or a formula in states and parameters, zero at the equilibrium
 # level = 0.05              # the claim that `roa validate` judges: {V <= level} lies in the basin
+# inner = 0.001             # or only: whatever starts in {V <= level} ends in {V <= inner} (dead zone, disturbance)
 
 [sweep]                     # the simulation
 design  = "sobol"           # or "grid"

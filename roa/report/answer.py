@@ -86,6 +86,8 @@ def _claim_sentence(verdict: Verdict) -> str:
     claim = verdict["claim"]
     named = f"the claimed set V ≤ {claim['level']:.12g}"
     match claim["result"]:
+        case "proved" if claim.get("inner"):
+            return f"Proved: every start in {named} enters V ≤ {claim['inner']:.12g} and stays there{_varying(claim)}."
         case "proved":
             return f"Proved: every start in {named} converges."
         case "supported":
@@ -98,7 +100,15 @@ def _claim_sentence(verdict: Verdict) -> str:
             return f"Refuted: the start {start} lies in {named} and {_ENDED[found['outcome']]} (simulated)."
         case "refuted":
             return f"Refuted: {named} is no bound."
+    if claim.get("inner"):
+        return f"Not settled: whether {named} leads into V ≤ {claim['inner']:.12g}{_varying(claim)} is not proved."
     return f"Not settled: whether {named} lies in the basin is neither proved, supported nor refuted."
+
+
+def _varying(claim: Mapping[str, Any]) -> str:
+    """Under which disturbances the claim is meant."""
+    each = [f"{name} in [{low:g}, {high:g}]" for name, (low, high) in claim["disturbance"].items()]
+    return f", whatever {in_a_row(each)} does" if each else ""
 
 
 _ENDED = {"escaped": "escapes", "settled_elsewhere": "comes to rest at another equilibrium"}
@@ -106,6 +116,8 @@ _ENDED = {"escaped": "escapes", "settled_elsewhere": "comes to rest at another e
 
 def _claim_standing(verdict: Verdict) -> str:
     claim = verdict["claim"]
+    if claim["result"] == "proved" and claim.get("inner"):
+        return str(claim["reason"])
     if claim["result"] == "proved":
         return _compared(verdict) or str(claim["reason"])
     if claim["result"] == "supported" and claim["decrease"] != "refuted":

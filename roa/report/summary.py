@@ -39,6 +39,10 @@ def _bounds(verdict: Verdict) -> str:
         return ""
     lines = [f"{'Bounds {V ≤ c}':<19}{'level c':>13}{'volume':>12}{'radius':>12}   strength of the level"]
     lines += [f"  {row.name:<17}{row.level:>13}{row.volume:>12}{row.radius:>12}   {row.strength}" for row in rows]
+    for bound in verdict["bounds"]:
+        if bound.get("inner"):
+            words = f"{bound['name']}: what starts in V ≤ {bound['level']:.6g} ends in V ≤ {bound['inner']:.6g}"
+            lines += wrap(f"{words} ({bound['strength']})", WIDTH, initial_indent="  ", subsequent_indent="    ")
     if verdict["basin"]:
         lines.append("  Volume and radius in parts of those of the simulated basin (simulated).")
     lines += wrap(verdict["bounds_note"], WIDTH, initial_indent="  ", subsequent_indent="  ")

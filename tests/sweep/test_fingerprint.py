@@ -60,7 +60,7 @@ def test_every_field_of_the_target_that_decides_counts():
         "kind": "level", "centre": np.full(2, 1e-300), "half_widths": np.full(2, 2.0), "P": np.eye(2), "level": 1.0,
         "radius": 2e-3, "dwell": 6.0, "elsewhere": np.ones((1, 2)),
     }  # fmt: skip
-    assert {*others, "note"} == set(Target.__dataclass_fields__)  # the note is words alone
+    assert {*others, "note", "residual"} == set(Target.__dataclass_fields__)  # these two are words alone
     for name, value in others.items():
         parts = fingerprint.target_parts(replace(target, **{name: value}))
         lines = fingerprint.differences(fingerprint.target_parts(target), parts)
