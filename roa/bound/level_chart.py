@@ -24,7 +24,7 @@ from roa.loop.model import Loop
 Array = NDArray[np.float64]
 
 RAYS, MARCH = 2048, 128  # rays from the equilibrium, and points on each, that size up the set of a formula
-MARGINS = (1.02, 1.1, 1.3, 1.7)  # sizes of the boxes that are tried about it
+MARGINS = (1.0005, 1.02, 1.1, 1.3, 1.7)  # sizes of the boxes that are tried about it
 INSET = 1e-9  # half-widths; how far inside the domain a box ends that would reach its faces
 FACE_BOXES = 20_000  # most boxes for V > c on one face
 
