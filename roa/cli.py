@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any, NoReturn
 
 from roa import __version__
 from roa.errors import RoaError
+from roa.interruption import watched
 
 if TYPE_CHECKING:
     from roa.verbs import Result
@@ -20,7 +21,7 @@ if TYPE_CHECKING:
 USAGE_ERROR, MACHINE_FAILED, INTERRUPTED = 2, 4, 130
 
 # Part of the contract, refused by name until it is there.
-NOT_YET = ("status", "--cluster", "--hours")
+NOT_YET = ("status", "--cluster")
 
 EXIT_CODES = """\
 exit codes
@@ -52,13 +53,14 @@ def main(arguments: Sequence[str] | None = None) -> int:
     options = vars(_parser().parse_args(given))
     verb, as_json, quiet = options.pop("verb"), options.pop("json"), options.pop("quiet")
     try:
-        result = _call(verb, options, quiet, shlex.join(["roa", *given]))
+        with watched():
+            result = _call(verb, options, quiet, shlex.join(["roa", *given]))
     except RoaError as error:
         for fault in error.faults:
             print(f"roa: {fault}", file=sys.stderr)
         return error.exit_code
-    except KeyboardInterrupt:
-        print("roa: interrupted", file=sys.stderr)
+    except KeyboardInterrupt as interruption:
+        print(f"roa: {str(interruption) or 'interrupted'}", file=sys.stderr)
         return INTERRUPTED
     except OSError as error:
         print(f"roa: the machine failed: {error}", file=sys.stderr)
@@ -73,6 +75,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
         )
         return MACHINE_FAILED
     _print(json.dumps(result.document, indent=1, ensure_ascii=False) + "\n" if as_json else result.text)
+    if result.note:
+        print(f"roa: {result.note}", file=sys.stderr)
     return result.exit_code
 
 
@@ -117,22 +121,23 @@ def _parser() -> argparse.ArgumentParser:
 
     config: dict[str, Any] = {"metavar": "CONFIG", "help": "configuration file (TOML)"}
     folder: dict[str, Any] = {"metavar": "RUN", "help": "folder of a run"}
+    means = ("--jobs", "--hours", "--executor")
     verb("init", "write a commented configuration to start from").add_argument("file", metavar="FILE")
     verb("check", "is it sound, and what will it cost", "--samples", "--seed", "--jobs").add_argument(
         "config", **config
     )
     for name, text in (("run", "the whole job: bound, sweep, comparison, figures, report, verdict"),
                        ("sweep", "the simulation alone")):  # fmt: skip
-        verb(name, text, "--out", "--samples", "--seed", "--jobs").add_argument("config", **config)
-    verb("bound", "the analytic estimates alone", "--out", "--seed").add_argument("config", **config)
-    verb("validate", "judge the claimed bound", "--out", "--seed").add_argument("config", **config)
-    verb("resume", "carry on a sweep that stopped, or extend one", "--samples", "--jobs").add_argument("run", **folder)
-    replay = verb("replay", "integrate one start again by an independent integrator")
+        verb(name, text, "--out", "--samples", "--seed", *means).add_argument("config", **config)
+    verb("bound", "the analytic estimates alone", "--out", "--seed", "--jobs").add_argument("config", **config)
+    verb("validate", "judge the claimed bound", "--out", "--seed", "--jobs").add_argument("config", **config)
+    verb("resume", "carry on a sweep that stopped, or extend one", "--samples", *means).add_argument("run", **folder)
+    replay = verb("replay", "integrate one start again by an independent integrator", "--jobs")
     replay.add_argument("source", metavar="RUN|CONFIG", help="a run with INDEX, or a configuration with --from")
     which = replay.add_mutually_exclusive_group(required=True)
     which.add_argument("index", metavar="INDEX", type=int, nargs="?", help="number of a stored start")
     which.add_argument("--from", dest="start", metavar="STATE=VALUE,…", help="any start, every state named")
-    overlay = verb("overlay", "draw the figures of a run again, or two runs in one picture")
+    overlay = verb("overlay", "draw the figures of a run again, or two runs in one picture", "--jobs")
     overlay.add_argument("run", **folder)
     overlay.add_argument("other", metavar="RUN2", nargs="?", help="a second run, to be drawn against the first")
     overlay.add_argument("--states", metavar="A,B", help="the pair of states that is shown")
@@ -157,12 +162,29 @@ def _whole(low: int, high: int, words: str) -> Callable[[str], int]:
     return read
 
 
+def _hours(text: str) -> float:
+    with suppress(ValueError):
+        if 0 < float(text) < float("inf"):
+            return float(text)
+    raise argparse.ArgumentTypeError(f"must be a number above 0, such as 7.5, '{text}' found")
+
+
 _OPTIONS: dict[str, dict[str, Any]] = {
     "--out": {"metavar": "DIR", "help": "the run folder itself (default: results/<configuration>-<date>-<time>)"},
     "--jobs": {
         "metavar": "N",
         "type": _whole(1, 4096, "from 1 to 4096"),
         "help": "workers (default: the processors this process may use)",
+    },
+    "--hours": {
+        "metavar": "H",
+        "type": _hours,
+        "help": "stop in time, with the statistics of what is done and exit code 130",
+    },
+    "--executor": {
+        "metavar": "NAME",
+        "choices": ("serial", "threads", "processes", "cluster"),
+        "help": "how blocks are spread: serial, threads, processes, cluster (default: threads)",
     },
     "--samples": {
         "metavar": "N",

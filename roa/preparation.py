@@ -12,13 +12,17 @@ from typing import TYPE_CHECKING, Any
 from roa.errors import UserError
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Callable, Mapping
+
+    import numpy as np
+    from numpy.typing import NDArray
 
     from roa.basin.claim import Claim
     from roa.bound.bounds import Bounds
     from roa.kernel.integration import Integration
     from roa.kernel.lanes import Lanes
     from roa.kernel.target import Target
+    from roa.kernel.trajectories import Trajectories
     from roa.loop.configuration import Configuration
     from roa.loop.equilibrium import Equilibrium
     from roa.report.evidence import Evidence
@@ -36,6 +40,7 @@ class Preparation:
     configuration : Configuration
     samples, seed : in place of the configuration's, where given
     progress : told what takes a while
+    jobs : threads for what is simulated beside the sweep; None for as many as this process may use processors
     target : that of a stored run, which is then not derived again
 
     Raises
@@ -51,6 +56,7 @@ class Preparation:
         seed: int | None,
         progress: Progress | None = None,
         target: Target | None = None,
+        jobs: int | None = None,
     ) -> None:
         from roa.loop.equilibrium import check_V, find_equilibrium, require_given_V, require_stable
         from roa.sweep.progress import Progress
@@ -58,7 +64,7 @@ class Preparation:
         _require_files(configuration)
         self.configuration = configuration
         self.progress = progress or Progress()
-        self._samples, self._seed, self._stored_target = samples, seed, target
+        self._samples, self._seed, self._stored_target, self._jobs = samples, seed, target, jobs
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
         if configuration.bound.inner is None:
             require_stable(self.equilibrium, configuration.loop, configuration.source)
@@ -125,6 +131,17 @@ class Preparation:
 
         return compile_lanes(self.configuration.loop, self.target, self.integration)
 
+    @cached_property
+    def simulate(self) -> Callable[[NDArray[np.float64]], Trajectories]:
+        """Integrate any starts, float64 (m, n), on all jobs, by kernel calls of about a second."""
+        return self._on_all_jobs(self.lanes)
+
+    def _on_all_jobs(self, lanes: Lanes) -> Callable[[NDArray[np.float64]], Trajectories]:
+        from roa.sweep.executors.threads import cpu_count
+        from roa.sweep.portions import Portions, side_by_side
+
+        return side_by_side(Portions(lanes.run).all, self._jobs or cpu_count())
+
     @property
     def seed(self) -> int:
         """Seed of the design and of every search."""
@@ -140,7 +157,7 @@ class Preparation:
         loose = self.integration
         tight = replace(loose, rtol=loose.rtol / 10, atol=loose.atol / 10)
         tighter = compile_lanes(self.configuration.loop, self.target, tight)
-        return Evidence(self.configuration, verdict, samples, self.lanes.run, tighter.run)
+        return Evidence(self.configuration, verdict, samples, self.simulate, self._on_all_jobs(tighter))
 
     def claim(self) -> Claim | None:
         """Judge the claimed level, where there is one."""
@@ -148,7 +165,7 @@ class Preparation:
             return None
         from roa.basin.claim import judge
 
-        return judge(self.configuration, self.bounds, self.target, self.integration, self.lanes.run, self.seed)
+        return judge(self.configuration, self.bounds, self.target, self.integration, self.simulate, self.seed)
 
 
 def _require_files(configuration: Configuration) -> None:

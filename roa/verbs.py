@@ -8,16 +8,18 @@ from __future__ import annotations
 
 import json
 import shlex
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from roa.errors import MachineError, UserError
+from roa.errors import Interrupted, MachineError, UserError
+from roa.interruption import resumable_by
 
 if TYPE_CHECKING:
     from roa.loop.configuration import Configuration
     from roa.preparation import Preparation
     from roa.report.evidence import Evidence
+    from roa.sweep.means import Means
     from roa.sweep.progress import Progress
     from roa.sweep.run_folder import RunFolder
     from roa.sweep.samples import Samples
@@ -31,14 +33,16 @@ class Result:
     ----------
     text : for people, answer first
     document : for programs, as it stands in `verdict.json` where there is one
-    exit_code : 0 done, 1 refuted or in disagreement, 3 not settled
+    exit_code : 0 done, 1 refuted or in disagreement, 3 not settled, 130 out of time
     folder : where it is written, None where nothing is
+    note : what is to be said on standard error whatever is printed, such as how to carry on
     """
 
     text: str
     document: dict[str, Any] = field(default_factory=dict)
     exit_code: int = 0
     folder: Path | None = None
+    note: str = ""
 
 
 def init(file: str | Path) -> Result:
@@ -73,60 +77,68 @@ def check(
 
 def run(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
-    seed: int | None = None, progress: Progress | None = None, command: str = "roa.run",
+    seed: int | None = None, hours: float | None = None, cluster: str | None = None, executor: str | None = None,
+    progress: Progress | None = None, command: str = "roa.run",
 ) -> Result:  # fmt: skip
     """Do the whole job: bound, sweep, comparison, figures, report, verdict."""
-    prepared, folder = _sweep(config, out, jobs, samples, seed, progress)
-    return _conclude(prepared, folder, command, jobs, figures=True)
+    from roa.sweep.means import Means
+
+    means = Means.granted(jobs, hours, cluster, executor, command)
+    return _swept(config, out, samples, seed, means, progress, figures=True)
 
 
 def sweep(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
-    seed: int | None = None, progress: Progress | None = None, command: str = "roa.sweep",
+    seed: int | None = None, hours: float | None = None, cluster: str | None = None, executor: str | None = None,
+    progress: Progress | None = None, command: str = "roa.sweep",
 ) -> Result:  # fmt: skip
     """Do the simulation alone, with its counts and the bounds that it took its target set from."""
-    prepared, folder = _sweep(config, out, jobs, samples, seed, progress)
-    return _conclude(prepared, folder, command, jobs, figures=False)
+    from roa.sweep.means import Means
+
+    means = Means.granted(jobs, hours, cluster, executor, command)
+    return _swept(config, out, samples, seed, means, progress, figures=False)
 
 
 def resume(
-    run: str | Path, samples: int | None = None, jobs: int | None = None, progress: Progress | None = None,
+    run: str | Path, samples: int | None = None, jobs: int | None = None, hours: float | None = None,
+    cluster: str | None = None, executor: str | None = None, progress: Progress | None = None,
     command: str = "roa.resume",
 ) -> Result:  # fmt: skip
     """Carry on a sweep that stopped, or extend one that is done, then conclude it as `run` does."""
-    from roa.sweep.launch import launch
+    from roa.sweep.means import Means
 
-    prepared, folder = _stored(run, samples, progress)
-    launch(prepared.plan, folder, jobs, progress)
-    return _conclude(prepared, folder, command, jobs, figures=True)
+    means = Means.granted(jobs, hours, cluster, executor, command)
+    with resumable_by(f"roa resume {shlex.quote(str(run))}"):
+        prepared, folder = _stored(run, samples, progress, jobs=jobs)
+        return _launched(prepared, folder, means, progress, figures=True)
 
 
 def bound(
-    config: str | Path, out: str | Path | None = None, seed: int | None = None, progress: Progress | None = None,
-    command: str = "roa.bound",
+    config: str | Path, out: str | Path | None = None, seed: int | None = None, jobs: int | None = None,
+    progress: Progress | None = None, command: str = "roa.bound",
 ) -> Result:  # fmt: skip
     """Derive the analytic estimates alone, without a simulation."""
     from roa.basin.provenance import provenance
     from roa.basin.verdict import conclude
 
     folder = _new_folder(config, out)
-    prepared = _prepare(config, None, seed, progress)
+    prepared = _prepare(config, None, seed, progress, jobs)
     verdict = conclude(
-        prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed)
+        prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed, jobs=jobs)
     )
     return _written(prepared.configuration, verdict, folder, 0)
 
 
 def validate(
-    config: str | Path, out: str | Path | None = None, seed: int | None = None, progress: Progress | None = None,
-    command: str = "roa.validate",
+    config: str | Path, out: str | Path | None = None, seed: int | None = None, jobs: int | None = None,
+    progress: Progress | None = None, command: str = "roa.validate",
 ) -> Result:  # fmt: skip
     """Judge the claimed bound: prove it, break it, or say how far it is supported."""
     from roa.basin.provenance import provenance
     from roa.basin.verdict import conclude, exit_code
 
     folder = _new_folder(config, out)
-    prepared = _prepare(config, None, seed, progress)
+    prepared = _prepare(config, None, seed, progress, jobs)
     configuration = prepared.configuration
     if configuration.bound.level is None:
         raise UserError(
@@ -137,7 +149,7 @@ def validate(
         configuration,
         prepared.equilibrium,
         prepared.bounds,
-        provenance(command, prepared.seed),
+        provenance(command, prepared.seed, jobs=jobs),
         target=prepared.target,
         claim=claim,
     )
@@ -145,8 +157,9 @@ def validate(
 
 
 def replay(
-    source: str | Path, index: int | None = None, start: str | None = None, progress: Progress | None = None
-) -> Result:
+    source: str | Path, index: int | None = None, start: str | None = None, jobs: int | None = None,
+    progress: Progress | None = None,
+) -> Result:  # fmt: skip
     """Integrate one start again by an independent integrator: a stored one, or any start of a configuration.
 
     Parameters
@@ -159,16 +172,16 @@ def replay(
     from roa.report.replay_text import replay_document, replay_text
 
     if index is not None:
-        prepared, folder = _stored(source, None, progress)
+        prepared, folder = _stored(source, None, progress, jobs=jobs)
         samples = _samples_of(folder)
         if not 0 <= index < samples.n:
             raise UserError(f"{source}: has no sample {index}; it holds 0 to {samples.n - 1}")
         found = replay_stored(samples, index, prepared.configuration.loop, prepared.target, prepared.integration)
     else:
-        prepared = _prepare(source, None, None, progress)
+        prepared = _prepare(source, None, None, progress, jobs)
         point = _start_of(prepared.configuration, start or "")
         found = replay_start(
-            point, prepared.lanes.run, prepared.configuration.loop, prepared.target, prepared.integration
+            point, prepared.simulate, prepared.configuration.loop, prepared.target, prepared.integration
         )
     loop = prepared.configuration.loop
     return Result(replay_text(found, loop), replay_document(found, loop), 0 if found.agrees else 1)
@@ -177,7 +190,7 @@ def replay(
 def overlay(
     run: str | Path, other: str | Path | None = None, states: str | None = None, at: str | None = None,
     only: str | None = None, formats: str | None = None, dpi: int | None = None, rising: bool = False,
-    progress: Progress | None = None,
+    jobs: int | None = None, progress: Progress | None = None,
 ) -> Result:  # fmt: skip
     """Draw the figures of a run again, from what is stored; or two runs in one picture.
 
@@ -196,24 +209,24 @@ def overlay(
     from roa.report.save import read_formats
     from roa.report.view import read_view
 
-    first = evidence(run, progress)
+    first = evidence(run, progress, jobs)
     view = read_view(first.loop, states, at, rising)
     seen = first.seen(view.pair, view.at(first.equilibrium), rising)
     folder, kinds = _existing(run), read_formats(formats)
     if other is not None:
         names = _existing(run).path.name, _existing(other).path.name
-        files = draw_difference(folder.figures, seen, evidence(other, progress), names, kinds, dpi)
+        files = draw_difference(folder.figures, seen, evidence(other, progress, jobs), names, kinds, dpi)
     else:
         wanted = [name.strip() for name in only.split(",")] if only else []
         files = draw_figures(folder.figures, seen, wanted, kinds, dpi, view.suffix(first.loop))
     return Result("\n".join(str(file) for file in files), {"figures": [str(file) for file in files]}, 0, folder.path)
 
 
-def evidence(run: str | Path, progress: Progress | None = None) -> Evidence:
+def evidence(run: str | Path, progress: Progress | None = None, jobs: int | None = None) -> Evidence:
     """Open a run for its figures: `roa.report.figures` holds the functions that draw it into axes of your own."""
     folder = _existing(run)
     verdict = _verdict_of(folder)
-    prepared = _stored(run, None, progress, with_target=True)[0]
+    prepared = _stored(run, None, progress, with_target=True, jobs=jobs)[0]
     return prepared.evidence(verdict, _samples_of(folder))
 
 
@@ -227,23 +240,38 @@ def report(run: str | Path) -> Result:
     return Result(str(folder.report), {"report": str(folder.report)}, 0, folder.path)
 
 
-def _prepare(config: str | Path, samples: int | None, seed: int | None, progress: Progress | None) -> Preparation:
+def _prepare(
+    config: str | Path, samples: int | None, seed: int | None, progress: Progress | None, jobs: int | None = None
+) -> Preparation:
     from roa.loop.read import read
     from roa.preparation import Preparation
 
-    return Preparation(read(Path(config)), samples, seed, progress)
+    return Preparation(read(Path(config)), samples, seed, progress, jobs=jobs)
 
 
-def _sweep(
-    config: str | Path, out: str | Path | None, jobs: int | None, samples: int | None, seed: int | None,
-    progress: Progress | None,
-) -> tuple[Preparation, RunFolder]:  # fmt: skip
+def _swept(
+    config: str | Path, out: str | Path | None, samples: int | None, seed: int | None, means: Means,
+    progress: Progress | None, figures: bool,
+) -> Result:  # fmt: skip
+    folder = _new_folder(config, out)
+    prepared = _prepare(config, samples, seed, progress, means.jobs)
+    return _launched(prepared, folder, means, progress, figures)
+
+
+def _launched(
+    prepared: Preparation, folder: RunFolder, means: Means, progress: Progress | None, figures: bool
+) -> Result:
+    """Sweep what is missing and conclude; where the time ran out, what is done, as a partial sweep."""
     from roa.sweep.launch import launch
 
-    folder = _new_folder(config, out)
-    prepared = _prepare(config, samples, seed, progress)
-    launch(prepared.plan, folder, jobs, progress)
-    return prepared, folder
+    plan = prepared.plan
+    with resumable_by(folder.resume_command), folder.locked():
+        complete = launch(plan, folder, means, progress)
+        result = _conclude(prepared, folder, means.command, means.jobs, figures)
+    if complete:
+        return result
+    note = f"the granted time is over and the sweep partial; carry on with `{folder.resume_command}`"
+    return replace(result, exit_code=Interrupted.exit_code, note=note)
 
 
 def _existing(run: str | Path) -> RunFolder:
@@ -253,7 +281,7 @@ def _existing(run: str | Path) -> RunFolder:
 
 
 def _stored(
-    run: str | Path, samples: int | None, progress: Progress | None, with_target: bool = False
+    run: str | Path, samples: int | None, progress: Progress | None, with_target: bool = False, jobs: int | None = None
 ) -> tuple[Preparation, RunFolder]:
     """Prepare a run again from its own folder, with the seed and the samples that it was begun with.
 
@@ -268,15 +296,19 @@ def _stored(
     header = Header.read(folder.plan)
     configuration = read_text(header.config, str(folder.config))
     target = target_of(header.fingerprint_parts) if with_target else None
-    return Preparation(configuration, samples or header.samples, header.seed, progress, target), folder
+    return Preparation(configuration, samples or header.samples, header.seed, progress, target, jobs), folder
 
 
 def _samples_of(folder: RunFolder) -> Samples:
-    from roa.sweep.store import open_samples
+    """Open what is stored: all samples of a sweep that is done, else its longest complete prefix."""
+    from roa.sweep.finished import open_partial
 
-    if not folder.sweep.exists():
-        raise UserError(f"{folder.path}: the sweep is not finished; carry it on with `{folder.resume_command}`")
-    return open_samples(folder.sweep)
+    samples = open_partial(folder)
+    if not samples.n:
+        raise Interrupted(
+            f"{folder.path}: no block of the sweep is finished yet; carry it on with `{folder.resume_command}`"
+        )
+    return samples
 
 
 def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int | None, figures: bool) -> Result:

@@ -20,17 +20,19 @@ def toml(
     parameters: Mapping[str, float] | None = None,
     signals: Mapping[str, str] | None = None,
     equilibrium: Mapping[str, float] | None = None,
+    hold: str = "",
     bound: str = "",
     sweep: str = "",
     verdict: str = "",
 ) -> str:
-    """Write a configuration; `bound`, `sweep` and `verdict` are lines of those tables."""
+    """Write a configuration; `hold`, `bound`, `sweep` and `verdict` are lines of those tables."""
     lines = ['title = "a loop of the tests"', "[states]", *(f'{s} = "1"' for s in states)]
     lines += ["[parameters]", *(f"{name} = {value!r}" for name, value in (parameters or {}).items())]
     lines += ["[signals]", *(f'{name} = "{text}"' for name, text in (signals or {}).items())]
     lines += ["[dynamics]", *(f'{s} = "{text}"' for s, text in zip(states, dynamics, strict=True))]
     lines += ["[equilibrium]", *(f"{name} = {value!r}" for name, value in (equilibrium or {}).items())]
     lines += ["[domain]", *(f"{s} = [{low!r}, {high!r}]" for s, (low, high) in zip(states, domain, strict=True))]
+    lines += ["[hold]", hold] if hold else []
     return "\n".join([*lines, "[bound]", bound, "[sweep]", sweep, "[verdict]", verdict, ""])
 
 
@@ -95,5 +97,42 @@ def capture_point(w: float = 3.0, k: float = 5.0, limit: float = 2.0, **keywords
         ["x2", "w**2*x1 - clip(k*w*(w*x1 + x2), -U, U)"],
         [(-1.0, 1.0)] * 2,
         parameters={"w": w, "k": k, "U": limit},
+        **keywords,  # type: ignore[arg-type]
+    )
+
+
+def sampled_saturation(period: float, delay: float = 0.0, **keywords: str) -> Configuration:
+    """x' = x + u with u = -sat(3 x) sampled: without delay the basin is |x| < 1 for every period below ln 2, and the
+    rest is unstable above it; with a delay of one period it is unstable above ln(4/3) (computed independently)."""
+    return configuration(
+        "x",
+        ["x + u"],
+        [(-1.5, 1.5)],
+        signals={"u": "clip(-3*x, -1, 1)"},
+        hold=f'signals = ["u"]\nperiod = {period!r}\ndelay = {delay!r}',
+        **keywords,  # type: ignore[arg-type]
+    )
+
+
+def sampled_double_integrator(period: float, delay: float = 0.0, **keywords: str) -> Configuration:
+    """x'' = clip(-x - 1.5 x'), sampled; the position of a thruster-driven carriage."""
+    return configuration(
+        "xv",
+        ["v", "u"],
+        [(-3.0, 3.0)] * 2,
+        signals={"demand": "-x - 1.5*v", "u": "clip(demand, -1, 1)"},
+        hold=f'signals = ["u"]\nperiod = {period!r}\ndelay = {delay!r}',
+        **keywords,  # type: ignore[arg-type]
+    )
+
+
+def sampled_pendulum(period: float, delay: float = 0.0, **keywords: str) -> Configuration:
+    """The upright pendulum th'' = 4 sin th - 0.3 th' + clip(-10 th - 4 th', -2.5, 2.5) with its torque sampled."""
+    return configuration(
+        ["angle", "rate"],
+        ["rate", "4*sin(angle) - 0.3*rate + torque"],
+        [(-1.2, 1.2), (-3.0, 3.0)],
+        signals={"demand": "-10*angle - 4*rate", "torque": "clip(demand, -2.5, 2.5)"},
+        hold=f'signals = ["torque"]\nperiod = {period!r}\ndelay = {delay!r}',
         **keywords,  # type: ignore[arg-type]
     )

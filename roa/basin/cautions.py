@@ -38,9 +38,15 @@ def _of_the_disturbances(configuration: Configuration) -> list[str]:
 def _of_the_loop(equilibrium: Equilibrium, target: Target | None) -> list[str]:
     found = []
     if equilibrium.stability == "marginal":
+        where = "multiplier on the unit circle" if equilibrium.sampled else "eigenvalue on the imaginary axis"
         found.append(
-            "The linearisation has an eigenvalue on the imaginary axis: it gives no certificate, and convergence is "
-            "judged by simulation alone."
+            f"The linearisation has a{'' if equilibrium.sampled else 'n'} {where}: it gives no certificate, and "
+            "convergence is judged by simulation alone."
+        )
+    if equilibrium.sampled is not None:
+        found.append(
+            "The loop is sampled: its stability is that of one period, the eigenvalues are those that it would have "
+            "with every signal continuous, and nothing that rests on a continuous V̇ is stated."
         )
     if target is not None and target.kind == "ball":
         found.append(f"No target set is proved, so that a trajectory converged means: it entered {target.words}.")

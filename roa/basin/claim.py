@@ -28,10 +28,9 @@ from roa.basin.intervals import clopper_pearson_upper, success_run_samples
 from roa.basin.ring_attempt import attempt_ring
 from roa.bound.bounds import Bounds
 from roa.bound.invariance_proof import prove_by_invariance
-from roa.bound.level_proof import LevelProver
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
-from roa.bound.proved_contact_level import branch_and_bound, proof_budget
+from roa.bound.proved_contact_level import branch_and_bound, proof_budget, prover_of
 from roa.bound.statement import Bound, Strength
 from roa.kernel.branch_and_bound import Answer
 from roa.kernel.integration import Integration
@@ -164,8 +163,11 @@ class _Case:
 
     @cached_property
     def witness(self) -> Array | None:
-        """A point of the set with V̇ > 0, if one was found; not looked for where a ring is all that is claimed."""
-        if self.configuration.bound.inner is not None:
+        """A point of the set with V̇ > 0, if one was found.
+
+        Not looked for where a ring is all that is claimed, nor with a hold, where V̇ means nothing.
+        """
+        if self.configuration.bound.inner is not None or self.configuration.loop.hold is not None:
             return None
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
 
@@ -241,14 +243,17 @@ def _leaves_the_domain(case: _Case) -> Claim | None:
 def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     """Prove the claim by a bound that is proved already, or by branch and bound at the very level."""
     for bound in bounds.stated:
-        if bound.strength is Strength.PROVED and level <= Decimal(bound.level):
+        same = bound.V is case.claimed.V and bound.inner is None
+        if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
             return case.judged(Result.PROVED, Decrease.PROVED, reason)
+    if case.configuration.loop.hold is not None:  # a continuous V̇ never proves a sampled loop
+        return None
     V, contact = case.claimed.V, bounds.named("contact level")
     # Above the estimate, which errs upwards only, there are points with V̇ >= 0 and no proof to be had.
-    if not isinstance(V, Quadratic) or contact is None or level > Decimal(contact.level_estimated or contact.level):
+    if contact is None or level > Decimal(contact.level_estimated or contact.level):
         return None
-    prover = LevelProver(V)
+    prover = prover_of(V)
     if not prover.is_ready:
         return None
     proof = prover.prove(level, proof_budget(prover))

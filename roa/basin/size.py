@@ -30,7 +30,7 @@ class Basin:
     counts : by outcome word, every outcome listed
     by_outcome : share of the samples with each outcome that occurred, by its word
     reasons : by reason word, only those that occurred
-    partial : whether the sweep is to have more samples than these
+    wanted : number of starts that the sweep is to have
     confidence : of the intervals, two-sided
     loop : Loop
     """
@@ -39,7 +39,7 @@ class Basin:
     counts: Mapping[str, int]
     by_outcome: Mapping[str, Share]
     reasons: Mapping[str, int]
-    partial: bool
+    wanted: int
     confidence: float
     loop: Loop
 
@@ -47,6 +47,11 @@ class Basin:
     def samples(self) -> int:
         """Number of starts."""
         return self.share.samples
+
+    @property
+    def partial(self) -> bool:
+        """Whether the sweep is to have more samples than these."""
+        return self.samples < self.wanted
 
     @property
     def fraction(self) -> float:
@@ -98,7 +103,7 @@ def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
         counts={outcome.word: int(one.hits.sum()) for outcome, one in by_outcome.items()},
         by_outcome={outcome.word: one for outcome, one in by_outcome.items() if one.hits.any()},
         reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
-        partial=samples.partial,
+        wanted=samples.wanted,
         confidence=confidence,
         loop=loop,
     )

@@ -9,7 +9,7 @@ import numpy as np
 
 from roa.bound.contact_level import contact_level
 from roa.bound.exact_quadratic import exact_quadratic
-from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
+from roa.bound.lyapunov_equation import solve_lyapunov, solve_sampled_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import FormulaV, LyapunovFunction, Quadratic
 from roa.bound.norm_bound import norm_bound
 from roa.bound.point_checks import positive_definite
@@ -47,7 +47,10 @@ class Bounds:
 
 
 def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) -> LyapunovFunction:
-    """V as configured: P from the Lyapunov equation, or P, or a formula; a formula that is a quadratic becomes one."""
+    """V as configured: P from the Lyapunov equation, or P, or a formula; a formula that is a quadratic becomes one.
+
+    With a hold the equation is that of the sampled map.
+    """
     loop, table = configuration.loop, configuration.bound
     if table.V is not None:
         formula = FormulaV(loop, equilibrium.x, table.V, table.V_text or "")
@@ -58,6 +61,8 @@ def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) ->
     if equilibrium.stability == "marginal":
         return Quadratic(loop, equilibrium.x, np.diag(loop.half_widths**-2.0))
     Q = weight_matrix(table.Q or "identity", loop)
+    if equilibrium.sampled is not None:
+        return Quadratic(loop, equilibrium.x, solve_sampled_lyapunov(equilibrium.sampled, Q)[: loop.n, : loop.n])
     return Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, Q))
 
 
@@ -74,7 +79,7 @@ def derive_bounds(configuration: Configuration, equilibrium: Equilibrium) -> Bou
 def _rings(V: LyapunovFunction, configuration: Configuration, equilibrium: Equilibrium) -> list[Bound]:
     """The ultimate bounds, where there are disturbances or a residual set is asked for."""
     inner = configuration.bound.inner
-    if (inner is None and not V.loop.disturbances) or not _may_bound(V):
+    if (inner is None and not V.loop.disturbances) or V.loop.hold is not None or not _may_bound(V):
         return []
     ring = ultimate_bound(V, inner)
     if inner is not None and ring.strength is not Strength.PROVED:
@@ -100,17 +105,20 @@ def _nominal(configuration: Configuration, bounds: Bounds) -> list[str]:
 def _convergence(V: LyapunovFunction, equilibrium: Equilibrium) -> Bounds:
     """The bounds within which all starts converge to the equilibrium."""
     if equilibrium.stability == "marginal":
-        return Bounds(V, (), "The equilibrium has an eigenvalue on the imaginary axis: there is no certificate.")
+        return Bounds(V, (), "The equilibrium is only marginally stable in its linearisation: there is no certificate.")
     if equilibrium.stability == "unstable":
         return Bounds(V, (), "The equilibrium is unstable: nothing converges to it.")
     if isinstance(V, Quadratic) and positive_definite(V.enclosed_P) != "proved":
         return Bounds(V, (), "P is not positive definite by proof: it bounds nothing.")
+    if V.loop.hold is not None:
+        return Bounds(V, (), "No bound is derived: V̇ says nothing of a loop with [hold], whose commands lag behind.")
     contact = contact_level(V)
-    derived = [contact]
     if isinstance(V, Quadratic):
         norm = norm_bound(V)
         derived = [norm, prove_contact_level(contact, norm.level)]
+    else:
+        derived = [prove_contact_level(contact, 0.0)]
     missing = [f"No {bound.name}: {bound.note}." for bound in derived if not bound.level > 0]
     if not isinstance(V, Quadratic):
-        missing.insert(0, "A V that is not quadratic has no norm bound, and its contact level is not proved.")
+        missing.insert(0, "A V that is not quadratic has no norm bound.")
     return Bounds(V, tuple(bound for bound in derived if bound.level > 0), " ".join(missing))

@@ -67,6 +67,8 @@ class InvarianceProof:
 def prove_by_invariance(V: LyapunovFunction, level: Decimal | Fraction | float) -> InvarianceProof:
     """Try to prove that the connected part of {V <= level} that holds the equilibrium lies in the basin."""
     loop, c = V.loop, enclose_number(level)[1]
+    if loop.hold is not None or loop.disturbances:
+        return _open(0, "V̇ along the loop is not all that moves it")
     root = enclose_equilibrium(loop, V.centre)
     formula = _as_formula(V, root)
     dynamics = written_out(loop)
@@ -127,7 +129,7 @@ def _open(boxes: int, reason: str) -> InvarianceProof:
 def _as_formula(V: LyapunovFunction, root: EquilibriumEnclosure | None) -> FormulaV | None:
     """V as a formula in the states; a quadratic has one only where the equilibrium is a float exactly."""
     if isinstance(V, FormulaV):
-        return V
+        return None if V.from_equilibrium else V
     if root is None or np.any(root.x.low != root.x.high):
         return None
     exact = V.exact or tuple(tuple(map(Fraction, row)) for row in V.P.tolist())

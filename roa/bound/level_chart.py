@@ -97,6 +97,8 @@ class LevelChart:
 
 def level_chart(V: LyapunovFunction, level: float) -> LevelChart | str:
     """Coordinates for {V <= level}, a float, or the reason why there are none."""
+    if isinstance(V, FormulaV) and V.from_equilibrium:
+        return "V is a formula in distances from the equilibrium"
     root = enclose_equilibrium(V.loop, V.centre)
     centre = IntervalArray.exact(V.centre) if root is None else root.x
     if isinstance(V, Quadratic):

@@ -68,6 +68,8 @@ class LevelProver:
     def prove(self, level: Level, budget: int) -> LevelProof:
         """Try to prove a level, given exactly, with at most `budget` boxes; equal arguments give equal answers."""
         c = enclose_number(level)[1]
+        if self._V.loop.hold is not None:
+            return _undecided("V̇ says nothing of a loop with a hold, whose commands lag behind")
         if not self.is_ready:
             return _undecided("the equilibrium could not be enclosed, or V not be proved to be positive definite")
         if not 0 < c < np.inf:

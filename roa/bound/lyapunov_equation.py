@@ -1,4 +1,4 @@
-"""P from the Lyapunov equation A'P + PA = -Q."""
+"""P from the Lyapunov equation A'P + PA = -Q, or from M'PM - P = -TQ of a loop sampled with the period T."""
 
 from __future__ import annotations
 
@@ -6,9 +6,10 @@ from decimal import Decimal
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import solve_continuous_lyapunov
+from scipy.linalg import block_diag, solve_continuous_lyapunov, solve_discrete_lyapunov
 
 from roa.loop.model import Loop
+from roa.loop.sampled import SampledLinearisation
 
 Array = NDArray[np.float64]
 
@@ -29,6 +30,27 @@ def solve_lyapunov(A: Array, Q: Array) -> Array:
     float64 (n, n), symmetric to the last bit
     """
     P: Array = solve_continuous_lyapunov(A.T, -Q)
+    return (P + P.T) / 2
+
+
+def solve_sampled_lyapunov(sampled: SampledLinearisation, Q: Array) -> Array:
+    """Solve M'PM - P = -TQ for a symmetric P, with M the map over one period T.
+
+    The factor T makes P that of the continuous equation as T goes to zero. With a delay M maps the state and the
+    command that still acts; the weight of that command is zero, and P remains definite where it has any effect.
+
+    Parameters
+    ----------
+    sampled : stable
+    Q : float64 (n, n), symmetric
+
+    Returns
+    -------
+    float64 like the map: (n, n), or (n + m, n + m) with a delay, whose first n rows and columns are V of a state
+    where the command of the equilibrium still acts, as at a start
+    """
+    weight = block_diag(sampled.period * Q, np.zeros((len(sampled.map) - len(Q),) * 2))
+    P: Array = solve_discrete_lyapunov(sampled.map.T, weight)
     return (P + P.T) / 2
 
 

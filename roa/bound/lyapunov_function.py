@@ -60,32 +60,38 @@ class Quadratic:
 
 @dataclass(frozen=True)
 class FormulaV:
-    """V given as a formula in the states themselves, zero at the equilibrium.
+    """V given as a formula, zero at the equilibrium: in the states themselves, or in their distances from it.
 
     Attributes
     ----------
     loop : Loop
     centre : float64 (n,), the equilibrium, state units
-    tree : Expression in states, parameters and signals of the loop
+    tree : Expression in states and parameters of the loop
     text : str, the formula as it was written
+    from_equilibrium : the name of a state in the tree stands for its distance from the true equilibrium, of which
+        the centre is only the nearest float: such a V can have its minimum there exactly
     """
 
     loop: Loop
     centre: Array
     tree: Expression
     text: str
+    from_equilibrium: bool = False
 
     def value(self, x: Array) -> Array:
         """V at the points x, float64 (..., n) -> (...)."""
-        return np.broadcast_to(evaluate(self.tree, self.loop.values_of(x)), x.shape[:-1])
+        return np.broadcast_to(evaluate(self.tree, self._values(x)), x.shape[:-1])
 
     def gradient(self, x: Array) -> Array:
         """dV/dx at the points x, float64 (..., n) -> (..., n)."""
-        return self._partials.gradient(self.loop.values_of(x), x.shape[:-1])
+        return self._partials.gradient(self._values(x), x.shape[:-1])
 
     def decrease(self, x: Array) -> Array:
         """V̇ = dV/dx · f at the points x, float64 (..., n) -> (...), 1/s times the unit of V."""
         return np.asarray(np.einsum("...i,...i->...", self.gradient(x), self.loop.rhs(x)))
+
+    def _values(self, x: Array) -> dict[str, Array]:
+        return self.loop.values_of(x - self.centre if self.from_equilibrium else x)
 
     @cached_property
     def _partials(self) -> Partials:

@@ -29,6 +29,8 @@ HALVINGS = 60  # how small, against the domain, the first ball may be
 
 def norm_bound(V: Quadratic) -> Bound:
     """Prove the level of the norm bound; level 0 with the reason in the note where there is none."""
+    if V.loop.hold is not None:
+        return _nothing(V, "V̇ says nothing of a loop with a hold, whose commands lag behind")
     root = enclose_equilibrium(V.loop, V.centre)
     if root is None:
         return _nothing(V, "no box around the equilibrium could be proved to hold exactly one")

@@ -10,7 +10,8 @@ from __future__ import annotations
 from dataclasses import replace
 
 from roa.bound.level_proof import LevelProof, LevelProver
-from roa.bound.lyapunov_function import Quadratic
+from roa.bound.level_set_proof import LevelSetProver
+from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.statement import Bound, Strength
 from roa.kernel.branch_and_bound import Answer
 
@@ -19,6 +20,8 @@ SHARES = (0.9999, 0.999, 0.99, 0.97, 0.9, 0.8, 0.6, 0.4, 0.2)  # of the estimate
 WORK, BOXES = 1.2e9, 200_000  # most elementary interval operations, and most boxes, of all attempts together
 FIRST_PART, PART = 0.15, 0.4  # of the budget for the first attempt; of what is left, for each later one
 LEAST = 100  # boxes without which no attempt is worth while
+
+Prover = LevelProver | LevelSetProver
 
 
 def prove_contact_level(estimate: Bound, known: float) -> Bound:
@@ -30,9 +33,9 @@ def prove_contact_level(estimate: Bound, known: float) -> Bound:
     known : a level of the same V that is proved already
     """
     V, highest = estimate.V, estimate.level
-    if not isinstance(V, Quadratic) or not highest > 0:
+    if not highest > 0:
         return estimate
-    prover = LevelProver(V)
+    prover = prover_of(V)
     if not prover.is_ready:
         return estimate
     budget = proof_budget(prover)
@@ -47,7 +50,12 @@ def prove_contact_level(estimate: Bound, known: float) -> Bound:
     return replace(estimate, level=level, strength=Strength.PROVED, note=note, level_estimated=highest)
 
 
-def proof_budget(prover: LevelProver) -> int:
+def prover_of(V: LyapunovFunction) -> Prover:
+    """The prover for a kind of V: that for quadratics is the quicker one."""
+    return LevelProver(V) if isinstance(V, Quadratic) else LevelSetProver(V)
+
+
+def proof_budget(prover: Prover) -> int:
     """Most boxes for all attempts at a proof together."""
     return min(BOXES, int(WORK / prover.box_work))
 
@@ -57,7 +65,7 @@ def branch_and_bound(proof: LevelProof) -> str:
     return f"V̇ < 0 is proved by interval branch and bound ({proof.boxes} boxes)"
 
 
-def _search(prover: LevelProver, highest: float, left: int) -> tuple[float, LevelProof | None]:
+def _search(prover: Prover, highest: float, left: int) -> tuple[float, LevelProof | None]:
     """Find the largest of the shares that can be proved, and its proof; None where there is none."""
     level, best = 0.0, None
     first, last = 0, len(SHARES) - 1

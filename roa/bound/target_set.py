@@ -8,11 +8,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.bound.bounds import Bounds
+from roa.bound.contact_level import contact_level
 from roa.bound.definite import largest_eigenvalue, smallest_eigenvalue
 from roa.bound.equilibrium_enclosure import enclose_equilibrium
 from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.norm_bound import norm_bound
+from roa.bound.proved_contact_level import prove_contact_level
 from roa.bound.statement import Bound, Strength
 from roa.bound.ultimate_bound import NAME as ULTIMATE
 from roa.bound.volume import half_extents
@@ -45,13 +47,15 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
         return watching(_residual_set(configuration, equilibrium, bounds, dwell), elsewhere)
     best = bounds.largest_proved
     note = ""
-    if best is None:
+    if best is None or not isinstance(best.V, Quadratic):
+        note = "no level of the configured V is proved" if best is None else "the configured V is no quadratic"
         best = _bound_of_another_shape(configuration, equilibrium)
-        note = "no level of the configured V is proved"
         note += "" if best is None else '; the V meant here is that of A\'P + PA = -Q with Q = "domain"'
     level = 0.0 if best is None else _safe_level(best)
     if best is not None and not _is_resolved(configuration, best.V, level):
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
+    if loop.hold is not None:
+        note = "; ".join(part for part in (note, "entry is judged at the sampling instants") if part)
     alone = Target(
         kind="level" if level > 0 else "ball",
         centre=equilibrium.x,
@@ -101,16 +105,19 @@ def watching(target: Target, elsewhere: Array) -> Target:
 
 
 def _bound_of_another_shape(configuration: Configuration, equilibrium: Equilibrium) -> Bound | None:
-    """The norm bound of the Lyapunov equation, where the configured V has no proved level of its own.
+    """A proved level of the V of the Lyapunov equation, where the configured V is of no use.
 
     Any proved set about the equilibrium serves as a target, and the smallest one is better than a ball: a limit
     cycle inside the ball would count as convergence.
     """
     loop = configuration.loop
-    if equilibrium.stability != "stable":
+    if equilibrium.stability != "stable" or loop.hold is not None:  # a continuous V̇ says nothing of a sampled loop
         return None
-    bound = norm_bound(Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, weight_matrix("domain", loop))))
-    return bound if bound.level > 0 else None
+    V = Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, weight_matrix("domain", loop)))
+    norm = norm_bound(V)
+    contact = prove_contact_level(contact_level(V), norm.level)
+    best = contact if contact.strength is Strength.PROVED else norm
+    return best if best.level > 0 else None
 
 
 def _safe_level(bound: Bound, exact: bool = False) -> float:

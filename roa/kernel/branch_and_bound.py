@@ -1,5 +1,7 @@
 """Branch and bound over boxes: W < 0 wherever c_low <= V <= c_high, by outward-rounded intervals.
 
+What lies outside the region of interest, where one of some further functions is below zero, is dropped too.
+
 Each box is dropped as soon as one of these holds all over it: V > c_high or V < c_low; W < 0. The forms are
 tried in the order of their price: the natural interval; the mean-value form, whose slopes over the box are
 Clarke's and so serve at kinks; Taylor's form of second order, which is the sharpest where the loop is smooth.
@@ -67,7 +69,8 @@ def negative_on_levels(
 
     Parameters
     ----------
-    program : Program with the outputs W and V, in n variables
+    program : Program with the outputs W and V, in n variables; of points where any further output is below zero
+        nothing is asked
     low, high : float64 (n,), ends of the box
     levels : c_low <= c_high; infinite ends are allowed
     cell : float64 (n,), half-widths of a box about zero, of which nothing is asked; negative for none
@@ -120,7 +123,7 @@ def _search_boxes(
         low[:], high[:] = waiting[0, left - 1], waiting[1, left - 1]
         for i in range(n):
             centre[i] = low[i] + 0.5 * (high[i] - low[i])
-            radius[i] = up(max(high[i] - centre[i], centre[i] - low[i]))
+            radius[i] = up(max(high[i] - centre[i], centre[i] - low[i])) if low[i] < high[i] else 0.0
         dropped = _in_cell(low, high, cell)
         # Step 0: values over the box. Then in pairs, at the centre and over the box: once with every kink as it is,
         # and if that does not do, for each choice of sides at the kinks, whose functions are smooth. At any point
@@ -133,9 +136,14 @@ def _search_boxes(
             interpret(ops, constants, support, slots, counts, sides, start, end, order, d)
             if step == 0:
                 dropped = d[V, 0, 0] > c_high or d[V, 0, 1] < c_low or d[W, 0, 1] < 0.0
+                for row in outputs[2:]:
+                    dropped = dropped or d[row, 0, 1] < 0.0
             elif odd:
                 at[0], at[1] = d[W, : 1 + n], d[V, : 1 + n]
-                if step == 1 and _refutes(at, c_low, c_high) and not _in_cell(centre, centre, cell):
+                asked = not _in_cell(centre, centre, cell)
+                for row in outputs[2:]:
+                    asked = asked and d[row, 0, 0] >= 0.0
+                if step == 1 and asked and _refutes(at, c_low, c_high):
                     witness[:] = centre
                     return _REFUTED, boxes, left
             else:

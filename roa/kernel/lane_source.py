@@ -21,7 +21,7 @@ import jinja2
 
 from roa.kernel import vector_math
 from roa.kernel.outcomes import Outcome, Reason
-from roa.kernel.straight_line import right_hand_side
+from roa.kernel.straight_line import commands, right_hand_side
 from roa.kernel.tableau import Tableau
 from roa.kernel.target import Target
 from roa.loop.expression import Expression
@@ -51,11 +51,14 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
     are arguments, so that the module that is compiled for one gain serves the next.
     """
     code, derivatives = right_hand_side(loop)
+    command, command_values = commands(loop, code)
     states = range(loop.n)
     level = target.kind == "level"
     # 1 is the target itself, where it is a ball; 2, 3, … are the other equilibria.
     balls = ([] if level else [1]) + [2 + k for k in range(len(target.elsewhere))]
-    rows = _buffer_rows(states, bool(balls))
+    hold = _hold(loop, command_values)
+    numbers = "".join(f", c{i}" for i in range(len(code.constants)))
+    rows = _buffer_rows(states, bool(balls), hold)
     text = _template().render(
         outcome=Outcome,
         reason=Reason,
@@ -70,7 +73,10 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         lines=code.lines,
         derivatives=derivatives,
         n_constants=len(code.constants),
-        constants="".join(f", c{i}" for i in range(len(code.constants))),
+        hold=hold,
+        command_lines=command.lines,
+        numbers_of_formulas=numbers,
+        constants="".join(f", {u}" for u in hold.acting) + numbers,
         form="".join(f", p{i}_{j}" for i in states for j in states if j >= i),
         args=lambda prefix: ", ".join(f"{prefix}{j}" for j in states),
         cell=partial(_cell, rows),
@@ -91,13 +97,48 @@ def _template() -> jinja2.Template:
     return environment.get_template("lanes.py.jinja")
 
 
-def _buffer_rows(states: range, balls: bool) -> dict[str, int]:
+@dataclass(frozen=True)
+class _HoldCode:
+    """What the template needs to know of a hold; false where there is none.
+
+    Attributes
+    ----------
+    values : variables of the held signals in the code of the command
+    kind : "" no hold, "none", "part" or "full": the delay against the period
+    """
+
+    values: list[str]
+    kind: str
+
+    def __bool__(self) -> bool:
+        return bool(self.kind)
+
+    @property
+    def acting(self) -> list[str]:
+        """Variables of the commands that act."""
+        return [f"u{i}" for i in range(len(self.values))]
+
+    @property
+    def rows(self) -> list[str]:
+        """Rows of the lanes' buffer: commands that act and that wait, samples taken, whether the newest acts."""
+        waiting = [] if self.kind == "none" else [f"w{i}" for i in range(len(self.values))]
+        return [*self.acting, *waiting, "samples", *(["switched"] if self.kind == "part" else [])] if self else []
+
+
+def _hold(loop: Loop, values: list[str]) -> _HoldCode:
+    if loop.hold is None:
+        return _HoldCode([], "")
+    delay, period = loop.hold.delay, loop.hold.period
+    return _HoldCode(values, "none" if delay == 0 else "full" if delay == period else "part")
+
+
+def _buffer_rows(states: range, balls: bool, hold: _HoldCode) -> dict[str, int]:
     """Name the rows of the lanes' buffer."""
     names = ["t", "h", "steps", *(f"{row}{j}" for row in ("x", "k", "peak") for j in states)]
     if balls:
         names += ["ball", "since", "entry", "entry_steps"]
         names += [f"{row}{j}" for row in ("entry_x", "entry_peak") for j in states]
-    return {name: row for row, name in enumerate(names)}
+    return {name: row for row, name in enumerate([*names, *hold.rows])}
 
 
 def _cell(rows: dict[str, int], name: str, lane: str = "l") -> str:

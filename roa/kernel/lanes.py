@@ -16,6 +16,7 @@ from roa.kernel.target import Target
 from roa.kernel.trajectories import Trajectories
 from roa.loop.evaluate import evaluate
 from roa.loop.model import Loop
+from roa.loop.sampled import SampledLoop
 
 Array = NDArray[np.float64]
 
@@ -27,7 +28,8 @@ class Lanes:
     Attributes
     ----------
     loop, target, integration : what is simulated, until when, and how accurately
-    constants : float64 (k,), values of the subtrees over parameters and numbers
+    constants : float64 (k,), values of the subtrees over parameters and numbers; with a hold also its period and
+        delay, and the held signals at the equilibrium
     """
 
     loop: Loop
@@ -99,4 +101,7 @@ def compile_lanes(loop: Loop, target: Target, integration: Integration) -> Lanes
     source = lane_source(loop, methods.load(integration.method), target)
     values = loop.values_of(loop.centre)
     constants = np.array([float(evaluate(tree, values)) for tree in source.constants], dtype=np.float64)
+    if loop.hold is not None:
+        rest = SampledLoop(loop).command(target.centre)
+        constants = np.concatenate([constants, [loop.hold.T, loop.hold.tau], rest])
     return Lanes(loop, target, integration, constants, generated.load(source.text).advance)

@@ -22,16 +22,22 @@ class StraightLine:
     lines : list of str, Python assignments in order
     constants : list of trees over parameters and numbers; the code calls them c0, c1, …
     functions : set of str, the names from `vector_math` that the lines call
+
+    Parameters
+    ----------
+    loop : Loop
+    given : names whose values are variables already, such as the signals that are held
     """
 
-    def __init__(self, loop: Loop) -> None:
+    def __init__(self, loop: Loop, given: Mapping[Expression, str] | None = None) -> None:
         self.lines: list[str] = []
         self.constants: list[Expression] = []
         self.functions: set[str] = set()
         self._signals: Mapping[str, Expression] = loop.signals
         self._parameters = frozenset(loop.parameters)
         self._variables: dict[Expression, str] = {Name(s): f"x{i}" for i, s in enumerate(loop.states)}
-        self._constant: dict[Expression, bool] = {}
+        self._variables |= given or {}
+        self._constant: dict[Expression, bool] = dict.fromkeys(given or {}, False)
 
     def variable(self, tree: Expression) -> str:
         """Return the variable that holds the tree's value, appending the lines that compute it."""
@@ -143,6 +149,14 @@ def _integer_power(base: str, exponent: int) -> str:
 
 
 def right_hand_side(loop: Loop) -> tuple[StraightLine, list[str]]:
-    """Return the code of f and the variables that hold the n derivatives."""
-    code = StraightLine(loop)
+    """Return the code of f and the variables that hold the n derivatives; a held signal i is ui."""
+    held = loop.hold.signals if loop.hold else ()
+    code = StraightLine(loop, {Name(name): f"u{i}" for i, name in enumerate(held)})
     return code, [code.variable(tree) for tree in loop.dynamics]
+
+
+def commands(loop: Loop, code: StraightLine) -> tuple[StraightLine, list[str]]:
+    """Return the code of the held signals at a sample and their variables; constants are added to those of `code`."""
+    own = StraightLine(loop)
+    own.constants, own.functions = code.constants, code.functions
+    return own, [own.variable(Name(name)) for name in (loop.hold.signals if loop.hold else ())]

@@ -77,6 +77,10 @@ class Program:
     outputs: NDArray[np.int64]
 
 
+# Operation, up to three operands, and the ends of a constant.
+Operation = tuple[int, int, int, int, float, float]
+
+
 def enclose_number(value: Decimal | Fraction | float) -> tuple[float, float]:
     """Return the smallest interval of floats that holds the exact value."""
     exact = Fraction(value)
@@ -99,7 +103,7 @@ class Tape:
     def __init__(self, variables: int) -> None:
         self._n = variables
         self._numbers: dict[Fraction, int] = {}
-        self._rows: dict[tuple[int, int, int, int, float, float], int] = {}
+        self._rows: dict[Operation, int] = {}
         for i in range(variables):
             self._row(Op.VARIABLE, i)
 
@@ -125,11 +129,11 @@ class Tape:
 
     def add(self, a: int, b: int) -> int:
         """Row of a + b."""
-        return b if self._is_zero(a) else a if self._is_zero(b) else self._row(Op.ADD, min(a, b), max(a, b))
+        return b if self.is_zero(a) else a if self.is_zero(b) else self._row(Op.ADD, min(a, b), max(a, b))
 
     def subtract(self, a: int, b: int) -> int:
         """Row of a - b."""
-        return a if self._is_zero(b) else self.negate(b) if self._is_zero(a) else self._row(Op.SUBTRACT, a, b)
+        return a if self.is_zero(b) else self.negate(b) if self.is_zero(a) else self._row(Op.SUBTRACT, a, b)
 
     def negate(self, a: int) -> int:
         """Row of -a."""
@@ -155,7 +159,7 @@ class Tape:
         return self.total(
             self.multiply(weight, row)
             for weight, row in zip(weights, rows, strict=True)
-            if not (self._is_zero(weight) or self._is_zero(row))
+            if not (self.is_zero(weight) or self.is_zero(row))
         )
 
     def expression(self, tree: Expression, names: Mapping[str, int]) -> int:
@@ -171,12 +175,12 @@ class Tape:
                 operation = {"+": self.add, "-": self.subtract, "*": self.multiply, "/": self.divide}[op]
                 return operation(self.expression(left, names), self.expression(right, names))
             case Power(base, exponent):
-                return self._power(self.expression(base, names), exponent)
+                return self.power(self.expression(base, names), exponent)
             case Call("where", (Compare(op, left, right), first, second)):
                 difference = self.subtract(self.expression(left, names), self.expression(right, names))
                 return self._where(op, difference, self.expression(first, names), self.expression(second, names))
             case Call(function, arguments):
-                return self._call(function, [self.expression(argument, names) for argument in arguments])
+                return self.call(function, [self.expression(argument, names) for argument in arguments])
         raise AssertionError(tree)
 
     def loop(self, loop: Loop, states: Iterable[int], varying: Mapping[str, int] | None = None) -> dict[str, int]:
@@ -187,6 +191,10 @@ class Tape:
         for name, tree in loop.signals.items():
             names[name] = self.expression(tree, names)
         return names
+
+    def operations(self) -> list[Operation]:
+        """Every row so far."""
+        return list(self._rows)
 
     def program(self, outputs: Iterable[int]) -> Program:
         """Freeze the tape, with the given rows as its outputs."""
@@ -214,13 +222,14 @@ class Tape:
     def _row(self, op: Op, a: int = 0, b: int = 0, c: int = 0, low: float = 0.0, high: float = 0.0) -> int:
         return self._rows.setdefault((int(op), a, b, c, low, high), len(self._rows))
 
-    def _is_zero(self, row: int) -> bool:
+    def is_zero(self, row: int) -> bool:
+        """Whether a row is the number zero."""
         return self._rows.get((int(Op.CONSTANT), 0, 0, 0, 0.0, 0.0)) == row
 
-    def _power(self, base: int, exponent: Decimal) -> int:
+    def power(self, base: int, exponent: Decimal) -> int:
+        """Row of a power with a constant exponent."""
         if exponent != exponent.to_integral_value():
-            low, high = enclose_number(exponent)
-            return self._row(Op.REAL_POWER, base, low=low, high=high)
+            return self.real_power(base, *enclose_number(exponent))
         k = int(exponent)
         return self.number(1.0) if k == 0 else base if k == 1 else self._row(Op.POWER, base, k)
 
@@ -235,12 +244,17 @@ class Tape:
             case _:
                 return self._row(Op.WHERE_NEGATIVE, difference, second, first)
 
-    def _call(self, function: str, arguments: list[int]) -> int:
+    def real_power(self, base: int, low: float, high: float) -> int:
+        """Row of a power whose exponent is known to lie in [low, high]."""
+        return self._row(Op.REAL_POWER, base, low=low, high=high)
+
+    def call(self, function: str, arguments: list[int]) -> int:
+        """Row of a function of rows; `where` has rows of its own."""
         match function, arguments:
             case "clip", [x, low, high]:
                 return self._row(Op.MIN, self._row(Op.MAX, x, low), high)
             case "deadzone", [x, width]:
-                return self.subtract(x, self._call("clip", [x, self.negate(width), width]))
+                return self.subtract(x, self.call("clip", [x, self.negate(width), width]))
         return self._row(Op[function.upper()], *arguments)
 
 

@@ -10,6 +10,7 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, mod
 
 from roa.loop.expression import Expression
 from roa.loop.formula_text import decimal_text, to_text
+from roa.loop.hold import Hold
 from roa.loop.model import Loop
 from roa.loop.values import Matrix, number, real, symmetric_matrix, whole, word
 
@@ -175,6 +176,7 @@ class Configuration:
             "signals": [[name, to_text(tree)] for name, tree in loop.signals.items()],
             "dynamics": [to_text(tree) for tree in loop.dynamics],
             "equilibrium": [decimal_text(value) for value in loop.guess],
+            **_resolved_hold(loop.hold),
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
             "disturbance": {
                 name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
@@ -189,6 +191,19 @@ class Configuration:
             "sweep": self.sweep.model_dump(),
             "verdict": self.verdict.model_dump(),
         }
+
+
+def _resolved_hold(hold: Hold | None) -> dict[str, Any]:
+    """The table [hold], where there is one; without it nothing, as before there were holds."""
+    if hold is None:
+        return {}
+    return {
+        "hold": {
+            "signals": list(hold.signals),
+            "period": decimal_text(hold.period),
+            "delay": decimal_text(hold.delay),
+        }
+    }
 
 
 def _plain(value: str | Matrix | Decimal | Expression | None) -> Any:

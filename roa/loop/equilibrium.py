@@ -12,6 +12,7 @@ from roa.loop.configuration import Configuration
 from roa.loop.evaluate import evaluate
 from roa.loop.expression import names_in
 from roa.loop.model import Loop
+from roa.loop.sampled import SampledLinearisation, linearise
 from roa.loop.wording import point_text
 
 Array = NDArray[np.float64]
@@ -34,8 +35,11 @@ class Equilibrium:
     x : float64 (n,), state units
     A : float64 (n, n), df/dx at x
     eigenvalues : complex128 (n,), 1/s, by falling real part
-    stability : "stable", "marginal" (one on the imaginary axis, none to its right) or "unstable"
-    slowest_time_constant : s, one over the smallest decay rate; inf unless stable
+    stability : "stable", "marginal" (one on the imaginary axis, none to its right) or "unstable"; with a hold that
+        of the sampled loop, whatever the eigenvalues are
+    slowest_time_constant : s, one over the smallest decay rate; inf unless stable; with a hold that of the sampled loop
+    sampled : the linearisation over one sampled period, where the loop has a hold; A and the eigenvalues are then
+        those that the loop would have without it
     """
 
     x: Array
@@ -43,6 +47,7 @@ class Equilibrium:
     eigenvalues: NDArray[np.complex128]
     stability: str
     slowest_time_constant: float
+    sampled: SampledLinearisation | None = None
 
 
 def find_equilibrium(loop: Loop, source: str) -> Equilibrium:
@@ -73,7 +78,9 @@ def find_equilibrium(loop: Loop, source: str) -> Equilibrium:
 
 
 def require_stable(equilibrium: Equilibrium, loop: Loop, source: str) -> None:
-    """Raise `UserError` with the eigenvalues where one lies in the right half-plane."""
+    """Raise `UserError` with the eigenvalues, or those over one sampled period, where the equilibrium is unstable."""
+    if equilibrium.stability == "unstable" and equilibrium.sampled is not None:
+        raise UserError(_unstable_sampled(equilibrium, equilibrium.sampled, loop, source))
     if equilibrium.stability == "unstable":
         raise UserError(
             f"{source}: [dynamics]: the equilibrium {_point(loop, equilibrium.x)} is unstable, with eigenvalues "
@@ -247,7 +254,24 @@ def _linearised(loop: Loop, x: Array) -> Equilibrium:
     axis = AXIS * float(np.linalg.norm(scaled, 2))
     stability = "unstable" if rightmost > axis else "stable" if rightmost < -axis else "marginal"
     slowest = -1 / rightmost if stability == "stable" else np.inf
+    if loop.hold is not None:
+        sampled = linearise(loop, x)
+        return Equilibrium(x, A, eigenvalues, sampled.stability, sampled.slowest_time_constant, sampled)
     return Equilibrium(x, A, eigenvalues, stability, float(slowest))
+
+
+def _unstable_sampled(equilibrium: Equilibrium, sampled: SampledLinearisation, loop: Loop, source: str) -> str:
+    sentence = (
+        f"{source}: [hold]: the sampled loop is unstable at the equilibrium {_point(loop, equilibrium.x)}: over one "
+        f"period of {sampled.period:g} s its spectral radius is {sampled.spectral_radius:.6g}, and must be below 1"
+    )
+    if sampled.stable_below is None:
+        return (
+            f"{sentence}; no shorter period was found that makes it stable: check the signs and gains of the feedback"
+        )
+    assert loop.hold is not None
+    ratio = ", with the delay in the same ratio to the period" if loop.hold.delay else ""
+    return f"{sentence}; it is stable for periods below {sampled.stable_below:.6g} s{ratio}"
 
 
 def _distance(loop: Loop, points: Array, x: Array) -> Array:

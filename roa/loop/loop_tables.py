@@ -14,6 +14,7 @@ from roa.loop.expression import FUNCTIONS, Expression
 from roa.loop.faults import Faults
 from roa.loop.formula import Vocabulary, parse
 from roa.loop.formula_syntax import FormulaError
+from roa.loop.hold import Hold, read_hold
 from roa.loop.model import Loop, Parameter
 from roa.loop.values import kind, number, pair
 from roa.loop.wording import hint, listed, quoted
@@ -41,6 +42,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
     dynamics = reader.dynamics([*parameters], known)
     if len(faults.found) == before:  # a faulty formula may be the one that uses it
         check_use(disturbances, [*signals.values(), *dynamics.values()], [*tables.get("parameters", {})], faults)
+    hold = reader.hold(signals, dynamics)
     guess = reader.guess()
     domain = reader.domain(guess)
     if len(faults.found) > before:
@@ -55,6 +57,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
         dynamics=tuple(dynamics[name] for name in states),
         domain=tuple(domain[name] for name in states),
         guess=tuple(guess.get(name, Decimal(0)) for name in states),
+        hold=hold,
         disturbances=disturbances,
     )
 
@@ -141,6 +144,13 @@ class _LoopTables:
             if tree is not None:
                 trees[name] = tree
         return trees
+
+    def hold(self, signals: Mapping[str, Expression], dynamics: Mapping[str, Expression]) -> Hold | None:
+        if "hold" not in self.tables or len(signals) < len(self.table("signals")):
+            return None  # one slip, one fault: what a broken signal means for the hold shows once it is mended
+        return read_hold(
+            self.table("hold"), {**self.states, **self.table("parameters")}, signals, dynamics, self.faults
+        )
 
     def _formula(self, table: str, name: str, text: Any, vocabulary: Vocabulary) -> Expression | None:
         if not isinstance(text, str):

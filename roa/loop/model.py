@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from roa.loop.evaluate import evaluate
 from roa.loop.expression import Expression
+from roa.loop.hold import Hold
 from roa.loop.symbolic import Partials
 
 Array = NDArray[np.float64]
@@ -38,6 +39,8 @@ class Loop:
     dynamics : tuple of n trees, the time derivative of each state, in state units per second
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
+    hold : the digital part, or None; f below is then the loop with every signal taken as continuous, which has the
+        same equilibria and nothing else in common with the sampled one (`roa.loop.sampled`)
     disturbances : names among the parameters that vary with time anywhere in an interval (low, high); the value of the
         parameter is the nominal one, which is all that is simulated
     """
@@ -50,6 +53,7 @@ class Loop:
     dynamics: tuple[Expression, ...]
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
+    hold: Hold | None = None
     disturbances: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
     @property

@@ -6,7 +6,6 @@ They are refused by name: a table that is ignored in silence would give a wrong 
 from __future__ import annotations
 
 TABLES = {
-    "hold": "sample-and-hold of signals by a digital controller",
     "limits": "limits on states and signals",
     "tables": "look-up tables",
 }

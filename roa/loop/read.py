@@ -18,6 +18,7 @@ from roa.loop.expression import Expression
 from roa.loop.faults import ABSENT, Faults
 from roa.loop.formula import Vocabulary, parse
 from roa.loop.formula_syntax import FormulaError
+from roa.loop.hold import check_with_hold
 from roa.loop.loop_tables import read_loop
 from roa.loop.model import Loop
 from roa.loop.values import kind
@@ -25,7 +26,8 @@ from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
 TABLES = (
-    "states", "parameters", "signals", "dynamics", "equilibrium", "domain", "disturbance", "bound", "sweep", "verdict",
+    "states", "parameters", "signals", "dynamics", "equilibrium", "domain", "hold", "disturbance", "bound", "sweep",
+    "verdict",
 )  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
 BOUND_KEYS = ("Q", "P", "V", "level", "inner")
@@ -64,6 +66,9 @@ def read_text(text: str, source: str) -> Configuration:
     loop = read_loop(title, tables, faults)
     bound = _bound_table(tables.get("bound", {}), tables, loop, faults)
     sweep = _sweep_table(tables.get("sweep", {}), faults)
+    if loop and loop.hold:
+        ultimate = {"[disturbance]": bool(loop.disturbances), "[bound] inner": bool(bound and bound.inner)}
+        check_with_hold(loop.hold, sweep.horizon if sweep else None, ultimate, faults)
     verdict = _checked("verdict", VerdictTable, tables.get("verdict", {}), VerdictTable.model_fields, faults)
     faults.raise_if_any()
     assert loop is not None

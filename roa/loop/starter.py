@@ -10,6 +10,9 @@ STARTER = """\
 
 title = "Diving float that holds its depth with a limited thruster"
 
+# A digital controller computes signals from samples every `period` and holds them; each acts `delay` after its sample.
+# hold = { signals = ["thrust"], period = 0.1, delay = 0.05 }     # s; or as a table [hold] further down
+
 [states]                    # name = unit, in order; "" where there is no unit
 depth = "m"                 # below the set depth
 speed = "m/s"               # downwards

@@ -19,12 +19,23 @@ Verdict = Mapping[str, Any]
 
 
 def answer(verdict: Verdict) -> tuple[str, ...]:
-    """At most two sentences: what became of the claim, or how large the basin is and what the bounds cover of it."""
+    """At most two sentences: what became of the claim, or how large the basin is and what the bounds cover of it.
+
+    Before them stands one that says so where the sweep is partial.
+    """
     if verdict["claim"]:
         sentences = (_claim_sentence(verdict), _claim_standing(verdict))
     else:
         sentences = (_basin_sentence(verdict), _bounds_sentence(verdict))
-    return tuple(sentence for sentence in sentences if sentence)
+    return tuple(sentence for sentence in (partial_sentence(verdict), *sentences) if sentence)
+
+
+def partial_sentence(verdict: Verdict) -> str:
+    """What a partial sweep rests on; nothing for one that is done."""
+    basin = verdict["basin"]
+    if not basin or not basin["partial"]:
+        return ""
+    return f"Partial sweep: the first {basin['samples']:,} of {basin['samples_wanted']:,} starts (simulated)."
 
 
 def next_steps(verdict: Verdict) -> tuple[str, ...]:

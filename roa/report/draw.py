@@ -5,8 +5,11 @@ from __future__ import annotations
 from collections.abc import Sequence
 from pathlib import Path
 
+from matplotlib.figure import Figure
+
 from roa.errors import UserError
 from roa.report import figures
+from roa.report.answer import partial_sentence
 from roa.report.difference import Difference, difference_figure
 from roa.report.evidence import Evidence
 from roa.report.save import FORMATS, save
@@ -42,10 +45,18 @@ def draw_figures(
         for name in only or figures.names():
             one = figures.load(name)
             if one.applies(evidence):
-                written += save(one.figure(evidence), folder, f"{name}{suffix}", formats, dots_per_inch)
+                figure = _marked(one.figure(evidence), evidence)
+                written += save(figure, folder, f"{name}{suffix}", formats, dots_per_inch)
             elif only:
                 raise UserError(f"figure {name!r}: this run has nothing to show in it")
     return tuple(written)
+
+
+def _marked(figure: Figure, evidence: Evidence) -> Figure:
+    """Write on a figure of a partial sweep that it is one."""
+    if sentence := partial_sentence(evidence.verdict):
+        figure.text(0.005, 0.002, sentence, fontsize=6, ha="left", va="bottom")
+    return figure
 
 
 def draw_difference(

@@ -103,7 +103,8 @@ def _basin_rows(verdict: Verdict) -> Iterator[Row]:
     low, high = (number(end, 6) for end in basin["volume_interval"])
     volume = f"{number(basin['volume'], 6)} ({low} to {high}) {basin['volume_unit']}"
     yield "volume, in units of the states", f"{volume} (simulated)"
-    yield "starts", f"{basin['samples']:,}" + (", a partial sweep" if basin["partial"] else "")
+    of_all = f" of {basin['samples_wanted']:,}, a partial sweep" if basin["partial"] else ""
+    yield "starts", f"{basin['samples']:,}{of_all}"
     for word, count in basin["reasons"].items():
         yield word.replace("_", " "), f"{count:,} starts (simulated): {Reason[word.upper()].sentence}"
 

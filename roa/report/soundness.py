@@ -21,6 +21,7 @@ def soundness_document(plan: Plan, cost: Cost) -> dict[str, Any]:
         "equilibrium": equilibrium.x.tolist(),
         "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues.tolist()],
         "stability": equilibrium.stability,
+        "sampled": None if equilibrium.sampled is None else equilibrium.sampled.document,
         "target": plan.target.words,
         "elsewhere": plan.target.elsewhere.tolist(),
         "samples": cost.samples,
@@ -53,7 +54,7 @@ def soundness_text(plan: Plan, cost: Cost, source: str) -> str:
         *box,
         "",
         f"Equilibrium  {at(equilibrium.x)} (estimated)",
-        f"Eigenvalues  {eigenvalue_text(equilibrium.eigenvalues)} 1/s ({equilibrium.stability}, estimated)",
+        *_stability(plan),
         *(f"Elsewhere    {at(x)} is another stable equilibrium (estimated)" for x in plan.target.elsewhere),
         f"Target set   {plan.target.words}",
         "",
@@ -65,6 +66,19 @@ def soundness_text(plan: Plan, cost: Cost, source: str) -> str:
         f"What next: `roa run {source}`",
     ]
     return "\n".join(lines) + "\n"
+
+
+def _stability(plan: Plan) -> list[str]:
+    """Eigenvalues, or with a hold what decides in their place."""
+    equilibrium, hold = plan.equilibrium, plan.configuration.loop.hold
+    eigenvalues = f"Eigenvalues  {eigenvalue_text(equilibrium.eigenvalues)} 1/s"
+    if equilibrium.sampled is None or hold is None:
+        return [f"{eigenvalues} ({equilibrium.stability}, estimated)"]
+    return [
+        f"Hold         {hold.words}",
+        f"One period   spectral radius {equilibrium.sampled.spectral_radius:.6g} ({equilibrium.stability}, estimated)",
+        f"{eigenvalues} without the hold (estimated)",
+    ]
 
 
 def _seconds(seconds: float) -> str:

@@ -4,13 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from typing import Protocol
-
-import numpy as np
-from numpy.typing import NDArray
-
-from roa.kernel.trajectories import Trajectories
-from roa.sweep.designs import Design
 
 
 @dataclass(frozen=True)
@@ -35,20 +28,7 @@ class Block:
         return f"block {self.index} (starts {self.first} to {self.stop - 1})"
 
 
-class Runs(Protocol):
-    """What turns starts into results: the kernel's `Lanes`."""
-
-    def run(self, initial: NDArray[np.float64]) -> Trajectories:
-        """Integrate starts, float64 (m, n)."""
-        ...
-
-
 def blocks_of(samples: int, size: int) -> Iterator[Block]:
     """Yield the blocks of a sweep: `size` starts each, the last one what is left."""
     for index, first in enumerate(range(0, samples, size)):
         yield Block(index, first, min(size, samples - first))
-
-
-def simulate(block: Block, design: Design, lanes: Runs) -> Trajectories:
-    """Return the block's results, a pure function of the plan and the block."""
-    return lanes.run(design.points(block.first, block.count))

@@ -12,28 +12,35 @@ from contextlib import contextmanager
 from dataclasses import replace
 
 from roa.errors import Interrupted, MachineError, UserError
-from roa.kernel.lanes import Lanes, compile_lanes
+from roa.kernel.lanes import compile_lanes
 from roa.kernel.trajectories import Trajectories
-from roa.sweep import executors, store
-from roa.sweep.block import Block, blocks_of, simulate
-from roa.sweep.executors import attempt
+from roa.sweep import store
+from roa.sweep.block import Block, blocks_of
+from roa.sweep.crew import Crew
 from roa.sweep.finished import Finished, look_through
 from roa.sweep.header import Header
+from roa.sweep.means import Means
 from roa.sweep.plan import Plan
 from roa.sweep.progress import Both, Log, Progress
 from roa.sweep.run_folder import RunFolder, write_atomically
+from roa.sweep.simulation import Simulation
 from roa.sweep.stop import StopRequest, stop_on_signals
 
 
-def launch(plan: Plan, folder: RunFolder, jobs: int | None = None, progress: Progress | None = None) -> None:
+def launch(plan: Plan, folder: RunFolder, means: Means | None = None, progress: Progress | None = None) -> bool:
     """Sweep what is missing in the folder, then merge; afterwards `sweep.h5` holds all samples of the plan.
 
     Parameters
     ----------
     plan : Plan
     folder : RunFolder, new or with an earlier part of the same sweep in it
-    jobs : workers, >= 1; None for as many as this process may use processors
+    means : Means
     progress : Progress
+
+    Returns
+    -------
+    bool
+        False where the granted time ran out before all blocks were finished; what is finished is stored.
 
     Raises
     ------
@@ -44,22 +51,25 @@ def launch(plan: Plan, folder: RunFolder, jobs: int | None = None, progress: Pro
     MachineError
         The disk is full or damaged, or a block fails whenever it is tried.
     """
-    if jobs is not None and jobs < 1:
-        raise UserError(f"--jobs {jobs}: must be at least 1")
+    means = means or Means()
     progress = Both(progress or Progress(), Log(folder.log))
-    with stop_on_signals() as stop, _one_sentence(folder), folder.locked():
+    with stop_on_signals(means.deadline) as stop, _one_sentence(folder), folder.locked():
         header = _begin(plan, folder)
         finished = look_through(folder, header, progress.say)
         missing = [block for block in blocks_of(plan.samples, plan.block_size) if not finished.holds(block)]
         if missing:
             _require_space(plan, folder, missing)
-            _sweep(plan, folder, missing, min(jobs or _processors(), len(missing)), stop, progress)
+            if not _sweep(plan, folder, missing, means, stop, progress):
+                return False
             finished = replace(finished, separate=finished.separate | set(missing))
         if finished.merged_count < plan.samples:
             progress.say(f"merging {plan.samples:,} samples")
             store.write_samples(folder.sweep, header, _all_rows(finished, stop))
             progress.say(f"{folder.sweep} is written")
         _remove_blocks(finished)
+        if stop.signalled:
+            raise _interrupted(folder)
+    return True
 
 
 @contextmanager
@@ -88,12 +98,6 @@ def _begin(plan: Plan, folder: RunFolder) -> Header:
     return header
 
 
-def _processors() -> int:
-    from roa.sweep.executors.threads import cpu_count
-
-    return cpu_count()
-
-
 def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
     """Refuse to begin what the disk cannot hold: the missing blocks, and all of the samples merged."""
     row = 8 * (3 * plan.configuration.loop.n + 1) + 6
@@ -107,60 +111,37 @@ def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
 
 
 def _sweep(
-    plan: Plan, folder: RunFolder, missing: list[Block], jobs: int, stop: StopRequest, progress: Progress
-) -> None:
-    """Run the missing blocks and store each as it finishes."""
+    plan: Plan, folder: RunFolder, missing: list[Block], means: Means, stop: StopRequest, progress: Progress
+) -> bool:
+    """Run the missing blocks and store each as it finishes; return whether all are."""
     starts = sum(block.count for block in missing)
-    progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {jobs} at a time")
+    crew = Crew.of(means, len(missing))
+    progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {crew.words}")
     lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
     progress.begin(plan.samples - starts, plan.samples)
-    failed = []
-    run = executors.load("serial" if jobs == 1 else "threads")
-    for block, result in run(lambda block: _unless(stop, block, plan, lanes), _until(stop, missing), jobs):
-        if isinstance(result, Exception):
-            failed.append(block)
-        elif result is not None:
-            _store(block, result, plan, folder, progress)
-    for block in failed if not stop.made else []:
-        _retry(block, plan, lanes, folder, progress)
-    progress.end()
-    if stop.made:
-        raise _interrupted(folder)
-
-
-def _until(stop: StopRequest, blocks: list[Block]) -> Iterator[Block]:
-    for block in blocks:
-        if stop.made:
-            return
-        yield block
-
-
-def _unless(stop: StopRequest, block: Block, plan: Plan, lanes: Lanes) -> Trajectories | None:
-    """Run a block; not one that was handed out before, but had not begun when the stop was asked for."""
-    return None if stop.made else simulate(block, plan.design, lanes)
-
-
-def _retry(block: Block, plan: Plan, lanes: Lanes, folder: RunFolder, progress: Progress) -> None:
-    """Try a block that failed once more, alone: it may have failed for want of memory."""
-    progress.say(f"{block} failed and is tried again alone")
-    result = attempt(lambda block: simulate(block, plan.design, lanes), block)
-    if not isinstance(result, Trajectories):
+    try:
+        for block, rows in crew.run(Simulation(plan, lanes), missing, stop, progress.say):
+            write_atomically(folder.blocks / block.file_name, store.encode_block(block, plan.fingerprint, rows))
+            progress.add(rows.outcome)
+            starts -= block.count
+    finally:
         progress.end()
+    if stop.signalled:
+        raise _interrupted(folder)
+    if starts and stop.made:
+        progress.say(f"the granted time is over; carry on with `{folder.resume_command}`")
+        return False
+    if crew.failed:
         raise MachineError(
-            f"{block} failed twice ({type(result).__name__}: {result}); all others are stored: "
-            f"`{folder.resume_command}` tries it again"
+            f"{folder.path}: {failure}; all others are stored: `{folder.resume_command}` tries it again"
+            for failure in crew.failed
         )
-    _store(block, result, plan, folder, progress)
-
-
-def _store(block: Block, rows: Trajectories, plan: Plan, folder: RunFolder, progress: Progress) -> None:
-    write_atomically(folder.blocks / block.file_name, store.encode_block(block, plan.fingerprint, rows))
-    progress.add(rows.outcome)
+    return True
 
 
 def _all_rows(finished: Finished, stop: StopRequest) -> Iterator[tuple[Block, Trajectories]]:
     for block in blocks_of(finished.header.samples, finished.header.block_size):
-        if stop.made:
+        if stop.signalled:
             raise _interrupted(finished.folder)
         yield block, finished.rows(block)
 

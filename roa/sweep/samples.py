@@ -33,7 +33,8 @@ class Samples:
     states, units : names and units, in the order of the columns
     attributes : dict, what the run says of itself (the attributes of `sweep.h5`)
     replicates, design : how the starts were drawn; sample i belongs to replicate i mod replicates
-    partial : whether the sweep is to have more samples than these
+    wanted : number of samples that the sweep is to have
+    partial : whether these are fewer
     bound : dict with `P` (n, n) or None, `level` and `equilibrium` (n,)
     """
 
@@ -45,7 +46,8 @@ class Samples:
         self.attributes: dict[str, Any] = {field.name: getattr(header, field.name) for field in fields(header)}
         self.replicates = header.replicates
         self.design = header.design
-        self.partial = self.n < header.samples
+        self.wanted = header.samples
+        self.partial = self.n < self.wanted
         self.bound: dict[str, Any] = {
             "P": None if header.P is None else np.array(header.P),
             "level": header.level,

@@ -17,11 +17,15 @@ class SamplesInMemory:
     trajectories: Trajectories
     design: str
     replicates: int
-    partial: bool = False
+    missing: int = 0
 
     @property
     def n(self):
         return len(self.trajectories)
+
+    @property
+    def wanted(self):
+        return self.n + self.missing
 
     def read(self, first, count):
         columns = {f.name: getattr(self.trajectories, f.name)[first : first + count] for f in fields(Trajectories)}

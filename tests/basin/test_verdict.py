@@ -132,7 +132,7 @@ def test_cautions_are_always_there_and_fit_the_run(sweep, case):
     assert len(bare) == 4
     assert any("ball" in caution for caution in case.conclude(target=case.target)["cautions"])
     unresolved = Case(sweep, lambda x: np.full(len(x), Outcome.UNRESOLVED))
-    unresolved.samples.partial = True
+    unresolved.samples.missing = 4
     cautions = unresolved.conclude(samples=unresolved.samples)["cautions"]
     assert any("16384 unresolved of 16384" in caution for caution in cautions)
     assert any("partial" in caution for caution in cautions)

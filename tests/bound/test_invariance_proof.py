@@ -5,7 +5,9 @@ import pytest
 import gallery
 from roa.bound.bounds import lyapunov_function
 from roa.bound.invariance_proof import prove_by_invariance
+from roa.bound.ring_proof import RingProver
 from roa.loop.equilibrium import find_equilibrium
+from roa.loop.read import read_text
 
 ENERGY = 'V = "0.5*w**2 + 1 - cos(a)"'
 
@@ -67,6 +69,19 @@ NEVER = {
 @pytest.mark.parametrize("case", NEVER)
 def test_never(case):
     assert not attempt(NEVER[case], 1.5).is_proved
+
+
+def test_a_hold_or_a_disturbance_is_never_proved_by_the_continuous_decrease():
+    text = gallery.toml(
+        ["a", "w"], ["w", "-sin(a) + u"], [(-3.1, 3.1), (-4.0, 4.0)], signals={"u": "-0.3*w"}, bound=ENERGY
+    )
+    assert attempt(read_text(text, "energy.toml"), 1.5).is_proved
+    held = read_text(f'{text}\n[hold]\nsignals = ["u"]\nperiod = 0.5\n', "energy.toml")
+    V = lyapunov_function(held, find_equilibrium(held.loop, "energy.toml"))
+    assert not prove_by_invariance(V, 1.5).is_proved
+    assert RingProver(V).prove(0.5, 1.0, 1000).reason.startswith("V̇ says nothing of a loop with a hold")
+    pushed = read_text(text.replace("-0.3*w", "-0.3*w + d") + "\n[disturbance]\nd = [-0.1, 0.1]\n", "energy.toml")
+    assert not attempt(pushed, 1.5).is_proved
 
 
 def test_friction_is_positive_on_a_smaller_set():

@@ -218,12 +218,6 @@ def test_derived_contact_level_says_what_is_proved_and_what_is_estimated():
     assert member(bound.V, bound.level_estimated * (1 + 1e-9), bound.contact)
 
 
-def test_contact_level_of_a_formula_stays_estimated():
-    given = product(bound='V = "x1**2 + x2**2 + x1**4"')
-    bound = derive_bounds(given, find_equilibrium(given.loop, "test")).named("contact level")
-    assert (bound.strength, bound.level_estimated) == (Strength.ESTIMATED, None)
-
-
 def test_what_cannot_be_proved_at_the_top_is_proved_further_down():
     """A ball: the attempts near the top run out of boxes."""
     given = configuration(

@@ -1,4 +1,4 @@
-"""The pendulum with friction and its energy: proved by invariance below its saddles, never above, and never as strict."""
+"""The pendulum with friction and its energy: proved by invariance below its saddles, never above, never as strict."""
 
 import json
 

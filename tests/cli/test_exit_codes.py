@@ -182,7 +182,7 @@ WRONG = {
     "code": ('x = "-y"', "x = \"__import__('os').system('true')\"", "__import__"),
     "unknown method": ("[sweep]", '[sweep]\nmethod = "tsitoras5"', 'did you mean "tsitouras5"'),
     "unknown design": ("[sweep]", '[sweep]\ndesign = "sobl"', 'did you mean "sobol"'),
-    "not yet: hold": ("[sweep]", '[hold]\nsignals = ["u"]\nperiod = 0.1\n[sweep]', "not yet"),
+    "hold of no signal": ("[sweep]", '[hold]\nsignals = ["u"]\nperiod = 0.1\n[sweep]', "no such signal"),
 }
 
 

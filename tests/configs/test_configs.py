@@ -14,7 +14,7 @@ SAMPLES = 16384
 def verdicts(tmp_path_factory):
     folder = tmp_path_factory.mktemp("runs")
     found = {}
-    for name in ("mast", "van_der_pol", "cart"):
+    for name in ("mast", "van_der_pol", "cart", "mast_digital"):
         result = verbs.run(CONFIGS / f"{name}.toml", out=folder / name, samples=SAMPLES)
         assert result.exit_code == 0
         found[name] = result.document
@@ -26,7 +26,7 @@ def bound_named(verdict, name):
 
 
 def test_every_configuration_is_covered():
-    assert {path.stem for path in CONFIGS.glob("*.toml")} == {"mast", "van_der_pol", "cart"}
+    assert {path.stem for path in CONFIGS.glob("*.toml")} == {"mast", "van_der_pol", "cart", "mast_digital"}
 
 
 def test_mast(verdicts):
@@ -66,6 +66,19 @@ def test_cart(verdicts):
     assert contact["level_estimated"] == pytest.approx(0.0476, abs=1e-4)
     assert contact["level"] > 0.99 * contact["level_estimated"]
     assert contact["strength"] == "proved"
+
+
+def test_mast_digital(verdicts):
+    verdict = verdicts["mast_digital"]
+    # One period by the matrix exponential of the linearisation and a delay of half of it (computed independently).
+    assert verdict["sampled"]["spectral_radius"] == pytest.approx(0.932477, abs=1e-6)
+    assert verdict["stability"] == "stable"
+    counts = verdict["basin"]["counts"]
+    assert counts["converged"] + counts["escaped"] == SAMPLES
+    # The delay costs a part of the basin that the continuous loop has.
+    assert 0.43 < verdict["basin"]["fraction"] < verdicts["mast"]["basin"]["fraction"]
+    assert not any(bound["strength"] == "proved" for bound in verdict["bounds"])
+    assert "ball" in verdict["target"]
 
 
 @pytest.mark.parametrize("name", ["mast", "van_der_pol", "cart"])

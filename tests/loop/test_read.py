@@ -59,7 +59,7 @@ def only_fault_of(text):
     return faults[0]
 
 
-@pytest.mark.parametrize(("name", "n"), [("mast", 2), ("van_der_pol", 2), ("cart", 4)])
+@pytest.mark.parametrize(("name", "n"), [("mast", 2), ("van_der_pol", 2), ("cart", 4), ("mast_digital", 2)])
 def test_the_configurations_are_sound(name, n):
     configuration = read(CONFIGS / f"{name}.toml")
     assert configuration.loop.n == n
@@ -215,7 +215,6 @@ def test_one_fault_one_line(text, words):
 @pytest.mark.parametrize(
     ("text", "words"),
     [
-        (with_table('[hold]\nsignals = ["torque"]'), "[hold]: not yet supported by this version"),
         (with_table("[limits]\ntilt = [-1, 1]"), "[limits]: not yet supported by this version"),
         (with_table('[tables.drag]\ncsv = "drag.csv"'), "[tables]: not yet supported by this version"),
         (with_change("damping = 2", "damping = { value = 2, spread = [1, 3] }"), "spread is not yet supported"),

@@ -114,6 +114,7 @@ VERDICT = {
         "volume_interval": [3.1314, 3.1511],
         "volume_unit": "m · m/s",
         "samples": 262144,
+        "samples_wanted": 262144,
         "partial": False,
         "counts": {
             "absent": 0,

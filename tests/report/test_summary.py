@@ -56,8 +56,9 @@ def test_says_what_next_where_the_files_are_and_the_cautions(verdict):
     for caution in verdict["cautions"]:
         assert caution in joined
     verdict["basin"]["counts"] |= {"unresolved": 5, "failed": 2}
-    verdict["basin"]["partial"] = True
+    verdict["basin"] |= {"partial": True, "samples_wanted": 99_999}
     text = summary(verdict)
+    assert text.startswith(f"Partial sweep: the first {verdict['basin']['samples']:,} of 99,999 starts (simulated).")
     assert "Some starts are unresolved" in text
     assert "Some starts failed" in text
     assert "not complete" in text

@@ -16,6 +16,7 @@ from roa.kernel.outcomes import Outcome
 from roa.kernel.target import Target
 from roa.kernel.trajectories import Trajectories
 from roa.sweep import launch as launching
+from roa.sweep.means import Means
 from roa.sweep.plan import make_plan
 from roa.sweep.run_folder import RunFolder
 
@@ -56,12 +57,12 @@ class ClosedForm:
         )
 
 
-def sweep(path, samples=200, block_size=SIZE, jobs=1, lanes=None, plan=None):
+def sweep(path, samples=200, block_size=SIZE, jobs=1, lanes=None, plan=None, deadline=None):
     """Launch in this process; also the work of child processes that are to be killed."""
     compile_lanes, launching.compile_lanes = launching.compile_lanes, lambda *_: lanes or ClosedForm()
     try:
         folder = RunFolder(path)
-        launching.launch(plan or make(samples, block_size), folder, jobs)
+        launching.launch(plan or make(samples, block_size), folder, Means(jobs, deadline=deadline))
     finally:
         launching.compile_lanes = compile_lanes
     return folder

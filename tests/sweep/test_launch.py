@@ -13,6 +13,7 @@ from sweep import small
 from roa.errors import Interrupted, MachineError, UserError
 from roa.sweep import launch as launching
 from roa.sweep.header import Header
+from roa.sweep.means import Means
 from roa.sweep.progress import Progress
 from roa.sweep.run_folder import RunFolder
 from roa.sweep.stop import stop_on_signals
@@ -238,10 +239,13 @@ def sweep_with_little_room(path, limit):
         (path / "sentence").write_text("\n".join(error.faults))
 
 
-def test_no_jobs(tmp_path):
-    with pytest.raises(UserError, match="--jobs 0"):
-        small.sweep(tmp_path, jobs=0)
-    assert list(tmp_path.iterdir()) == []
+def test_means_that_cannot_be_granted():
+    with pytest.raises(UserError) as refused:
+        Means.granted(jobs=0, hours=0)
+    assert [fault.split(":")[0] for fault in refused.value.faults] == ["--jobs 0", "--hours 0"]
+    for hours in (-1.0, float("nan"), float("inf")):
+        with pytest.raises(UserError, match="must be a number above 0"):
+            Means.granted(hours=hours)
 
 
 def test_what_the_system_refuses_is_one_sentence(tmp_path, monkeypatch):

@@ -7,8 +7,8 @@ import pytest
 from sweep import small
 
 from roa.kernel.lanes import compile_lanes
-from roa.sweep import launch as launching
-from roa.sweep.block import blocks_of, simulate
+from roa.sweep import crew
+from roa.sweep.block import blocks_of
 from roa.sweep.executors.serial import run as serially
 
 SAMPLES = 3000
@@ -43,7 +43,7 @@ def test_order_of_blocks(tmp_path, plan, lanes, serial, monkeypatch):
         orders.append(random.sample(blocks := list(blocks), len(blocks)))
         return serially(task, orders[-1], jobs)
 
-    monkeypatch.setattr(launching.executors, "load", lambda name: shuffled)
+    monkeypatch.setattr(crew.executors, "load", lambda name: shuffled)
     assert small.datasets(small.sweep(tmp_path, plan=plan, lanes=lanes).sweep) == serial
     assert len(orders[0]) == 12
 
@@ -56,7 +56,7 @@ def test_size_of_blocks_changes_no_sample(tmp_path, plan, lanes, serial):
 
 def test_eight_or_eight_thousand_starts_a_lane(plan, lanes):
     def run(size):
-        pieces = [simulate(block, plan.design, lanes) for block in blocks_of(256_000, size)]
+        pieces = [lanes.run(plan.design.points(block.first, block.count)) for block in blocks_of(256_000, size)]
         return {name: np.concatenate([getattr(piece, name) for piece in pieces]).tobytes() for name in small.DATASETS}
 
     assert run(BLOCK) == run(256_000)

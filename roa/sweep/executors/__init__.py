@@ -30,6 +30,10 @@ class Executor(Protocol):
         ...
 
 
+class WorkersLost(Exception):
+    """A block ended two workers that ran it, the second one alone: it is not tried again."""
+
+
 def available() -> list[str]:
     """Return the names of the executors, sorted."""
     return sorted(module.name for module in pkgutil.iter_modules(__path__))
