@@ -28,6 +28,7 @@ from roa.basin.counterexample import (
 from roa.basin.intervals import clopper_pearson_upper, success_run_samples
 from roa.basin.ring_attempt import attempt_ring
 from roa.bound.bounds import Bounds
+from roa.bound.invariance_proof import prove_by_invariance
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import branch_and_bound, proof_budget, prover_of
@@ -148,6 +149,7 @@ def judge(
         or _leaves_the_domain(case)
         or _crosses_a_limit(case)
         or _proved(case, level, bounds)
+        or _proved_by_invariance(case, level)
         or _by_simulation(case)
     )
 
@@ -277,7 +279,8 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     if not case.limits.kept:
         return None
     for bound in bounds.stated:
-        if bound.strength is Strength.PROVED and level <= Decimal(bound.level):
+        same = bound.V is case.claimed.V and bound.inner is None
+        if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
             return case.judged(Result.PROVED, Decrease.PROVED, reason)
     if case.configuration.loop.hold is not None:  # a continuous V̇ never proves a sampled loop
@@ -294,6 +297,14 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         return None
     reason = f"{branch_and_bound(proof)} on the whole claimed set, which lies inside the domain."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
+
+
+def _proved_by_invariance(case: _Case, level: Decimal) -> Claim | None:
+    """Prove a claim of which only V̇ <= 0 is true; the decrease stays undecided, since V̇ < 0 is not what is proved."""
+    if case.witness is not None or not case.limits.kept:
+        return None
+    proof = prove_by_invariance(case.claimed.V, level)
+    return case.judged(Result.PROVED, Decrease.UNDECIDED, f"{proof.reason}.") if proof.is_proved else None
 
 
 def _ultimately(case: _Case, level: Decimal) -> Claim:
