@@ -244,7 +244,6 @@ def test_one_fault_one_line(text, words):
         (with_table('[sweep]\nstore = "outcomes"'), '"outcomes" is not yet supported by this version; use "all"'),
         *((with_table(f'[sweep]\ndesign = "{design}"'), f'"{design}" is not yet supported by this version; use "sobol"')
           for design in ("boundary",)),
-        (with_table('[sweep]\nmethod = "rodas4"'), '"rodas4" is not yet supported by this version; use "tsit'),
     ],
 )  # fmt: skip
 def test_not_yet_is_refused_by_name(text, words):
