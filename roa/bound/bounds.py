@@ -140,7 +140,8 @@ def _of_samples(V: LyapunovFunction) -> Bounds:
 def _convergence(V: LyapunovFunction, equilibrium: Equilibrium) -> Bounds:
     """The bounds within which all starts converge to the equilibrium."""
     if equilibrium.stability == "marginal":
-        return Bounds(V, (), "The equilibrium is only marginally stable in its linearisation: there is no certificate.")
+        where = "a multiplier on the unit circle" if V.loop.hold else "an eigenvalue on the imaginary axis"
+        return Bounds(V, (), f"The equilibrium has {where}: there is no certificate.")
     if equilibrium.stability == "unstable":
         return Bounds(V, (), "The equilibrium is unstable: nothing converges to it.")
     if isinstance(V, Quadratic) and positive_definite(V.enclosed_P) != "proved":

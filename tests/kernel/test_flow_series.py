@@ -39,10 +39,10 @@ def test_coefficients_are_those_of_the_solution(text):
     found = enclose(program, start[None], start[None], order=0).value[0]
     assert np.all(found.high - found.low < 1e-9)
     # The function by numpy, integrated by scipy at its tightest tolerance.
-    end = solve_ivp(lambda _, x: loop.rhs(x), (0, 0.1), start, "DOP853", rtol=1e-13, atol=1e-15).y[:, -1]
-    summed = 0.1 ** np.arange(13) @ found.middle.reshape(13, 2)
+    end = solve_ivp(lambda _, x: loop.rhs(x), (0, 0.05), start, "DOP853", rtol=1e-13, atol=1e-15).y[:, -1]
+    summed = 0.05 ** np.arange(13) @ found.middle.reshape(13, 2)
     np.testing.assert_allclose(summed, end, rtol=1e-11)
-    assert not np.allclose(0.1 ** np.arange(6) @ found.middle.reshape(13, 2)[:6], end, rtol=1e-11, atol=0)
+    assert not np.allclose(0.05 ** np.arange(5) @ found.middle.reshape(13, 2)[:5], end, rtol=1e-11, atol=0)
 
 
 def test_held_signal_is_a_constant_whatever_its_kink():
