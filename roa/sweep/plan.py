@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
@@ -13,7 +14,7 @@ from roa.kernel.target import Target
 from roa.loop.configuration import LARGEST_SEED, MOST_SAMPLES, Configuration, SweepTable
 from roa.loop.equilibrium import Equilibrium
 from roa.sweep import designs, fingerprint
-from roa.sweep.designs import Design
+from roa.sweep.designs import Answers, Design, RoundDesign
 
 if TYPE_CHECKING:
     from roa.bound.bounds import Bounds
@@ -21,6 +22,8 @@ if TYPE_CHECKING:
 # Starts of a block. Fewer cost time where lanes run empty at the end of a block (1.1 % at 4096, 0.3 % here); more
 # would be lost by a crash and delay a request to stop.
 BLOCK_SIZE = 16384
+# Of a design that refines in rounds: the rounds are small, and should still keep all workers busy.
+ROUND_BLOCK_SIZE = 4096
 # Independent replicates of a random design: enough for a spread between them that deserves a confidence interval.
 REPLICATES = 16
 
@@ -39,7 +42,9 @@ class Plan:
     fingerprint : str, hexadecimal
     fingerprint_parts : flat dict of JSON-able values, to name what differs
     integration : Integration
-    design : Design
+    design : Design or RoundDesign
+    looks : numbers of starts, rising, at which `enough` is asked before all are done; of a design that does not refine
+    enough : whether the answers so far, bool (m,), suffice; asked after every round but the last. A pure function
     """
 
     configuration: Configuration
@@ -52,7 +57,9 @@ class Plan:
     fingerprint: str
     fingerprint_parts: dict[str, Any]
     integration: Integration
-    design: Design
+    design: Design | RoundDesign
+    looks: tuple[int, ...] = ()
+    enough: Callable[[Answers], bool] | None = None
 
 
 def integration_of(table: SweepTable) -> Integration:
@@ -74,7 +81,7 @@ def make_plan(
     target: Target,
     samples: int | None = None,
     seed: int | None = None,
-    block_size: int = BLOCK_SIZE,
+    block_size: int | None = None,
 ) -> Plan:
     """Put a plan together; `samples` and `seed` take the place of the configuration's where they are given.
 
@@ -91,7 +98,9 @@ def make_plan(
     given = {key: value for key, value in instead.items() if value is not None}
     table = configuration.sweep.model_copy(update=given)
     configuration = replace(configuration, sweep=table)
-    design = designs.load(table.design)(configuration.loop.box, table.seed, REPLICATES, table.samples)
+    box = configuration.loop.box
+    design = designs.make(table.design, box, table.seed, REPLICATES, table.samples, equilibrium.x)
+    block_size = block_size or (ROUND_BLOCK_SIZE if design.in_rounds else BLOCK_SIZE)
     integration = integration_of(table)
     parts = {
         **fingerprint.configuration_parts(configuration.resolved()),
