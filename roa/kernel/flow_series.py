@@ -128,7 +128,7 @@ class FlowSeries:
                 return self._power(Power(base, exponent), base, exponent, k)
             case Call(function, (operand,)) if function in _SLOPES:
                 return self._function(tree, function, operand, k)
-        word = tree.function if isinstance(tree, Call) else "a comparison"
+        word = tree.function if isinstance(tree, Call) else "a look-up table"
         raise NotSmooth(f"{word} stands in the continuous part")
 
     def _product(self, a: int, b: int) -> int:
