@@ -8,22 +8,23 @@ from __future__ import annotations
 
 import shutil
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from dataclasses import replace
 
 from roa.errors import Interrupted, MachineError, UserError
 from roa.kernel.lanes import compile_lanes
-from roa.kernel.trajectories import Trajectories
 from roa.sweep import store
 from roa.sweep.block import Block, blocks_of
 from roa.sweep.crew import Crew
 from roa.sweep.finished import Finished, look_through
 from roa.sweep.header import Header
+from roa.sweep.kept import row_bytes
 from roa.sweep.means import Means
 from roa.sweep.plan import Plan
 from roa.sweep.progress import Both, Log, Progress
 from roa.sweep.run_folder import RunFolder, write_atomically
 from roa.sweep.simulation import Simulation
+from roa.sweep.standing import Standing
 from roa.sweep.stop import StopRequest, stop_on_signals
 
 
@@ -53,22 +54,31 @@ def launch(plan: Plan, folder: RunFolder, means: Means | None = None, progress: 
     """
     means = means or Means()
     progress = Both(progress or Progress(), Log(folder.log))
-    with stop_on_signals(means.deadline) as stop, _one_sentence(folder), folder.locked():
+    with ExitStack() as stack:
+        stop = stack.enter_context(stop_on_signals(means.deadline))
+        stack.enter_context(_one_sentence(folder))
+        stack.enter_context(folder.locked())
         header = _begin(plan, folder)
         finished = look_through(folder, header, progress.say)
+        standing = Standing(folder.status, finished.tally, plan.samples, means.command)
+        stack.enter_context(standing)
+        progress = Both(progress, standing)
         missing = [block for block in blocks_of(plan.samples, plan.block_size) if not finished.holds(block)]
         if missing:
             _require_space(plan, folder, missing)
-            if not _sweep(plan, folder, missing, means, stop, progress):
+            if not _sweep(plan, finished, missing, means, stop, progress):
+                standing.ends("stopped")
                 return False
             finished = replace(finished, separate=finished.separate | set(missing))
         if finished.merged_count < plan.samples:
             progress.say(f"merging {plan.samples:,} samples")
-            store.write_samples(folder.sweep, header, _all_rows(finished, stop))
+            standing.enters("merging")
+            store.write_samples(folder.sweep, header, _all_columns(finished, stop))
             progress.say(f"{folder.sweep} is written")
         _remove_blocks(finished)
         if stop.signalled:
             raise _interrupted(folder)
+        standing.ends("done")
     return True
 
 
@@ -100,7 +110,7 @@ def _begin(plan: Plan, folder: RunFolder) -> Header:
 
 def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
     """Refuse to begin what the disk cannot hold: the missing blocks, and all of the samples merged."""
-    row = 8 * (3 * plan.configuration.loop.n + 1) + 6
+    row = row_bytes(plan.configuration.sweep.store, plan.configuration.loop.n)
     needed = row * (sum(block.count for block in missing) + plan.samples)
     free = shutil.disk_usage(folder.path).free
     if needed > free:
@@ -111,17 +121,19 @@ def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
 
 
 def _sweep(
-    plan: Plan, folder: RunFolder, missing: list[Block], means: Means, stop: StopRequest, progress: Progress
+    plan: Plan, finished: Finished, missing: list[Block], means: Means, stop: StopRequest, progress: Progress
 ) -> bool:
     """Run the missing blocks and store each as it finishes; return whether all are."""
-    starts = sum(block.count for block in missing)
+    folder, starts = finished.folder, sum(block.count for block in missing)
     crew = Crew.of(means, len(missing))
     progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {crew.words}")
     lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
     progress.begin(plan.samples - starts, plan.samples)
+    kept = plan.configuration.sweep.store
     try:
         for block, rows in crew.run(Simulation(plan, lanes), missing, stop, progress.say):
-            write_atomically(folder.blocks / block.file_name, store.encode_block(block, plan.fingerprint, rows))
+            write_atomically(folder.blocks / block.file_name, store.encode_block(block, plan.fingerprint, rows, kept))
+            finished.tally.add(block.first, rows.outcome)
             progress.add(rows.outcome)
             starts -= block.count
     finally:
@@ -139,11 +151,11 @@ def _sweep(
     return True
 
 
-def _all_rows(finished: Finished, stop: StopRequest) -> Iterator[tuple[Block, Trajectories]]:
+def _all_columns(finished: Finished, stop: StopRequest) -> Iterator[tuple[Block, store.Columns]]:
     for block in blocks_of(finished.header.samples, finished.header.block_size):
         if stop.signalled:
             raise _interrupted(finished.folder)
-        yield block, finished.rows(block)
+        yield block, finished.columns(block)
 
 
 def _remove_blocks(finished: Finished) -> None:
