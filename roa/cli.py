@@ -145,14 +145,16 @@ def _parser() -> argparse.ArgumentParser:
     folder: dict[str, Any] = {"metavar": "RUN", "help": "folder of a run"}
     means = ("--jobs", "--hours", "--executor")
     verb("init", "write a commented configuration to start from").add_argument("file", metavar="FILE")
-    verb("check", "is it sound, and what will it cost", "--samples", "--seed", "--jobs").add_argument(
+    verb("check", "is it sound, and what will it cost", "--samples", "--seed", "--jobs", "--quick").add_argument(
         "config", **config
     )
     for name, text in (("run", "the whole job: bound, sweep, comparison, figures, report, verdict"),
                        ("sweep", "the simulation alone")):  # fmt: skip
-        verb(name, text, "--out", "--samples", "--seed", *means).add_argument("config", **config)
-    verb("bound", "the analytic estimates alone", "--out", "--seed", "--jobs").add_argument("config", **config)
-    verb("validate", "judge the claimed bound", "--out", "--seed", "--jobs").add_argument("config", **config)
+        verb(name, text, "--out", "--samples", "--seed", "--quick", *means).add_argument("config", **config)
+    verb("bound", "the analytic estimates alone", "--out", "--seed", "--jobs", "--quick").add_argument(
+        "config", **config
+    )
+    verb("validate", "judge the claimed bound", "--out", "--seed", "--jobs", "--quick").add_argument("config", **config)
     verb("resume", "carry on a sweep that stopped, or extend one", "--samples", *means).add_argument("run", **folder)
     replay = verb("replay", "integrate one start again by an independent integrator", "--jobs")
     replay.add_argument("source", metavar="RUN|CONFIG", help="a run with INDEX, or a configuration with --from")
@@ -221,6 +223,7 @@ _OPTIONS: dict[str, dict[str, Any]] = {
         "type": _whole(0, 2**63 - 1, "from 0 to 2**63 - 1"),
         "help": "seed of the design and of every search",
     },
+    "--quick": {"action": "store_true", "help": "leave out the search for better bounds"},
 }
 
 if __name__ == "__main__":

@@ -42,6 +42,7 @@ class Preparation:
     progress : told what takes a while
     jobs : threads for what is simulated beside the sweep; None for as many as this process may use processors
     target, block_size : those of a stored run, which are then not derived again
+    quick : leave out the search for better bounds
 
     Raises
     ------
@@ -58,12 +59,13 @@ class Preparation:
         target: Target | None = None,
         jobs: int | None = None,
         block_size: int | None = None,
+        quick: bool = False,
     ) -> None:
         from roa.loop.equilibrium import check_V, find_equilibrium, require_given_V, require_stable
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
-        self.configuration = configuration
+        self.configuration = configuration.quick() if quick else configuration
         self.progress = progress or Progress()
         self._samples, self._seed, self._stored_target, self._jobs = samples, seed, target, jobs
         self._block_size = block_size
@@ -82,7 +84,7 @@ class Preparation:
 
         if not is_kept():
             self.progress.say("compiling the prover (once on this machine, about half a minute)")
-        return derive_bounds(self.configuration, self.equilibrium)
+        return derive_bounds(self.configuration, self.equilibrium, self.progress.say)
 
     @cached_property
     def pilot(self) -> Pilot:

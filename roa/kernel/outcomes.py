@@ -27,6 +27,9 @@ class Outcome(IntEnum):
         return _SENTENCES[self]
 
 
+# The basin is all starts that converge without leaving the escape box; limits are a question of their own.
+IN_BASIN = (Outcome.CONVERGED, Outcome.CONVERGED_OVER_LIMIT)
+
 _SENTENCES = {
     Outcome.ABSENT: "no result stored",
     Outcome.CONVERGED: "entered the target set",

@@ -30,7 +30,7 @@ TABLES = (
     "verdict",
 )  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
-BOUND_KEYS = ("Q", "P", "V", "level", "inner")
+BOUND_KEYS = ("Q", "P", "V", "level", "inner", "search", "degree", "boxes")
 
 TableT = TypeVar("TableT", bound=BaseModel)
 
@@ -168,8 +168,8 @@ def _bound_table(
     table = _checked("bound", BoundTable, rest, BOUND_KEYS, faults)
     if "V" in content:
         tree = _lyapunov_formula(content["V"], tables, loop, faults)
-        levels = {"level": table.level, "inner": table.inner} if table else {}
-        table = BoundTable(V=tree, V_text=content["V"], **levels) if table and tree else None
+        formula = {"Q": None, "P": None, "V": tree, "V_text": content["V"]}
+        table = table.model_copy(update=formula) if table and tree else None
     if table and loop:
         _check_matrices(table, loop.n, faults)
     return table

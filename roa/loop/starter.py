@@ -51,6 +51,7 @@ Q = "identity"              # from A'P + PA = -Q; or "domain", or a matrix [[2, 
 # V = "depth**2 + depth*speed + speed**2"   # or a formula in states and parameters, zero at the equilibrium
 # level = 0.05              # the claim that `roa validate` judges: {V <= level} lies in the basin
 # inner = 0.001             # or only: whatever starts in {V <= level} ends in {V <= inner} (dead zone, disturbance)
+# search = ["quadratic"]    # what else is derived: quadratic, polynomial, no_return; unasked, as the states afford
 
 [sweep]                     # the simulation
 design  = "sobol"           # or "grid"

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
 
+import numpy as np
+
 from roa.errors import MachineError
 from roa.kernel.trajectories import Trajectories
-from roa.sweep import store
+from roa.sweep import designs, store
 from roa.sweep.block import Block, blocks_of
+from roa.sweep.designs import Answers
 from roa.sweep.header import Header
 from roa.sweep.run_folder import RunFolder
 from roa.sweep.samples import Samples, Stretch
@@ -44,6 +47,11 @@ class Finished:
         """Number of samples in `sweep.h5`."""
         return self.merged.n if self.merged else 0
 
+    @property
+    def is_merged(self) -> bool:
+        """Whether `sweep.h5` holds the whole sweep; one in rounds may have fewer samples than were asked for."""
+        return self.merged is not None and self.merged.attributes["asked"] == self.header.asked
+
     def holds(self, block: Block) -> bool:
         """Whether nothing of the block is left to do."""
         return block.stop <= self.merged_count or block in self.separate
@@ -74,6 +82,10 @@ class Finished:
             raise MachineError(f"{path}: {columns}; `{self.folder.resume_command}` computes it again")
         return columns
 
+    def answers(self, blocks: Iterable[Block]) -> Answers:
+        """Return of the starts of finished blocks whether they lie in the basin, bool (m,)."""
+        return np.concatenate([self.rows(block).in_basin for block in blocks])
+
 
 def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) -> Finished:
     """Find what is finished; files in `blocks/` that cannot be used are named to `say` and left where they are.
@@ -84,7 +96,7 @@ def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) 
         `sweep.h5` is damaged or belongs to another run.
     """
     merged = _merged(folder, header)
-    wanted = {block.file_name: block for block in blocks_of(header.samples, header.block_size)}
+    wanted = {block.file_name: block for block in _blocks(folder, header)}
     separate = set()
     tally = Tally(header.replicates)
     for first in range(0, merged.n if merged else 0, AT_ONCE):
@@ -105,6 +117,17 @@ def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) 
     return Finished(folder, header, merged, frozenset(separate), tally)
 
 
+def _blocks(folder: RunFolder, header: Header) -> Iterator[Block]:
+    """Yield the blocks of a sweep in their order; of one in rounds, whose blocks follow from results, those stored."""
+    if not designs.load(header.design).in_rounds:
+        yield from blocks_of(header.samples, header.block_size)
+        return
+    for path in sorted(folder.blocks.glob("block-*.h5")):
+        block = store.block_of(path)
+        if block is not None:
+            yield block
+
+
 def open_partial(folder: RunFolder) -> Samples:
     """Open the longest complete prefix of a sweep that is under way, or all of one that is done.
 
@@ -117,6 +140,8 @@ def open_partial(folder: RunFolder) -> Samples:
     """
     header = Header.read(folder.plan)
     finished = look_through(folder, header, say=lambda sentence: None)
+    if finished.merged is not None and finished.is_merged:
+        return finished.merged
     return Samples(header, list(_prefix(finished)))
 
 
@@ -124,10 +149,10 @@ def _prefix(finished: Finished) -> Iterator[Stretch]:
     reached = finished.merged_count
     if finished.merged is not None:
         yield Stretch(0, reached, finished.merged.read)
-    for block in blocks_of(finished.header.samples, finished.header.block_size):
+    for block in _blocks(finished.folder, finished.header):
         if block.stop <= reached:
             continue
-        if block not in finished.separate:
+        if block not in finished.separate or block.first > reached:
             return
         # The first block beyond an extended sweep may hold the last samples of `sweep.h5` once more.
         skip = max(reached - block.first, 0)

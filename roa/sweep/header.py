@@ -36,6 +36,7 @@ class Header:
     fingerprint, fingerprint_parts : what changes results
     seed, design, interval, replicates, block_size, samples : how starts are drawn and how many there shall be
     store : "all", or "outcomes" for outcome and time alone
+    asked : samples asked for; a sweep in rounds may have ended with fewer, and then `sweep.h5` says fewer in `samples`
     target : what entering the target set means, in words and numbers
     states, units : length n
     V : the Lyapunov function in words, or its formula
@@ -58,6 +59,7 @@ class Header:
     block_size: int
     samples: int
     store: str
+    asked: int
     created: str
     platform: str
     target: str
@@ -88,6 +90,7 @@ class Header:
             block_size=plan.block_size,
             samples=plan.samples,
             store=configuration.sweep.store,
+            asked=plan.configuration.sweep.samples,
             created=datetime.now(UTC).isoformat(timespec="seconds"),
             platform=platform.platform(),
             target=plan.target.words,

@@ -18,7 +18,7 @@ from roa.kernel.outcomes import Outcome
 from roa.kernel.target import Target
 from roa.loop.equilibrium import Equilibrium, other_equilibria
 from roa.loop.model import Loop
-from roa.sweep import designs
+from roa.sweep.designs.sobol import Sobol
 
 Array = NDArray[np.float64]
 
@@ -46,7 +46,7 @@ class Pilot:
 
 def run_pilot(loop: Loop, equilibrium: Equilibrium, target: Target, integration: Integration) -> Pilot:
     """Run the pilot for a target set without other equilibria."""
-    starts = designs.load("sobol")(loop.box, SEED, 1, STARTS).points(0, STARTS)
+    starts = Sobol(loop.box, SEED, 1, STARTS).points(0, STARTS)
     trajectories = compile_lanes(loop, target, integration).run(starts)
     lingering = trajectories.final[trajectories.outcome == Outcome.UNRESOLVED]
     inside = other_equilibria(loop, equilibrium, starts)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
@@ -14,7 +15,7 @@ from roa.kernel.target import Target
 from roa.loop.configuration import LARGEST_SEED, MOST_SAMPLES, Configuration, SweepTable
 from roa.loop.equilibrium import Equilibrium
 from roa.sweep import designs, fingerprint
-from roa.sweep.designs import Design
+from roa.sweep.designs import Answers, Design, RoundDesign
 from roa.sweep.kept import row_bytes
 
 if TYPE_CHECKING:
@@ -26,6 +27,8 @@ if TYPE_CHECKING:
 BLOCK_STEPS, MOST_STARTS, FEWEST_STARTS = 2**24, 2**17, 2**8
 # What a block may take on the disk, bytes.
 MOST_BYTES = 64e6
+# Of a design that refines in rounds: the rounds are small, and should still keep all workers busy.
+ROUND_BLOCK_SIZE = 4096
 # Independent replicates of a random design: enough for a spread between them that deserves a confidence interval.
 REPLICATES = 16
 
@@ -44,7 +47,9 @@ class Plan:
     fingerprint : str, hexadecimal
     fingerprint_parts : flat dict of JSON-able values, to name what differs
     integration : Integration
-    design : Design
+    design : Design or RoundDesign
+    looks : numbers of starts, rising, at which `enough` is asked before all are done; of a design that does not refine
+    enough : whether the answers so far, bool (m,), suffice; asked after every round but the last. A pure function
     """
 
     configuration: Configuration
@@ -57,7 +62,9 @@ class Plan:
     fingerprint: str
     fingerprint_parts: dict[str, Any]
     integration: Integration
-    design: Design
+    design: Design | RoundDesign
+    looks: tuple[int, ...] = ()
+    enough: Callable[[Answers], bool] | None = None
 
 
 def integration_of(table: SweepTable) -> Integration:
@@ -111,9 +118,16 @@ def make_plan(
     given = {key: value for key, value in instead.items() if value is not None}
     table = configuration.sweep.model_copy(update=given)
     configuration = replace(configuration, sweep=table)
-    design = designs.load(table.design)(configuration.loop.box, table.seed, REPLICATES, table.samples)
+    box = configuration.loop.box
+    design = designs.make(table.design, box, table.seed, REPLICATES, table.samples, equilibrium.x)
+    if design.in_rounds and table.store == "outcomes":
+        raise UserError(
+            f'{configuration.source}: [sweep] store = "outcomes": a start of design = "{table.design}" does not follow '
+            'from its index alone; use store = "all"'
+        )
+    fitting = fitting_block_size(steps, configuration.loop.n)
+    block_size = block_size or (min(ROUND_BLOCK_SIZE, fitting) if design.in_rounds else fitting)
     integration = integration_of(table)
-    block_size = block_size or fitting_block_size(steps, configuration.loop.n)
     parts = {
         **fingerprint.configuration_parts(configuration.resolved()),
         **{f"design.{key}": value for key, value in design.parts.items()},

@@ -19,10 +19,12 @@ Starts = Callable[[int, int], Array]
 def starts_of(header: Header) -> Starts:
     """Return what makes the starts of a sweep again, bit for bit."""
     box = tuple((float(low), float(high)) for low, high in header.fingerprint_parts["config.domain"])
-    return _starts(header.design, box, header.seed, header.replicates, header.samples)
+    return _starts(header.design, box, header.seed, header.replicates, header.asked)
 
 
 # A design takes milliseconds to make, and every block of a run is read with the same.
 @lru_cache(maxsize=4)
 def _starts(name: str, box: tuple[tuple[float, float], ...], seed: int, replicates: int, samples: int) -> Starts:
-    return designs.load(name)(np.array(box), seed, replicates, samples).points
+    design = designs.load(name)
+    assert not design.in_rounds  # refused before the sweep
+    return design(np.array(box), seed, replicates, samples).points

@@ -62,19 +62,19 @@ def read_status(folder: RunFolder) -> Status:
     said = _said(folder.status)
     owner = lock.owner(folder.lock)
     alive = owner is not None and lock.lives(owner) is not False
-    done = _done(folder, header, said)
-    state = _state(said, alive, done, header.samples)
+    done, samples = _done(folder, header, said)
+    state = _state(said, alive, done, samples)
     running = state == "running"
     new, seconds = said.get("new", 0), said.get("seconds", 0.0)
     rate = new / seconds if new and seconds > 0 else None
-    left = (header.samples - done) / rate if rate and running else None
+    left = (samples - done) / rate if rate and running else None
     updated = said.get("updated")
     age = None if updated is None else (datetime.now(UTC) - datetime.fromisoformat(updated)).total_seconds()
     return Status(
         state=state,
         phase=said.get("phase", "") if running else "",
         done=done,
-        samples=header.samples,
+        samples=samples,
         rate=rate,
         left=left,
         counts=said.get("counts", {}),
@@ -104,17 +104,23 @@ def _state(said: dict[str, Any], alive: bool, done: int, samples: int) -> str:
     return str(said.get("state")) if said.get("state") in ("stopped", "failed") else "dead"
 
 
-def _done(folder: RunFolder, header: Header, said: dict[str, Any]) -> int:
-    """Count the starts that are stored: by the names of the blocks, since a file that exists is complete."""
-    merged = store.read_header(folder.sweep).samples if folder.sweep.exists() else 0
-    if getattr(
-        designs.load(header.design), "in_rounds", False
-    ):  # their blocks follow from results, so names alone say too little
-        return max(merged, int(said.get("done", 0)))
+def _done(folder: RunFolder, header: Header, said: dict[str, Any]) -> tuple[int, int]:
+    """Return how many starts are stored, and how many there shall be.
+
+    Stored are those whose block has a file, since a file that exists is complete.
+    """
+    merged = 0
+    if folder.sweep.exists():
+        whole = store.read_header(folder.sweep)
+        merged = whole.samples
+        if whole.asked == header.asked:  # a sweep in rounds may be done with fewer starts than it was granted
+            return merged, merged
+    if designs.load(header.design).in_rounds:  # the names of their blocks alone say too little
+        return max(merged, int(said.get("done", 0))), header.samples
     done = merged
     for path in folder.blocks.glob("block-*.h5"):
         if match := BLOCK.fullmatch(path.name):
             first = int(match[1]) * header.block_size
             stop = min(first + header.block_size, header.samples)
             done += max(stop - max(first, merged), 0)
-    return done
+    return done, header.samples

@@ -88,6 +88,16 @@ def read_block(path: Path, block: Block, header: Header) -> Columns | str:
         return f"is damaged ({_first_line(error)})"
 
 
+def block_of(path: Path) -> Block | None:
+    """Return which block a file says that it holds; None where it says nothing of the kind."""
+    try:
+        with h5py.File(path, "r", locking="best-effort") as file:
+            block = Block(int(path.stem.rpartition("-")[2]), int(file.attrs["first"]), int(file.attrs["count"]))
+    except (OSError, RuntimeError, KeyError, ValueError, TypeError):
+        return None
+    return block if block.file_name == path.name else None
+
+
 def write_samples(path: Path, header: Header, blocks: Iterable[tuple[Block, Columns]]) -> None:
     """Write `sweep.h5` from the columns of all blocks in their order; one block is in memory at a time.
 

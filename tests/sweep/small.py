@@ -73,3 +73,9 @@ def datasets(path):
     with h5py.File(path, "r") as file:
         found = {f"samples/{name}": column[()].tobytes() for name, column in file["samples"].items()}
         return found | {f"bound/{name}": file["bound"][name][()].tobytes() for name in file["bound"]}
+
+
+def file_identity(path):
+    """What changes when a file is written again; not the time of its last reading."""
+    status = path.stat()
+    return status.st_ino, status.st_mtime_ns, status.st_size

@@ -77,10 +77,10 @@ class TestExtension:
 class TestAgain:
     def test_finished_run_does_nothing(self, tmp_path, monkeypatch):
         folder = small.sweep(tmp_path)
-        before = folder.sweep.stat()
+        before = small.file_identity(folder.sweep)
         monkeypatch.setattr(launching, "compile_lanes", None)  # would fail if it were called
         launching.launch(small.make(), folder)
-        assert folder.sweep.stat() == before
+        assert small.file_identity(folder.sweep) == before
 
     def test_blocks_left_by_a_merge_that_was_killed_are_removed(self, tmp_path):
         folder = small.sweep(tmp_path)
@@ -169,7 +169,13 @@ class TestStop:
             patch.setattr(launching.Finished, "columns", interrupted)
             with pytest.raises(Interrupted):
                 small.sweep(tmp_path)
-        assert sorted(entry.name for entry in tmp_path.iterdir()) == ["blocks", "config.toml", "plan.json", "run.log"]
+        assert sorted(entry.name for entry in tmp_path.iterdir()) == [
+            "blocks",
+            "config.toml",
+            "plan.json",
+            "run.log",
+            "status.json",
+        ]
         watched = Watched()
         small.sweep(tmp_path, lanes=watched)
         assert watched.calls == []
@@ -249,7 +255,7 @@ def test_means_that_cannot_be_granted():
 
 
 def test_what_the_system_refuses_is_one_sentence(tmp_path, monkeypatch):
-    def refused(finished):
+    def refused(*_):
         raise PermissionError(13, "Permission denied", "blocks")
 
     monkeypatch.setattr(launching, "_remove_blocks", refused)
