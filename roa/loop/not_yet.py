@@ -7,7 +7,6 @@ from __future__ import annotations
 
 TABLES = {
     "limits": "limits on states and signals",
-    "tables": "look-up tables",
 }
 
 KEYS = {
