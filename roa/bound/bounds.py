@@ -147,7 +147,7 @@ def _of_the_configured(configuration: Configuration, equilibrium: Equilibrium) -
 def _rings(V: LyapunovFunction, configuration: Configuration, equilibrium: Equilibrium) -> list[Bound]:
     """The ultimate bounds, where there are disturbances or a residual set is asked for."""
     inner = configuration.bound.inner
-    if (inner is None and not V.loop.disturbances) or not _may_bound(V):
+    if (inner is None and not V.loop.disturbances) or V.loop.hold is not None or not _may_bound(V):
         return []
     ring = ultimate_bound(V, inner)
     if inner is not None and ring.strength is not Strength.PROVED:
