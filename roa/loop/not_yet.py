@@ -19,7 +19,6 @@ KEYS = {
 }
 
 VALUES = {
-    ("sweep", "store", "outcomes"): 'use "all"',
     ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
 }
 
