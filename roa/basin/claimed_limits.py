@@ -50,7 +50,8 @@ def limits_of(claimed: ClaimedSet, level: Decimal, rng: np.random.Generator) -> 
     loop, V = claimed.loop, claimed.V
     if not loop.limits:
         return LimitsOfSet(True)
-    prover = LimitProver(V) if isinstance(V, Quadratic) else None
+    # Between samples a trajectory of a sampled loop may leave the set that a proof at the samples keeps it in.
+    prover = LimitProver(V) if isinstance(V, Quadratic) and loop.hold is None else None
     if prover is not None and prover.holds(level):
         return LimitsOfSet(True)
     beyond = _points_beyond(claimed, rng)

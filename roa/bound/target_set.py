@@ -52,6 +52,8 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
         note = "no level of the configured V is proved" if best is None else "the configured V is no quadratic"
         best = _bound_of_another_shape(configuration, equilibrium)
         note += "" if best is None else '; the V meant here is that of A\'P + PA = -Q with Q = "domain"'
+    if best is not None and loop.hold is not None and loop.hold.delay:
+        best, note = None, "what is proved with a delay is of the state together with the command that still acts"
     if best is not None and loop.limits:
         best, note = _within_limits(best, note)
     level = 0.0 if best is None else _safe_level(best)
@@ -127,6 +129,8 @@ def _bound_of_another_shape(configuration: Configuration, equilibrium: Equilibri
 
 def _within_limits(best: Bound, note: str) -> tuple[Bound | None, str]:
     """Lower a proved bound until its set is proved to lie within the limits, and say so."""
+    if best.V.loop.hold is not None:
+        return None, "; ".join(words for words in (note, "between samples nothing is proved about the limits") if words)
     if not isinstance(best.V, Quadratic):
         return best, note
     level = LimitProver(best.V).largest(best.level)
