@@ -165,9 +165,9 @@ class _Case:
     def witness(self) -> Array | None:
         """A point of the set with V̇ > 0, if one was found.
 
-        Not looked for where a ring is all that is claimed, nor with a hold, where V̇ means nothing.
+        With a hold: a start after which V is greater one period later. Not looked for where a ring is claimed.
         """
-        if self.configuration.bound.inner is not None or self.configuration.loop.hold is not None:
+        if self.configuration.bound.inner is not None:
             return None
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
 
@@ -247,8 +247,6 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
             return case.judged(Result.PROVED, Decrease.PROVED, reason)
-    if case.configuration.loop.hold is not None:  # a continuous V̇ never proves a sampled loop
-        return None
     V, contact = case.claimed.V, bounds.named("contact level")
     # Above the estimate, which errs upwards only, there are points with V̇ >= 0 and no proof to be had.
     if contact is None or level > Decimal(contact.level_estimated or contact.level):
@@ -259,7 +257,7 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     proof = prover.prove(level, proof_budget(prover))
     if proof.answer is not Answer.PROVED:
         return None
-    reason = f"{branch_and_bound(proof)} on the whole claimed set, which lies inside the domain."
+    reason = f"{branch_and_bound(V, proof)} on the whole claimed set, which lies inside the domain."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
 
 
@@ -330,7 +328,8 @@ def _by_draws(case: _Case, trajectories: Trajectories) -> Claim:
     if not supported:
         reason += f", where {_percent_up(1 - verdict.fraction)} is allowed"
     if case.decrease is Decrease.REFUTED:
-        reason += "; V̇ > 0 at a point of the set, so the set may be safe but the argument for it is wrong"
+        grows = "V̇ > 0" if case.configuration.loop.hold is None else "V grows over a period"
+        reason += f"; {grows} at a point of the set, so the set may be safe but the argument for it is wrong"
     return case.judged(
         Result.SUPPORTED if supported else Result.NOT_SETTLED,
         case.decrease,
