@@ -105,6 +105,7 @@ class SweepTable(_Table):
     seed : of the scrambling
     horizon, longest : s; a trajectory unresolved at the horizon is followed further, up to `longest`
     escape : size of the escape box in domain sizes
+    store : "all", or "outcomes" for outcome and time alone
     method : name of an integration method, or "auto"
     rtol, atol : tolerances of one step, relative and in state units
     ball_radius : of a target ball, in half-widths of the domain
@@ -121,6 +122,7 @@ class SweepTable(_Table):
     horizon: _Positive = 60.0
     longest: _Positive = 60.0 * LONGEST_PER_HORIZON
     escape: _AtLeastOne = 10.0
+    store: Annotated[str, BeforeValidator(word("all", "outcomes"))] = "all"
     method: Annotated[str, BeforeValidator(word())] = "auto"
     rtol: Annotated[
         float,
@@ -210,6 +212,9 @@ class Configuration:
             "equilibrium": [decimal_text(value) for value in loop.guess],
             **_resolved_hold(loop.hold),
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "limits": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.limits.items())
+            },
             "disturbance": {
                 name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
             },

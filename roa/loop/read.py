@@ -27,8 +27,8 @@ from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
 TABLES = (
-    "states", "parameters", "signals", "tables", "dynamics", "equilibrium", "domain", "hold", "disturbance", "bound",
-    "sweep", "verdict", "files",
+    "states", "parameters", "signals", "tables", "dynamics", "equilibrium", "domain", "limits", "hold", "disturbance",
+    "bound", "sweep", "verdict", "files",
 )  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
 BOUND_KEYS = ("Q", "P", "V", "level", "inner", "search", "degree", "boxes")
@@ -163,15 +163,12 @@ def _checked(
 
 def _sweep_table(content: dict[str, Any], faults: Faults) -> SweepTable | None:
     early = False
-    for key in ("store", "design", "method"):
+    for key in ("design", "method"):
         value = content.get(key)
         if isinstance(value, str) and ("sweep", key, value) in not_yet.VALUES:
             faults.add("sweep", key, not_yet.value("sweep", key, value), value)
             early = True
-    if content.get("store", "all") not in ("all", "outcomes"):
-        faults.add("sweep", "store", 'must be "all"', content["store"])
-    rest = {key: value for key, value in content.items() if key != "store"}
-    table = _checked("sweep", SweepTable, rest, SweepTable.model_fields, faults)
+    table = _checked("sweep", SweepTable, content, SweepTable.model_fields, faults)
     return None if early else table
 
 
