@@ -50,7 +50,7 @@ def other_entries(evidence: Evidence) -> list[Artist]:
         entries.append(rest_mark([], [], label="another stable equilibrium"))
     if evidence.limits:
         look = {"color": LIMIT.colour, "linestyle": LIMIT.dash, "linewidth": LIMIT.width}
-        entries.append(Line2D([], [], label="limit on a state", **look))  # type: ignore[arg-type]
+        entries.append(Line2D([], [], label="limit on a state or signal", **look))  # type: ignore[arg-type]
     if evidence.rising and evidence.V is not None:
         look = {"facecolor": PAPER, "edgecolor": RISING.edge.colour, "hatch": RISING.hatch, "linewidth": 0.4}
         entries.append(Patch(label="V̇ ≥ 0 (estimated)", **look))  # type: ignore[arg-type]

@@ -54,7 +54,7 @@ def overlay(axes: Axes, evidence: Evidence, traces: Sequence[Trace] | None = Non
         layers.draw_rising(axes, plane, evidence.V)
     layers.draw_traces(axes, plane, traces)
     layers.draw_level_sets(axes, plane, evidence.level_sets)
-    layers.draw_limits(axes, plane, evidence.limits)
+    layers.draw_limits(axes, plane, evidence.loop)
     layers.draw_rests(axes, plane, evidence.rests)
     layers.draw_equilibrium(axes, plane)
     layers.draw_witness(axes, plane, evidence.witness)
