@@ -25,7 +25,11 @@ def toml(
     sweep: str = "",
     verdict: str = "",
 ) -> str:
-    """Write a configuration; `hold`, `bound`, `sweep` and `verdict` are lines of those tables."""
+    """Write a configuration; `hold`, `bound`, `sweep` and `verdict` are lines of those tables.
+
+    Nothing is searched for unless `bound` says so.
+    """
+    bound += "" if "search" in bound else "\nsearch = []"
     lines = ['title = "a loop of the tests"', "[states]", *(f'{s} = "1"' for s in states)]
     lines += ["[parameters]", *(f"{name} = {value!r}" for name, value in (parameters or {}).items())]
     lines += ["[signals]", *(f'{name} = "{text}"' for name, text in (signals or {}).items())]

@@ -27,6 +27,7 @@ from roa.basin.counterexample import (
 from roa.basin.intervals import clopper_pearson_upper, success_run_samples
 from roa.basin.ring_attempt import attempt_ring
 from roa.bound.bounds import Bounds
+from roa.bound.invariance_proof import prove_by_invariance
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import branch_and_bound, proof_budget, prover_of
@@ -138,7 +139,11 @@ def judge(
     if configuration.bound.inner is not None or configuration.loop.disturbances:
         return _not_positive_definite(case) or _leaves_the_domain(case) or _ultimately(case, level)
     return (
-        _not_positive_definite(case) or _leaves_the_domain(case) or _proved(case, level, bounds) or _by_simulation(case)
+        _not_positive_definite(case)
+        or _leaves_the_domain(case)
+        or _proved(case, level, bounds)
+        or _proved_by_invariance(case, level)
+        or _by_simulation(case)
     )
 
 
@@ -238,7 +243,8 @@ def _leaves_the_domain(case: _Case) -> Claim | None:
 def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     """Prove the claim by a bound that is proved already, or by branch and bound at the very level."""
     for bound in bounds.stated:
-        if bound.strength is Strength.PROVED and level <= Decimal(bound.level):
+        same = bound.V is case.claimed.V and bound.inner is None
+        if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
             return case.judged(Result.PROVED, Decrease.PROVED, reason)
     if case.configuration.loop.hold is not None:  # a continuous V̇ never proves a sampled loop
@@ -255,6 +261,14 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         return None
     reason = f"{branch_and_bound(proof)} on the whole claimed set, which lies inside the domain."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
+
+
+def _proved_by_invariance(case: _Case, level: Decimal) -> Claim | None:
+    """Prove a claim of which only V̇ <= 0 is true; the decrease stays undecided, since V̇ < 0 is not what is proved."""
+    if case.witness is not None:
+        return None
+    proof = prove_by_invariance(case.claimed.V, level)
+    return case.judged(Result.PROVED, Decrease.UNDECIDED, f"{proof.reason}.") if proof.is_proved else None
 
 
 def _ultimately(case: _Case, level: Decimal) -> Claim:

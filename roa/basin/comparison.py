@@ -2,18 +2,27 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from roa.basin.intervals import Interval
 from roa.basin.share import Share
 from roa.basin.size import Basin
+from roa.basin.tally import in_rounds
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.statement import Bound
 from roa.bound.volume import fits_domain, volume_inside
+from roa.loop.model import Loop
+from roa.sweep.designs.sobol import Sobol
 from roa.sweep.samples import Samples
+
+Array = NDArray[np.float64]
+
+# Points that measure a bound where the starts of the sweep are not spread evenly; of no sweep: a seed of their own.
+POINTS, REPLICATES, SEED = 2**17, 16, 2**61 - 3
 
 
 @dataclass(frozen=True)
@@ -51,13 +60,21 @@ def compare(bounds: Sequence[Bound], basin: Basin, samples: Samples) -> tuple[Co
     two then gets half of the doubt (Bonferroni), so that nothing is assumed of their dependence.
     """
     sampled = [bound for bound in bounds if bound.level > 0 and not _is_whole_ellipsoid(bound)]
-    shares = {bound.name: Share(samples.design, samples.replicates) for bound in sampled}
-    if sampled:
-        for first, trajectories in samples.chunks():
-            for bound in sampled:
-                inside = bound.V.value(trajectories.initial) <= bound.level
-                shares[bound.name].add(first, inside)
+    evenly = ("sobol", REPLICATES) if in_rounds(samples) else (samples.design, samples.replicates)
+    shares = {bound.name: Share(*evenly) for bound in sampled}
+    for first, starts in _spread_evenly(samples, basin.loop) if sampled else ():
+        for bound in sampled:
+            shares[bound.name].add(first, bound.V.value(starts) <= bound.level)
     return tuple(_comparison(bound, shares.get(bound.name), basin) for bound in bounds)
+
+
+def _spread_evenly(samples: Samples, loop: Loop) -> Iterator[tuple[int, Array]]:
+    """Yield (index of the first, starts): those of the sweep, or points of their own where those are not even."""
+    if in_rounds(samples):
+        yield 0, Sobol(loop.box, SEED, REPLICATES, POINTS).points(0, POINTS)
+        return
+    for first, trajectories in samples.chunks():
+        yield first, trajectories.initial
 
 
 def _is_whole_ellipsoid(bound: Bound) -> bool:
@@ -76,7 +93,7 @@ def _comparison(bound: Bound, share: Share | None, basin: Basin) -> Comparison:
         halved = (1 + confidence) / 2
         of_bound = share.interval(loop.n, halved).scaled(loop.domain_volume)
         ends, basin_ends = (of_bound.low, of_bound.high), basin.interval_at(halved).scaled(loop.domain_volume)
-    if basin.volume == 0:
+    if not basin.volume > 0:  # empty, or not known
         return Comparison(bound, volume, volume_interval, None, None)
     low = ends[0] / basin_ends.high
     high = ends[1] / basin_ends.low if basin_ends.low > 0 else np.inf

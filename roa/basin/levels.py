@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.basin.intervals import Interval, clopper_pearson
-from roa.basin.size import in_basin
+from roa.basin.tally import in_rounds
 from roa.bound.lyapunov_function import LyapunovFunction
 from roa.bound.statement import Bound, Strength
 from roa.sweep.samples import Samples
@@ -62,14 +62,20 @@ class Levels:
 
 
 def by_level(samples: Samples, V: LyapunovFunction, confidence: float) -> Levels:
-    """Sort the samples by V in one pass; samples without a finite V are left out."""
+    """Sort the samples by V in one pass; samples without a finite V are left out.
+
+    There are no shells of a design in rounds, whose starts are not spread evenly.
+    """
     edges: Array | None = None
     counts = converged = np.zeros(0, dtype=np.int64)
     highest = -np.inf
     lowest: Unfalsified | None = None
+    uneven = in_rounds(samples)
     for first, trajectories in samples.chunks():
-        V_start, yes = V.value(trajectories.initial), in_basin(trajectories)
+        V_start, yes = V.value(trajectories.initial), trajectories.in_basin
         lowest = _lower(lowest, first, V_start, yes, trajectories.initial)
+        if uneven:  # the share of such starts is none of the shell
+            continue
         finite = np.isfinite(V_start)
         V_start, yes = V_start[finite], yes[finite]
         if not len(V_start):

@@ -2,10 +2,47 @@
 
 from __future__ import annotations
 
+from typing import Protocol
+
 import numpy as np
 from numpy.typing import NDArray
 
 from roa.basin.intervals import Interval, clopper_pearson, grid_interval, replicate_interval
+
+# Hits and samples of each replicate.
+ByReplicate = tuple[tuple[int, ...], tuple[int, ...]]
+
+
+class Tally(Protocol):
+    """What a sweep says of a share, whatever its design."""
+
+    @property
+    def by_replicate(self) -> ByReplicate:
+        """Hits and samples of each replicate; none where the starts are not spread evenly."""
+        ...
+
+    def add(self, first: int, yes: NDArray[np.bool_]) -> None:
+        """Take the answers of starts first, first + 1, …, bool (m,), in the order of the indices."""
+        ...
+
+    @property
+    def samples(self) -> int:
+        """Number of starts."""
+        ...
+
+    @property
+    def refusal(self) -> str:
+        """Why no share is stated, a sentence; empty where one is."""
+        ...
+
+    @property
+    def fraction(self) -> float:
+        """Share of the domain; NaN where it is refused."""
+        ...
+
+    def interval(self, n: int, confidence: float) -> Interval:
+        """Two-sided interval of the share in a domain of n states."""
+        ...
 
 
 class Share:
@@ -14,6 +51,8 @@ class Share:
     Sample i belongs to replicate i mod R. For the design `grid` every answer is kept, one byte each, since the
     interval there comes from neighbours.
     """
+
+    refusal = ""
 
     def __init__(self, design: str, replicates: int) -> None:
         self.design = design
@@ -28,6 +67,11 @@ class Share:
         self.hits += np.bincount(replicate[yes], minlength=len(self.hits))
         if self.design == "grid":
             self._answers.append(yes)
+
+    @property
+    def by_replicate(self) -> ByReplicate:
+        """Hits and samples of each replicate."""
+        return tuple(self.hits.tolist()), tuple(self.sizes.tolist())
 
     @property
     def samples(self) -> int:

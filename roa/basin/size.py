@@ -10,14 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.basin.intervals import Interval
-from roa.basin.share import Share
+from roa.basin.share import Share, Tally
+from roa.basin.tally import in_rounds, tally_of
 from roa.kernel.outcomes import Outcome, Reason
-from roa.kernel.trajectories import Trajectories
 from roa.loop.model import Loop
 from roa.sweep.samples import Samples
-
-# The basin is all starts that converge without leaving the escape box; limits are a question of their own.
-IN_BASIN = (Outcome.CONVERGED, Outcome.CONVERGED_OVER_LIMIT)
 
 
 @dataclass(frozen=True)
@@ -26,16 +23,17 @@ class Basin:
 
     Attributes
     ----------
-    share : share of the samples in the basin, by replicate
+    share : what the answers of the starts say of the share
     counts : by outcome word, every outcome listed
-    by_outcome : share of the samples with each outcome that occurred, by its word
+    by_outcome : share of the samples with each outcome that occurred, by its word; none of a design in rounds, whose
+        samples are not spread evenly
     reasons : by reason word, only those that occurred
     wanted : number of starts that the sweep is to have
     confidence : of the intervals, two-sided
     loop : Loop
     """
 
-    share: Share
+    share: Tally
     counts: Mapping[str, int]
     by_outcome: Mapping[str, Share]
     reasons: Mapping[str, int]
@@ -55,8 +53,13 @@ class Basin:
 
     @property
     def fraction(self) -> float:
-        """Share of the domain."""
+        """Share of the domain; NaN where none is stated, for which `refusal` gives the reason."""
         return self.share.fraction
+
+    @property
+    def refusal(self) -> str:
+        """Why no share is stated, a sentence; empty where one is."""
+        return self.share.refusal
 
     @cached_property
     def interval(self) -> Interval:
@@ -83,25 +86,23 @@ class Basin:
         return self.interval.scaled(self.loop.domain_volume)
 
 
-def in_basin(trajectories: Trajectories) -> NDArray[np.bool_]:
-    """Which of m trajectories start in the basin, bool (m,)."""
-    return np.isin(trajectories.outcome, IN_BASIN)
+def measure(samples: Samples, loop: Loop, confidence: float, centre: NDArray[np.float64] | None = None) -> Basin:
+    """Measure the basin in one pass over the stored samples; the memory does not grow with their number.
 
-
-def measure(samples: Samples, loop: Loop, confidence: float) -> Basin:
-    """Measure the basin in one pass over the stored samples; the memory does not grow with their number."""
-    share = Share(samples.design, samples.replicates)
+    Of a design in rounds the answers are kept, one byte each. `centre` is the equilibrium, float64 (n,), state units.
+    """
+    share = tally_of(samples, loop, np.zeros(loop.n) if centre is None else centre)
     by_outcome = {outcome: Share(samples.design, samples.replicates) for outcome in Outcome}
     reasons = np.zeros(len(Reason), dtype=np.int64)
     for first, trajectories in samples.chunks():
-        share.add(first, in_basin(trajectories))
+        share.add(first, trajectories.in_basin)
         for outcome, one in by_outcome.items():
             one.add(first, trajectories.outcome == outcome)
         reasons += np.bincount(trajectories.reason, minlength=len(Reason))
     return Basin(
         share=share,
         counts={outcome.word: int(one.hits.sum()) for outcome, one in by_outcome.items()},
-        by_outcome={outcome.word: one for outcome, one in by_outcome.items() if one.hits.any()},
+        by_outcome={} if in_rounds(samples) else {o.word: one for o, one in by_outcome.items() if one.hits.any()},
         reasons={reason.word: int(reasons[reason]) for reason in Reason if reason and reasons[reason]},
         wanted=samples.wanted,
         confidence=confidence,

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from roa.basin.cautions import cautions
+from roa.basin.certificate import certificate
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
@@ -62,9 +63,11 @@ def conclude(
     stated = list(bounds.stated)
     comparisons: Sequence[Comparison] = ()
     if samples is not None:
-        basin = measure(samples, configuration.loop, confidence)
+        basin = measure(samples, configuration.loop, confidence, equilibrium.x)
         levels = by_level(samples, bounds.V, confidence)
         stated += [levels.bound] if levels.bound else []
+    stated += bounds.searched
+    if samples is not None and basin is not None:
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
     by_name = {comparison.bound.name: comparison for comparison in comparisons}
     loop = configuration.loop
@@ -83,6 +86,7 @@ def conclude(
         "bounds_note": bounds.note,
         "basin": None if basin is None else _basin(basin),
         "comparison": _comparison(stated, claim, by_name),
+        "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
         "cautions": cautions(configuration, equilibrium, target, basin),
@@ -157,11 +161,12 @@ def _ratios_flat(comparison: Comparison | None) -> dict[str, Any]:
 def _basin(basin: Basin) -> dict[str, Any]:
     return {
         "fraction": basin.fraction,
-        "interval": _ends(basin.interval),
+        "interval": None if basin.refusal else _ends(basin.interval),
+        "refusal": basin.refusal,
         "interval_method": basin.interval.method,
         "confidence": basin.confidence,
         "volume": basin.volume,
-        "volume_interval": _ends(basin.volume_interval),
+        "volume_interval": None if basin.refusal else _ends(basin.volume_interval),
         "volume_unit": " · ".join(unit or "1" for unit in basin.loop.units),
         "samples": basin.samples,
         "samples_wanted": basin.wanted,
@@ -169,7 +174,7 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "counts": basin.counts,
         "count_intervals": {word: _ends(interval) for word, interval in basin.outcome_intervals.items()},
         "reasons": basin.reasons,
-        "by_replicate": {"converged": basin.share.hits, "samples": basin.share.sizes},
+        "by_replicate": dict(zip(("converged", "samples"), basin.share.by_replicate, strict=True)),
         "strength": Strength.SIMULATED,
     }
 

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 import numpy as np
 
+from roa.bound.best_quadratic import best_quadratic
 from roa.bound.contact_level import contact_level
 from roa.bound.exact_quadratic import exact_quadratic
 from roa.bound.lyapunov_equation import solve_lyapunov, solve_sampled_lyapunov, weight_matrix
@@ -16,8 +18,15 @@ from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import prove_contact_level
 from roa.bound.statement import Bound, Strength
 from roa.bound.ultimate_bound import BEST, best_ring_shape, ultimate_bound
+from roa.bound.volume import ellipsoid_volume
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
+
+Say = Callable[[str], None]
+
+
+def silent(sentence: str) -> None:
+    """Tell nobody."""
 
 
 @dataclass(frozen=True)
@@ -28,12 +37,14 @@ class Bounds:
     ----------
     V : LyapunovFunction
     stated : the bounds with a level above zero
+    searched : bounds of other V that were searched for, with a level above zero
     note : why a bound that one would expect is not there, one sentence each; empty where all are
     """
 
     V: LyapunovFunction
     stated: tuple[Bound, ...]
     note: str = ""
+    searched: tuple[Bound, ...] = ()
 
     def named(self, name: str) -> Bound | None:
         """The bound of that name, or None."""
@@ -41,9 +52,19 @@ class Bounds:
 
     @property
     def largest_proved(self) -> Bound | None:
-        """The proved bound of the largest level from which all starts converge, or None where nothing is proved."""
+        """The proved bound of V of the largest level from which all starts converge; None where nothing is proved."""
         proved = [bound for bound in self.stated if bound.strength is Strength.PROVED and bound.inner is None]
         return max(proved, key=lambda bound: bound.level, default=None)
+
+    @property
+    def largest_ellipsoid(self) -> Bound | None:
+        """The proved bound with a quadratic V of the largest volume, or None where nothing of the kind is proved."""
+        found = [
+            (ellipsoid_volume(bound.V.P, bound.level), bound)
+            for bound in (*self.stated, *self.searched)
+            if bound.strength is Strength.PROVED and bound.inner is None and isinstance(bound.V, Quadratic)
+        ]
+        return max(found, key=lambda pair: pair[0], default=(0.0, None))[1]
 
 
 def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) -> LyapunovFunction:
@@ -66,8 +87,30 @@ def lyapunov_function(configuration: Configuration, equilibrium: Equilibrium) ->
     return Quadratic(loop, equilibrium.x, solve_lyapunov(equilibrium.A, Q))
 
 
-def derive_bounds(configuration: Configuration, equilibrium: Equilibrium) -> Bounds:
-    """Derive norm bound, contact level and ultimate bounds of the configured V, proved as far as that can be done."""
+def derive_bounds(configuration: Configuration, equilibrium: Equilibrium, say: Say = silent) -> Bounds:
+    """Derive norm bound, contact level and ultimate bounds of the configured V, and the best quadratic if asked for.
+
+    Each is proved as far as that can be done.
+
+    Parameters
+    ----------
+    configuration, equilibrium : of the loop
+    say : told in a sentence what takes a while
+    """
+    bounds = _of_the_configured(configuration, equilibrium)
+    wanted = "quadratic" in configuration.searches and configuration.bound.inner is None
+    if not wanted or equilibrium.stability != "stable" or configuration.loop.hold is not None:
+        return bounds
+    say("searching for the best quadratic V")
+    best = best_quadratic(configuration, equilibrium, bounds.largest_proved)
+    if not best.level > 0:
+        return replace(bounds, note=f"{bounds.note} No best quadratic: {best.note}.".strip())
+    nominal = " The best quadratic too is that of the nominal loop." if configuration.loop.disturbances else ""
+    return replace(bounds, searched=(*bounds.searched, best), note=f"{bounds.note}{nominal}".strip())
+
+
+def _of_the_configured(configuration: Configuration, equilibrium: Equilibrium) -> Bounds:
+    """The norm bound, contact level and ultimate bounds of the configured V."""
     V = lyapunov_function(configuration, equilibrium)
     rings = _rings(V, configuration, equilibrium)
     bounds = _convergence(V, equilibrium)
@@ -79,7 +122,7 @@ def derive_bounds(configuration: Configuration, equilibrium: Equilibrium) -> Bou
 def _rings(V: LyapunovFunction, configuration: Configuration, equilibrium: Equilibrium) -> list[Bound]:
     """The ultimate bounds, where there are disturbances or a residual set is asked for."""
     inner = configuration.bound.inner
-    if (inner is None and not V.loop.disturbances) or not _may_bound(V):
+    if (inner is None and not V.loop.disturbances) or V.loop.hold is not None or not _may_bound(V):
         return []
     ring = ultimate_bound(V, inner)
     if inner is not None and ring.strength is not Strength.PROVED:

@@ -24,13 +24,14 @@ LEAST = 100  # boxes without which no attempt is worth while
 Prover = LevelProver | LevelSetProver
 
 
-def prove_contact_level(estimate: Bound, known: float) -> Bound:
+def prove_contact_level(estimate: Bound, known: float, boxes: int | None = None) -> Bound:
     """Return the contact level with what could be proved of it, or the estimate where that is no more than `known`.
 
     Parameters
     ----------
     estimate : Bound of strength *estimated*
     known : a level of the same V that is proved already
+    boxes : most boxes of all attempts together; by default what a few seconds can do
     """
     V, highest = estimate.V, estimate.level
     if not highest > 0:
@@ -38,7 +39,7 @@ def prove_contact_level(estimate: Bound, known: float) -> Bound:
     prover = prover_of(V)
     if not prover.is_ready:
         return estimate
-    budget = proof_budget(prover)
+    budget = proof_budget(prover) if boxes is None else boxes
     level = FIRST * highest
     first = prover.prove(level, int(FIRST_PART * budget))
     proof: LevelProof | None = first

@@ -31,7 +31,7 @@ TIME_CONSTANTS = 5.0  # dwell in a ball, in slowest time constants
 def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: Bounds, elsewhere: Array) -> Target:
     """Choose what entering counts as convergence.
 
-    The largest proved level is taken, however small it is against the ball: entering it is convergence by
+    The largest proved ellipsoid is taken, however small it is against the ball: entering it is convergence by
     proof, and a trajectory that converges gets there in a time that grows only like the logarithm of its
     size. It is given up where the integrator's tolerance is not far below its extent, because then a point
     inside may belong to a trajectory outside.
@@ -45,7 +45,7 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
     dwell = sweep.dwell if sweep.dwell is not None else TIME_CONSTANTS * equilibrium.slowest_time_constant
     if configuration.bound.inner is not None:
         return watching(_residual_set(configuration, equilibrium, bounds, dwell), elsewhere)
-    best = bounds.largest_proved
+    best = bounds.largest_ellipsoid or bounds.largest_proved
     note = ""
     if best is None or not isinstance(best.V, Quadratic):
         note = "no level of the configured V is proved" if best is None else "the configured V is no quadratic"

@@ -19,9 +19,9 @@ from pathlib import Path
 
 import jinja2
 
-from roa.kernel import vector_math
+from roa.kernel import table_source, vector_math
 from roa.kernel.outcomes import Outcome, Reason
-from roa.kernel.straight_line import commands, right_hand_side
+from roa.kernel.straight_line import StraightLine, commands, right_hand_side
 from roa.kernel.tableau import Tableau
 from roa.kernel.target import Target
 from roa.loop.expression import Expression
@@ -72,6 +72,7 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         states=states,
         lines=code.lines,
         derivatives=derivatives,
+        refusals=_refusals(loop, code),
         n_constants=len(code.constants),
         hold=hold,
         command_lines=command.lines,
@@ -83,7 +84,14 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         combination=_combination,
         distance=lambda ball, x: " + ".join(f"(({x}{j} - at{ball}_{j}) * inverse{j}) ** 2" for j in states),
     )
-    return LaneSource(vector_math.source(code.functions) + "\n\n" + text, code.constants)
+    parts = [vector_math.source(code.functions), table_source.source(code.tables), text]
+    return LaneSource("\n\n".join(part for part in parts if part), code.constants)
+
+
+def _refusals(loop: Loop, code: StraightLine) -> list[str]:
+    """Write, for each table that ends with its points, the condition that it is left; of variables of the code."""
+    used = [(use.table, code.variable(use.argument)) for use in loop.refusals]
+    return [table_source.outside(table, variable) for table, variable in used]
 
 
 @cache

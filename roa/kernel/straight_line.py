@@ -10,7 +10,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from decimal import Decimal
 
-from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power, children
+from roa.loop.expression import Binary, Call, Compare, Expression, Lookup, Name, Negate, Number, Power, children
+from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop
 
 
@@ -22,6 +23,7 @@ class StraightLine:
     lines : list of str, Python assignments in order
     constants : list of trees over parameters and numbers; the code calls them c0, c1, …
     functions : set of str, the names from `vector_math` that the lines call
+    tables : look-up tables in the order in which the lines call them lookup0, lookup1, … or slope0, slope1, …
 
     Parameters
     ----------
@@ -33,6 +35,7 @@ class StraightLine:
         self.lines: list[str] = []
         self.constants: list[Expression] = []
         self.functions: set[str] = set()
+        self.tables: list[LookupTable] = []
         self._signals: Mapping[str, Expression] = loop.signals
         self._parameters = frozenset(loop.parameters)
         self._variables: dict[Expression, str] = {Name(s): f"x{i}" for i, s in enumerate(loop.states)}
@@ -85,6 +88,10 @@ class StraightLine:
                 return f"{self.variable(left)} {op} {self.variable(right)}"
             case Call(function, arguments):
                 return self._call(function, [self.variable(a) for a in arguments])
+            case Lookup(table, argument, slope):
+                if table not in self.tables:
+                    self.tables.append(table)
+                return f"{'slope' if slope else 'lookup'}{self.tables.index(table)}({self.variable(argument)})"
         raise AssertionError(f"no such node: {tree!r}")
 
     def _power(self, base: str, exponent: Decimal) -> str:
@@ -158,5 +165,5 @@ def right_hand_side(loop: Loop) -> tuple[StraightLine, list[str]]:
 def commands(loop: Loop, code: StraightLine) -> tuple[StraightLine, list[str]]:
     """Return the code of the held signals at a sample and their variables; constants are added to those of `code`."""
     own = StraightLine(loop)
-    own.constants, own.functions = code.constants, code.functions
+    own.constants, own.functions, own.tables = code.constants, code.functions, code.tables
     return own, [own.variable(Name(name)) for name in (loop.hold.signals if loop.hold else ())]

@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from roa.kernel.outcomes import IN_BASIN
+
 
 @dataclass(frozen=True)
 class Trajectories:
@@ -33,3 +35,8 @@ class Trajectories:
 
     def __len__(self) -> int:
         return len(self.outcome)
+
+    @property
+    def in_basin(self) -> NDArray[np.bool_]:
+        """Which of them start in the basin, bool (m,)."""
+        return np.isin(self.outcome, IN_BASIN)

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from decimal import Decimal
 
-from roa.loop.expression import Binary, Call, Expression, Name, Negate, Number, Power
+from roa.loop.expression import Binary, Call, Expression, Lookup, Name, Negate, Number, Power
 
 ZERO, ONE, TWO = Number(Decimal(0)), Number(Decimal(1)), Number(Decimal(2))
 
@@ -54,6 +54,8 @@ def substituted(tree: Expression, values: Mapping[str, Expression]) -> Expressio
             return Power(substituted(base, values), exponent)
         case Call(function, arguments):
             return Call(function, tuple(substituted(argument, values) for argument in arguments))
+        case Lookup(table, argument, slope):
+            return Lookup(table, substituted(argument, values), slope)
         case Number():
             return tree
     return type(tree)(tree.op, substituted(tree.left, values), substituted(tree.right, values))

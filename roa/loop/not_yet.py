@@ -7,22 +7,18 @@ from __future__ import annotations
 
 TABLES = {
     "limits": "limits on states and signals",
-    "tables": "look-up tables",
 }
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
     ("bound", "ball"): "a claim in the form of a ball",
     ("bound", "scale"): "the scale of a claimed ball",
-    ("bound", "search"): "the search for better bounds",
     ("sweep", "accuracy"): "stopping at an accuracy of the share",
     ("sweep", "goal"): "a goal in place of a number of samples",
     ("sweep", "stop_outside"): "stopping outside by proof",
 }
 
 VALUES = {
-    ("sweep", "store", "outcomes"): 'use "all"',
-    ("sweep", "design", "rays"): 'use "sobol" or "grid"',
     ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
     ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
 }

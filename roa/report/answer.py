@@ -67,6 +67,8 @@ def _basin_sentence(verdict: Verdict) -> str:
     basin = verdict["basin"]
     if not basin:
         return ""
+    if basin.get("refusal"):
+        return str(basin["refusal"])
     share = share_with_interval(basin["fraction"], tuple(basin["interval"]), basin["confidence"], "simulated")
     return f"The simulated basin fills {share} of the domain."
 

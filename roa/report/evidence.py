@@ -40,6 +40,7 @@ class Evidence:
     pair : indices of the two states that are shown; every pair where None
     at : float64 (n,), where the other states are held; the equilibrium where None
     rising : whether the region in which V̇ >= 0 is hatched
+    window : float64 (2, 2), the part of the first pair's plane that is shown; the domain where None
     """
 
     configuration: Configuration
@@ -50,11 +51,16 @@ class Evidence:
     pair: tuple[int, int] | None = None
     at: Array | None = None
     rising: bool = False
+    window: Array | None = None
     _slices: dict[tuple[int, int, int], Slice] = field(default_factory=dict)
 
     def seen(self, pair: tuple[int, int] | None = None, at: Array | None = None, rising: bool = False) -> Evidence:
         """Return the same run looked at in another way."""
         return replace(self, pair=pair, at=at, rising=rising, _slices={})
+
+    def magnified(self, window: Array) -> Evidence:
+        """Return the same view of a small window in the plane of the first pair, simulated for itself."""
+        return replace(self, window=window, _slices={})
 
     @property
     def loop(self) -> Loop:
@@ -116,7 +122,10 @@ class Evidence:
     def plane(self, i: int, j: int) -> Plane:
         """The plane in which states i and j vary over the domain."""
         loop = self.loop
-        return Plane(loop.states, loop.units, loop.box, self.equilibrium, i, j, self.at)
+        box = loop.box.copy()
+        if self.window is not None:
+            box[list(self.first_pair)] = self.window
+        return Plane(loop.states, loop.units, box, self.equilibrium, i, j, self.at)
 
     def slice(self, i: int, j: int, cells: int = ONE) -> Slice:
         """A raster of starts in that plane, simulated once however many figures show it."""

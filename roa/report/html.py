@@ -84,7 +84,7 @@ def _picture(name: str, content: bytes, verdict: Verdict) -> Picture:
     caption = figures.load(name).CAPTION
     sets = "; ".join(f"{one.name} ({one.strength}) at level {one.level}" for one in bound_rows(verdict))
     text = f"{caption} States: {', '.join(verdict['states'])}. Level sets: {sets or 'none'}."
-    if verdict["basin"]:
+    if verdict["basin"] and verdict["basin"]["fraction"] is not None:
         text += f" The basin fills {percent(verdict['basin']['fraction'])} of the domain (simulated)."
     # As an image of its own, so that names inside one drawing cannot meet those inside another.
     return Picture(f"data:image/svg+xml;base64,{b64encode(content).decode()}", caption, text)
@@ -97,16 +97,23 @@ def _basin_rows(verdict: Verdict) -> Iterator[Row]:
     basin = verdict["basin"]
     if not basin:
         return
+    if basin["fraction"] is None:
+        yield "share of the domain", f"not known: {basin['refusal']}"
+    else:
+        yield from _size_rows(basin)
+    of_all = f" of {basin['samples_wanted']:,}, a partial sweep" if basin["partial"] else ""
+    yield "starts", f"{basin['samples']:,}{of_all}"
+    for word, count in basin["reasons"].items():
+        yield word.replace("_", " "), f"{count:,} starts (simulated): {Reason[word.upper()].sentence}"
+
+
+def _size_rows(basin: Verdict) -> Iterator[Row]:
     interval = interval_percent(*basin["interval"])
     yield "share of the domain", f"{percent(basin['fraction'], 2)} (simulated)"
     yield f"{confidence_text(basin['confidence'])} interval", f"{interval} (simulated; {basin['interval_method']})"
     low, high = (number(end, 6) for end in basin["volume_interval"])
     volume = f"{number(basin['volume'], 6)} ({low} to {high}) {basin['volume_unit']}"
     yield "volume, in units of the states", f"{volume} (simulated)"
-    of_all = f" of {basin['samples_wanted']:,}, a partial sweep" if basin["partial"] else ""
-    yield "starts", f"{basin['samples']:,}{of_all}"
-    for word, count in basin["reasons"].items():
-        yield word.replace("_", " "), f"{count:,} starts (simulated): {Reason[word.upper()].sentence}"
 
 
 def _claim_rows(verdict: Verdict) -> Iterator[Row]:
@@ -146,7 +153,9 @@ def _loop_rows(verdict: Verdict) -> Iterator[Row]:
 def _method_rows(verdict: Verdict, configuration: Configuration) -> Iterator[Row]:
     sweep = configuration.sweep
     seed = verdict["provenance"].get("seed", sweep.seed)
-    yield "initial conditions", f"design {sweep.design}, seed {seed}, uniform over the domain"
+    uneven = verdict["basin"] and not verdict["basin"]["by_replicate"]["samples"]
+    spread = "drawn in rounds from the results of earlier ones" if uneven else "uniform over the domain"
+    yield "initial conditions", f"design {sweep.design}, seed {seed}, {spread}"
     yield "integration", f"method {sweep.method}, rtol {sweep.rtol:g}, atol {sweep.atol:g} in units of the states"
     yield "horizon", f"{sweep.horizon:g} s; what is still moving then is followed further, to {sweep.longest:g} s"
     yield "escape box", f"{sweep.escape:g} times the domain about its centre"

@@ -22,6 +22,8 @@ Array = NDArray[np.float64]
 # Grows evenly in lightness, for grey prints and for readers who confuse red and green.
 SHADES = "cividis"
 PER_ROW = 3
+# Part of a plane, below which there is nothing to see in it.
+SPECK = 1e-3
 
 
 def map_figure(evidence: Evidence, panels: int) -> tuple[Figure, list[Axes]]:
@@ -34,11 +36,16 @@ def map_figure(evidence: Evidence, panels: int) -> tuple[Figure, list[Axes]]:
     plane = evidence.plane(*evidence.first_pair)
     if plane.others:
         title += f"\n{held_short(evidence)}"
-    drawn.suptitle(title, x=0.01, ha="left")
+    drawn.suptitle(title, x=0.01, ha="left", fontweight="normal" if plane.others else "bold")
     grid = list(drawn.subplots(down, across, squeeze=False).flat)
     for unused in grid[panels:]:
         unused.set_visible(False)
     return drawn, grid[:panels]
+
+
+def shows_basin(evidence: Evidence) -> bool:
+    """Whether so much of the plane converges that a map of it can be read."""
+    return bool(evidence.slice(*evidence.first_pair).converged.mean() > SPECK)
 
 
 def held_short(evidence: Evidence) -> str:

@@ -53,9 +53,12 @@ def outcome_rows(verdict: Verdict) -> list[OutcomeRow]:
         return []
     counts: Mapping[str, int] = basin["counts"]
     total = sum(counts.values())
+    evenly = bool(basin["by_replicate"]["samples"])  # else the share of the starts is no share of the domain
     rare = (Outcome.ABSENT, Outcome.CONVERGED_OVER_LIMIT)
     return [
-        OutcomeRow(outcome_word(outcome), f"{count:,}", percent(count / total, 2), outcome.sentence)
+        OutcomeRow(
+            outcome_word(outcome), f"{count:,}", percent(count / total, 2) if evenly else NOTHING, outcome.sentence
+        )
         for outcome in Outcome
         if (count := counts.get(outcome.word, 0)) or outcome not in rare
     ]

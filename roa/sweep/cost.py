@@ -9,7 +9,9 @@ import numpy as np
 
 from roa.kernel.lanes import Lanes
 from roa.kernel.outcomes import Outcome
+from roa.sweep.kept import row_bytes
 from roa.sweep.plan import Plan
+from roa.sweep.rounds import Course, Round
 
 # Batches spread over the whole design: its first starts alone may all settle quickly.
 BATCHES, BATCH = 5, 1024
@@ -38,22 +40,30 @@ class Cost:
     shares: dict[str, float]
 
 
+def _starts_known(plan: Plan) -> Round:
+    """What can be drawn before anything is known: of a design that refines, its first round stands for all."""
+    known = Course(plan).first()
+    assert known is not None
+    return known
+
+
 def forecast(plan: Plan, lanes: Lanes, jobs: int | None) -> Cost:
     """Time batches of the design's own starts and extrapolate to all of them."""
     from roa.sweep.executors.threads import cpu_count
 
     workers = jobs or cpu_count()
-    count = min(BATCH, plan.samples)
-    firsts = np.linspace(0, plan.samples - count, BATCHES).astype(np.int64)
+    known = _starts_known(plan)
+    count = min(BATCH, known.stop)
+    firsts = np.linspace(0, known.stop - count, BATCHES).astype(np.int64)
     rates, steps, outcomes = [], [], []
     for first in firsts:
-        points = plan.design.points(int(first), count)
+        points = known.drawn.points(int(first), count)
         begun = time.perf_counter()
         trajectories = lanes.run(points)
         rates.append((time.perf_counter() - begun) / count)
         steps.append(float(trajectories.steps.mean()))
         outcomes.append(np.bincount(trajectories.outcome, minlength=len(Outcome)))
-    disk = 2 * plan.samples * (8 * (3 * plan.configuration.loop.n + 1) + 6)
+    disk = 2 * plan.samples * row_bytes(plan.configuration.sweep.store, plan.configuration.loop.n)
     least, most = (
         rate * plan.samples / workers + OVERHEAD_SECONDS_PER_BYTE * disk for rate in (min(rates), max(rates))
     )

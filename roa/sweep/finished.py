@@ -2,18 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
 
+import numpy as np
+
 from roa.errors import MachineError
 from roa.kernel.trajectories import Trajectories
-from roa.sweep import store
+from roa.sweep import designs, store
 from roa.sweep.block import Block, blocks_of
+from roa.sweep.designs import Answers
 from roa.sweep.header import Header
 from roa.sweep.run_folder import RunFolder
 from roa.sweep.samples import Samples, Stretch
+from roa.sweep.tally import Tally
+
+# Merged samples that are counted at once.
+AT_ONCE = 2**22
 
 
 @dataclass(frozen=True)
@@ -26,17 +33,24 @@ class Finished:
     header : Header, of the sweep as it shall be
     merged : Samples of `sweep.h5`, perhaps of a smaller sweep that is being extended; None where there is none
     separate : blocks in files of their own, each found whole
+    tally : of the outcomes of all of them
     """
 
     folder: RunFolder
     header: Header
     merged: Samples | None
     separate: frozenset[Block]
+    tally: Tally
 
     @property
     def merged_count(self) -> int:
         """Number of samples in `sweep.h5`."""
         return self.merged.n if self.merged else 0
+
+    @property
+    def is_merged(self) -> bool:
+        """Whether `sweep.h5` holds the whole sweep; one in rounds may have fewer samples than were asked for."""
+        return self.merged is not None and self.merged.attributes["asked"] == self.header.asked
 
     def holds(self, block: Block) -> bool:
         """Whether nothing of the block is left to do."""
@@ -50,13 +64,27 @@ class Finished:
         MachineError
             The store was damaged since it was looked through.
         """
-        if block.stop <= self.merged_count and self.merged is not None:
-            return self.merged.read(block.first, block.count)
+        return store.as_rows(self.columns(block), self.header, block.first)
+
+    def columns(self, block: Block) -> store.Columns:
+        """Return the columns of a finished block as they are stored.
+
+        Raises
+        ------
+        MachineError
+            The store was damaged since it was looked through.
+        """
+        if block.stop <= self.merged_count:
+            return store.read_merged(self.folder.sweep, self.header, block.first, block.count)
         path = self.folder.blocks / block.file_name
-        rows = store.read_block(path, block, self.header.fingerprint)
-        if isinstance(rows, str):
-            raise MachineError(f"{path}: {rows}; `{self.folder.resume_command}` computes it again")
-        return rows
+        columns = store.read_block(path, block, self.header)
+        if isinstance(columns, str):
+            raise MachineError(f"{path}: {columns}; `{self.folder.resume_command}` computes it again")
+        return columns
+
+    def answers(self, blocks: Iterable[Block]) -> Answers:
+        """Return of the starts of finished blocks whether they lie in the basin, bool (m,)."""
+        return np.concatenate([self.rows(block).in_basin for block in blocks])
 
 
 def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) -> Finished:
@@ -68,19 +96,36 @@ def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) 
         `sweep.h5` is damaged or belongs to another run.
     """
     merged = _merged(folder, header)
-    wanted = {block.file_name: block for block in blocks_of(header.samples, header.block_size)}
+    wanted = {block.file_name: block for block in _blocks(folder, header)}
     separate = set()
+    tally = Tally(header.replicates)
+    for first in range(0, merged.n if merged else 0, AT_ONCE):
+        count = min(AT_ONCE, merged.n - first if merged else 0)
+        tally.add(first, store.read_merged(folder.sweep, header, first, count, ("outcome",))["outcome"])
     for path in sorted(folder.blocks.glob("*")):
         block = wanted.get(path.name)
         if block is None:
             say(f"{path}: is no block of this sweep; ignored")
             continue
-        rows = store.read_block(path, block, header.fingerprint)
-        if isinstance(rows, str):
-            say(f"{path}: {rows}; it counts as not done")
+        columns = store.read_block(path, block, header)
+        if isinstance(columns, str):
+            say(f"{path}: {columns}; it counts as not done")
         else:
             separate.add(block)
-    return Finished(folder, header, merged, frozenset(separate))
+            skip = min(max((merged.n if merged else 0) - block.first, 0), block.count)
+            tally.add(block.first + skip, columns["outcome"][skip:])
+    return Finished(folder, header, merged, frozenset(separate), tally)
+
+
+def _blocks(folder: RunFolder, header: Header) -> Iterator[Block]:
+    """Yield the blocks of a sweep in their order; of one in rounds, whose blocks follow from results, those stored."""
+    if not designs.load(header.design).in_rounds:
+        yield from blocks_of(header.samples, header.block_size)
+        return
+    for path in sorted(folder.blocks.glob("block-*.h5")):
+        block = store.block_of(path)
+        if block is not None:
+            yield block
 
 
 def open_partial(folder: RunFolder) -> Samples:
@@ -95,6 +140,8 @@ def open_partial(folder: RunFolder) -> Samples:
     """
     header = Header.read(folder.plan)
     finished = look_through(folder, header, say=lambda sentence: None)
+    if finished.merged is not None and finished.is_merged:
+        return finished.merged
     return Samples(header, list(_prefix(finished)))
 
 
@@ -102,10 +149,10 @@ def _prefix(finished: Finished) -> Iterator[Stretch]:
     reached = finished.merged_count
     if finished.merged is not None:
         yield Stretch(0, reached, finished.merged.read)
-    for block in blocks_of(finished.header.samples, finished.header.block_size):
+    for block in _blocks(finished.folder, finished.header):
         if block.stop <= reached:
             continue
-        if block not in finished.separate:
+        if block not in finished.separate or block.first > reached:
             return
         # The first block beyond an extended sweep may hold the last samples of `sweep.h5` once more.
         skip = max(reached - block.first, 0)

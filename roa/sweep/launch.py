@@ -8,23 +8,29 @@ from __future__ import annotations
 
 import shutil
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from dataclasses import replace
+
+import numpy as np
 
 from roa.errors import Interrupted, MachineError, UserError
 from roa.kernel.lanes import compile_lanes
-from roa.kernel.trajectories import Trajectories
 from roa.sweep import store
-from roa.sweep.block import Block, blocks_of
+from roa.sweep.block import Block
 from roa.sweep.crew import Crew
 from roa.sweep.finished import Finished, look_through
 from roa.sweep.header import Header
+from roa.sweep.kept import row_bytes
 from roa.sweep.means import Means
 from roa.sweep.plan import Plan
 from roa.sweep.progress import Both, Log, Progress
+from roa.sweep.rounds import Course, Drawn
 from roa.sweep.run_folder import RunFolder, write_atomically
 from roa.sweep.simulation import Simulation
+from roa.sweep.standing import Standing
 from roa.sweep.stop import StopRequest, stop_on_signals
+
+NO_ANSWERS = np.empty(0, np.bool_)
 
 
 def launch(plan: Plan, folder: RunFolder, means: Means | None = None, progress: Progress | None = None) -> bool:
@@ -53,22 +59,38 @@ def launch(plan: Plan, folder: RunFolder, means: Means | None = None, progress: 
     """
     means = means or Means()
     progress = Both(progress or Progress(), Log(folder.log))
-    with stop_on_signals(means.deadline) as stop, _one_sentence(folder), folder.locked():
+    with ExitStack() as stack:
+        stop = stack.enter_context(stop_on_signals(means.deadline))
+        stack.enter_context(_one_sentence(folder))
+        stack.enter_context(folder.locked())
         header = _begin(plan, folder)
         finished = look_through(folder, header, progress.say)
-        missing = [block for block in blocks_of(plan.samples, plan.block_size) if not finished.holds(block)]
-        if missing:
-            _require_space(plan, folder, missing)
-            if not _sweep(plan, folder, missing, means, stop, progress):
-                return False
-            finished = replace(finished, separate=finished.separate | set(missing))
-        if finished.merged_count < plan.samples:
-            progress.say(f"merging {plan.samples:,} samples")
-            store.write_samples(folder.sweep, header, _all_rows(finished, stop))
+        standing = Standing(folder.status, finished.tally, plan.samples, means.command)
+        stack.enter_context(standing)
+        progress = Both(progress, standing)
+        course = Course(plan)
+        work = _Work(plan, finished, means, stop, progress)
+        now = course.first()
+        while now is not None:
+            missing = [block for block in now.blocks if not finished.holds(block)]
+            if missing:
+                if not work.sweep(now.drawn, missing, finished.merged_count):
+                    standing.ends("stopped")
+                    return False
+                finished = replace(finished, separate=finished.separate | set(missing))
+            now = course.after(finished.answers(now.blocks) if course.needs_answers else NO_ANSWERS)
+        work.end()
+        count = course.blocks[-1].stop
+        if not finished.is_merged:
+            progress.say(f"merging {count:,} samples")
+            standing.enters("merging")
+            columns = _all_columns(finished, course.blocks, stop)
+            store.write_samples(folder.sweep, replace(header, samples=count), columns)
             progress.say(f"{folder.sweep} is written")
-        _remove_blocks(finished)
+        _remove_blocks(folder, course.blocks)
         if stop.signalled:
             raise _interrupted(folder)
+        standing.ends("done")
     return True
 
 
@@ -98,10 +120,10 @@ def _begin(plan: Plan, folder: RunFolder) -> Header:
     return header
 
 
-def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
-    """Refuse to begin what the disk cannot hold: the missing blocks, and all of the samples merged."""
-    row = 8 * (3 * plan.configuration.loop.n + 1) + 6
-    needed = row * (sum(block.count for block in missing) + plan.samples)
+def _require_space(plan: Plan, folder: RunFolder, starts: int) -> None:
+    """Refuse to begin what the disk cannot hold: the missing starts in blocks, and all of the samples merged."""
+    row = row_bytes(plan.configuration.sweep.store, plan.configuration.loop.n)
+    needed = row * (starts + plan.samples)
     free = shutil.disk_usage(folder.path).free
     if needed > free:
         raise MachineError(
@@ -110,51 +132,80 @@ def _require_space(plan: Plan, folder: RunFolder, missing: list[Block]) -> None:
         )
 
 
-def _sweep(
-    plan: Plan, folder: RunFolder, missing: list[Block], means: Means, stop: StopRequest, progress: Progress
-) -> bool:
-    """Run the missing blocks and store each as it finishes; return whether all are."""
-    starts = sum(block.count for block in missing)
-    crew = Crew.of(means, len(missing))
-    progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {crew.words}")
-    lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
-    progress.begin(plan.samples - starts, plan.samples)
-    try:
-        for block, rows in crew.run(Simulation(plan, lanes), missing, stop, progress.say):
-            write_atomically(folder.blocks / block.file_name, store.encode_block(block, plan.fingerprint, rows))
-            progress.add(rows.outcome)
-            starts -= block.count
-    finally:
-        progress.end()
-    if stop.signalled:
-        raise _interrupted(folder)
-    if starts and stop.made:
-        progress.say(f"the granted time is over; carry on with `{folder.resume_command}`")
-        return False
-    if crew.failed:
-        raise MachineError(
-            f"{folder.path}: {failure}; all others are stored: `{folder.resume_command}` tries it again"
-            for failure in crew.failed
-        )
-    return True
+class _Work:
+    """Runs blocks and stores each as it finishes; what all rounds share is made at the first."""
+
+    def __init__(self, plan: Plan, finished: Finished, means: Means, stop: StopRequest, progress: Progress) -> None:
+        self._plan, self._means, self._stop, self._progress = plan, means, stop, progress
+        self._folder, self._tally = finished.folder, finished.tally
+        self._simulation: Simulation | None = None
+
+    def sweep(self, drawn: Drawn, missing: list[Block], merged: int) -> bool:
+        """Run the missing blocks of a round; return whether all are. `merged` samples are in `sweep.h5` already."""
+        crew, folder = Crew.of(self._means, len(missing)), self._folder
+        simulation = self._simulation or self._begin(drawn, missing, merged, crew)
+        simulation.drawn = drawn
+        left = set(missing)
+        try:
+            for block, rows in crew.run(simulation, missing, self._stop, self._progress.say):
+                content = store.encode_block(block, self._plan.fingerprint, rows, self._plan.configuration.sweep.store)
+                write_atomically(folder.blocks / block.file_name, content)
+                self._tally.add(block.first, rows.outcome)
+                self._progress.add(rows.outcome)
+                left.remove(block)
+        finally:
+            if left:
+                self.end()
+        if self._stop.signalled:
+            self.end()
+            raise _interrupted(folder)
+        if left and self._stop.made:
+            self._progress.say(f"the granted time is over; carry on with `{folder.resume_command}`")
+            return False
+        if crew.failed:
+            raise MachineError(
+                f"{folder.path}: {failure}; all others are stored: `{folder.resume_command}` tries it again"
+                for failure in crew.failed
+            )
+        return True
+
+    def _begin(self, drawn: Drawn, missing: list[Block], merged: int, crew: Crew) -> Simulation:
+        """See to space and machine code, and say what is to be done; later rounds are not known yet."""
+        plan = self._plan
+        in_rounds = plan.design.in_rounds or plan.enough is not None
+        starts = plan.samples - merged if in_rounds else sum(block.count for block in missing)
+        _require_space(plan, self._folder, starts)
+        if in_rounds:
+            self._progress.say(f"at most {starts:,} starts to run, in rounds that follow from the results before them")
+        else:
+            self._progress.say(f"{starts:,} starts to run in {len(missing):,} blocks, {crew.words}")
+        lanes = compile_lanes(plan.configuration.loop, plan.target, plan.integration)
+        self._simulation = Simulation(plan, lanes, drawn)
+        self._progress.begin(plan.samples - starts, plan.samples)
+        return self._simulation
+
+    def end(self) -> None:
+        """Say that the rounds are over, if anything was run; once."""
+        if self._simulation is not None:
+            self._progress.end()
+        self._simulation = None
 
 
-def _all_rows(finished: Finished, stop: StopRequest) -> Iterator[tuple[Block, Trajectories]]:
-    for block in blocks_of(finished.header.samples, finished.header.block_size):
+def _all_columns(finished: Finished, blocks: list[Block], stop: StopRequest) -> Iterator[tuple[Block, store.Columns]]:
+    for block in blocks:
         if stop.signalled:
             raise _interrupted(finished.folder)
-        yield block, finished.rows(block)
+        yield block, finished.columns(block)
 
 
-def _remove_blocks(finished: Finished) -> None:
+def _remove_blocks(folder: RunFolder, blocks: list[Block]) -> None:
     """Remove the files of merged blocks, whole or not; foreign files stay, and the folder with them."""
-    folder = finished.folder.blocks
-    if not folder.is_dir():
+    if not folder.blocks.is_dir():
         return
-    for block in blocks_of(finished.header.samples, finished.header.block_size):
-        (folder / block.file_name).unlink(missing_ok=True)
-    if not any(folder.iterdir()):
-        folder.rmdir()
+    for block in blocks:
+        (folder.blocks / block.file_name).unlink(missing_ok=True)
+    if not any(folder.blocks.iterdir()):
+        folder.blocks.rmdir()
 
 
 def _interrupted(folder: RunFolder) -> Interrupted:

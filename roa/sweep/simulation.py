@@ -15,9 +15,9 @@ from roa.kernel.target import Target
 from roa.kernel.trajectories import Trajectories
 from roa.loop.model import Loop
 from roa.sweep.block import Block
-from roa.sweep.designs import Design
 from roa.sweep.plan import Plan
 from roa.sweep.portions import Portions
+from roa.sweep.rounds import Drawn
 
 
 class Runs(Protocol):
@@ -32,14 +32,19 @@ class Simulation:
     """A block's results, a pure function of the plan and the block.
 
     It can be sent to another process, which compiles the lanes for its own processor, once.
+
+    Attributes
+    ----------
+    fingerprint : of the plan
+    drawn : what draws the starts of the present round
     """
 
-    def __init__(self, plan: Plan, lanes: Runs) -> None:
+    def __init__(self, plan: Plan, lanes: Runs, drawn: Drawn) -> None:
         self.fingerprint = plan.fingerprint
         self._loop: Loop = plan.configuration.loop
         self._target: Target = plan.target
         self._integration: Integration = plan.integration
-        self._design: Design = plan.design
+        self.drawn = drawn
         self._begin(lanes)
 
     def _begin(self, lanes: Runs | None) -> None:
@@ -58,4 +63,4 @@ class Simulation:
         with self._compiling:
             if self._portions is None:
                 self._portions = Portions(compile_lanes(self._loop, self._target, self._integration).run)
-        return self._portions.run(self._design.points(block.first, block.count), given_up)
+        return self._portions.run(self.drawn.points(block.first, block.count), given_up)

@@ -21,8 +21,8 @@ WIDE = 0.6
 
 
 def applies(evidence: Evidence) -> bool:
-    """Whether anything was simulated."""
-    return evidence.samples.n > 0
+    """Whether the share of the starts that ended in some way is that of the domain."""
+    return bool(evidence.verdict["basin"]["count_intervals"])
 
 
 def outcomes(axes: Axes, basin: Mapping[str, Any]) -> Axes:

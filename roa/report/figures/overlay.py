@@ -70,20 +70,20 @@ def figure(evidence: Evidence) -> Figure:
     drawn.suptitle(title_lines(evidence.title, 110 if window is not None else 84), x=0.01, ha="left")
     panels = drawn.subplots(1, 2 if window is not None else 1, squeeze=False)[0]
     overlay(panels[0], evidence)
+    seen = [evidence]
     if window is not None:
-        overlay(panels[1], evidence, [trace for trace in traces if trace.refutes])
+        seen.append(evidence.magnified(window))
+        overlay(panels[1], seen[1], [trace for trace in traces if trace.refutes])
         panels[0].set_title("The whole domain", loc="left")
         panels[1].set_title("Magnified: the frame on the left", loc="left")
-        panels[1].set_xlim(*window[0])
-        panels[1].set_ylim(*window[1])
+        panels[1].locator_params(nbins=4)
         _frame(panels[0], window)
-    regions = evidence.slice(i, j).regions
-    for axes in panels:
-        outlines = [Outline(one.name, ring) for one in level_sets for ring in one.outline(plane)[:1]]
-        edges = [edge for region in regions.values() for edge in region.edges]
+    for axes, one in zip(panels, seen, strict=True):
+        outlines = [Outline(two.name, ring) for two in level_sets for ring in two.outline(one.plane(i, j))[:1]]
+        edges = [edge for region in one.slice(i, j).regions.values() for edge in region.edges]
         label_outlines(axes, outlines, [*edges, *(trace.points[:, [i, j]] for trace in traces)])
     simulated = [
-        *legends.region_entries(regions, evidence.verdict["basin"]["fraction"]),
+        *legends.region_entries(evidence.slice(i, j).regions, evidence.verdict["basin"]["fraction"]),
         *legends.trace_entries(traces),
         *legends.other_entries(evidence),
     ]

@@ -9,7 +9,7 @@ from matplotlib.figure import Figure
 
 from roa.report import layers
 from roa.report.evidence import Evidence
-from roa.report.maps import draw_map, map_figure
+from roa.report.maps import draw_map, map_figure, shows_basin
 from roa.report.style import LIMIT, quantity
 
 PLACE = 41
@@ -22,8 +22,8 @@ MOST_STATES = 6
 
 
 def applies(evidence: Evidence) -> bool:
-    """Whether there is a plane to show and something in it converged."""
-    return evidence.loop.n >= 2 and bool(evidence.slice(*evidence.first_pair).converged.any())
+    """Whether there is a plane to show in which more converged than a speck, and something moves."""
+    return evidence.loop.n >= 2 and shows_basin(evidence) and bool(_moving(evidence))
 
 
 def peak_excursion(axes: Axes, evidence: Evidence, state: int) -> Axes:
@@ -33,7 +33,7 @@ def peak_excursion(axes: Axes, evidence: Evidence, state: int) -> Axes:
     peaks = np.where(found.converged, found.square(found.found.peak[:, state]), np.nan)
     high = float(np.nanmax(peaks))
     label = quantity(f"peak of |{loop.states[state]} − equilibrium|", loop.units[state])
-    draw_map(axes, found, peaks, Normalize(0.0, max(high, 1e-300)), label)
+    draw_map(axes, found, peaks, Normalize(0.0, high), label)
     for distance in evidence.limit_distances(state):
         if np.nanmin(peaks) < distance < high:
             x, y = found.axes_values
@@ -45,9 +45,16 @@ def peak_excursion(axes: Axes, evidence: Evidence, state: int) -> Axes:
 
 
 def figure(evidence: Evidence) -> Figure:
-    """One panel a state, up to six."""
-    shown = min(evidence.loop.n, MOST_STATES)
-    drawn, panels = map_figure(evidence, shown)
-    for state, axes in enumerate(panels):
+    """One panel for each state that moves, up to six."""
+    moving = _moving(evidence)
+    drawn, panels = map_figure(evidence, len(moving))
+    for state, axes in zip(moving, panels, strict=True):
         peak_excursion(axes, evidence, state)
     return drawn
+
+
+def _moving(evidence: Evidence) -> list[int]:
+    """The first states that leave the equilibrium from any start of the plane."""
+    found = evidence.slice(*evidence.first_pair)
+    peaks = found.found.peak[found.converged.ravel()].max(axis=0, initial=0.0)
+    return [int(state) for state in np.flatnonzero(peaks > 0)[:MOST_STATES]]

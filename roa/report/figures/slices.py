@@ -76,7 +76,13 @@ def figure(evidence: Evidence) -> Figure:
         _say_share(axes, found)
         if side > 1:
             _shared_labels(axes, found.plane, side)
-    drawn.suptitle(f"{title_lines(evidence.title, 84)}\n{held_text(evidence)}", x=0.01, ha="left", fontsize=9.5)
+    drawn.suptitle(
+        f"{title_lines(evidence.title, 84)}\n{held_text(evidence)}",
+        x=0.01,
+        ha="left",
+        fontsize=9.5,
+        fontweight="normal",
+    )
     present = {outcome: region for found in slices for outcome, region in found.regions.items()}
     simulated = [*legends.region_entries(present), *legends.other_entries(evidence)]
     legends.add_legends(drawn, simulated, legends.level_set_entries(evidence.level_sets, unseen))

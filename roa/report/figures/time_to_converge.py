@@ -9,7 +9,7 @@ from matplotlib.figure import Figure
 
 from roa.report import layers
 from roa.report.evidence import Evidence
-from roa.report.maps import draw_map, map_figure
+from roa.report.maps import draw_map, map_figure, shows_basin
 from roa.report.style import quantity
 
 PLACE = 40
@@ -20,8 +20,8 @@ CAPTION = (
 
 
 def applies(evidence: Evidence) -> bool:
-    """Whether there is a plane to show and something in it converged."""
-    return evidence.loop.n >= 2 and bool(evidence.slice(*evidence.first_pair).converged.any())
+    """Whether there is a plane to show in which more converged than a speck."""
+    return evidence.loop.n >= 2 and shows_basin(evidence)
 
 
 def time_to_converge(axes: Axes, evidence: Evidence) -> Axes:

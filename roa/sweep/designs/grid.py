@@ -18,6 +18,7 @@ class Grid:
     so it is one replicate and its interval is that of a deterministic design, whatever the seed.
     """
 
+    in_rounds = False
     extendable = False
     interval = "deterministic: cells at the edge of the basin"
 

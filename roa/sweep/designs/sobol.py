@@ -30,6 +30,7 @@ STREAM = 0
 class Sobol:
     """Scrambled Sobol' points in the box, reached at any index in the same short time."""
 
+    in_rounds = False
     extendable = True
     interval = "spread between independent replicates"
 
