@@ -66,7 +66,7 @@ def test_equilibrium_that_is_no_float_is_left_to_the_other_proof():
     assert radial(V, V.centre, np.eye(3)) is None
 
 
-@pytest.mark.parametrize("n", [3, 4])
+@pytest.mark.parametrize("n", [3])
 def test_random_cubic_loops_are_proved_below_and_never_above_what_rays_find(n):
     """Quadratic and cubic terms of all kinds; the estimate errs upwards only, and a dense sample has the last word."""
     rng = np.random.default_rng(n)
