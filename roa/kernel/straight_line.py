@@ -42,6 +42,10 @@ class StraightLine:
         self._variables |= given or {}
         self._constant: dict[Expression, bool] = dict.fromkeys(given or {}, False)
 
+    def share_with(self, other: StraightLine) -> None:
+        """Use the constants, functions and tables of another code of the same module, and add to them."""
+        self.constants, self.functions, self.tables = other.constants, other.functions, other.tables
+
     def variable(self, tree: Expression) -> str:
         """Return the variable that holds the tree's value, appending the lines that compute it."""
         known = self._variables.get(tree)
@@ -53,11 +57,12 @@ class StraightLine:
         elif isinstance(tree, Name):
             name = self.variable(self._signals[tree.name])
         else:
-            name = self._assign(self._operation(tree))
+            name = self.assign(self._operation(tree))
         self._variables[tree] = name
         return name
 
-    def _assign(self, text: str) -> str:
+    def assign(self, text: str) -> str:
+        """Append an assignment and return its variable."""
         name = f"v{len(self.lines)}"
         self.lines.append(f"{name} = {text}")
         return name
@@ -107,7 +112,7 @@ class StraightLine:
 
     def _clip(self, x: str, low: str, high: str) -> str:
         # min(max(x, lo), hi): the upper bound wins where lo > hi.
-        return _smaller(self._assign(_larger(x, low)), high)
+        return _smaller(self.assign(_larger(x, low)), high)
 
     def _call(self, function: str, a: list[str]) -> str:
         # The selects are ordered so that a NaN in any argument is handed on, never replaced by a bound.
@@ -123,7 +128,7 @@ class StraightLine:
             case "clip":
                 return self._clip(*a)
             case "deadzone":
-                return f"{a[0]} - {self._assign(self._clip(a[0], self._assign(f'-{a[1]}'), a[1]))}"
+                return f"{a[0]} - {self.assign(self._clip(a[0], self.assign(f'-{a[1]}'), a[1]))}"
             case "where":
                 return f"{a[1]} if {a[0]} else {a[2]}"
             case "sqrt":
@@ -155,15 +160,20 @@ def _integer_power(base: str, exponent: int) -> str:
     return square if exponent % 2 == 0 else f"{square} * {base}"
 
 
+def held_variables(loop: Loop) -> dict[Expression, str]:
+    """Return the variables of the signals that are held: the i-th is ui."""
+    held = loop.hold.signals if loop.hold else ()
+    return {Name(name): f"u{i}" for i, name in enumerate(held)}
+
+
 def right_hand_side(loop: Loop) -> tuple[StraightLine, list[str]]:
     """Return the code of f and the variables that hold the n derivatives; a held signal i is ui."""
-    held = loop.hold.signals if loop.hold else ()
-    code = StraightLine(loop, {Name(name): f"u{i}" for i, name in enumerate(held)})
+    code = StraightLine(loop, held_variables(loop))
     return code, [code.variable(tree) for tree in loop.dynamics]
 
 
 def commands(loop: Loop, code: StraightLine) -> tuple[StraightLine, list[str]]:
     """Return the code of the held signals at a sample and their variables; constants are added to those of `code`."""
     own = StraightLine(loop)
-    own.constants, own.functions, own.tables = code.constants, code.functions, code.tables
+    own.share_with(code)
     return own, [own.variable(Name(name)) for name in (loop.hold.signals if loop.hold else ())]

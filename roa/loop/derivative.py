@@ -103,13 +103,13 @@ def _of_call(function: str, arguments: tuple[Expression, ...], slopes: list[Expr
         above = total(product(x, slopes[0]), negated(product(y, slopes[1])))
         return Binary("/", above, total(Power(x, Decimal(2)), Power(y, Decimal(2))))
     (x,), (slope,) = (arguments, slopes) if len(arguments) == 1 else ((arguments[0],), (slopes[0],))
-    outer = _slope_of(function, x)
+    outer = slope_of(function, x)
     if outer is None:
         raise NotSmooth
     return product(outer, slope)
 
 
-def _slope_of(function: str, x: Expression) -> Expression | None:
+def slope_of(function: str, x: Expression) -> Expression | None:
     """Derivative of a function of one argument; None where it has kinks."""
     square = Power(x, Decimal(2))
     match function:

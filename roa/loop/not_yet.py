@@ -5,9 +5,7 @@ They are refused by name: a table that is ignored in silence would give a wrong 
 
 from __future__ import annotations
 
-TABLES = {
-    "limits": "limits on states and signals",
-}
+TABLES: dict[str, str] = {}
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
@@ -20,7 +18,6 @@ KEYS = {
 
 VALUES = {
     ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
-    ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
 }
 
 
