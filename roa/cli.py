@@ -23,9 +23,6 @@ if TYPE_CHECKING:
 WATCH = 5.0
 USAGE_ERROR, MACHINE_FAILED, INTERRUPTED = 2, 4, 130
 
-# Part of the contract, refused by name until it is there.
-NOT_YET = ("--cluster",)
-
 EXIT_CODES = """\
 exit codes
   0    done; for a claim: proved, or supported where the configuration accepts that
@@ -48,11 +45,6 @@ class _Parser(argparse.ArgumentParser):
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run the command line and return its exit code."""
     given = sys.argv[1:] if arguments is None else list(arguments)
-    for word in given:
-        what = word.partition("=")[0]
-        if what in NOT_YET and (what.startswith("-") or what == given[0]):
-            print(f"roa: {what}: not yet supported by this version; leave it out", file=sys.stderr)
-            return USAGE_ERROR
     options = vars(_parser().parse_args(given))
     if options.get("watch") and options["json"]:
         print(
@@ -143,7 +135,7 @@ def _parser() -> argparse.ArgumentParser:
 
     config: dict[str, Any] = {"metavar": "CONFIG", "help": "configuration file (TOML)"}
     folder: dict[str, Any] = {"metavar": "RUN", "help": "folder of a run"}
-    means = ("--jobs", "--hours", "--executor")
+    means = ("--jobs", "--hours", "--executor", "--cluster")
     verb("init", "write a commented configuration to start from").add_argument("file", metavar="FILE")
     verb("check", "is it sound, and what will it cost", "--samples", "--seed", "--jobs", "--quick").add_argument(
         "config", **config
@@ -208,6 +200,7 @@ _OPTIONS: dict[str, dict[str, Any]] = {
         "type": _hours,
         "help": "stop in time, with the statistics of what is done and exit code 130",
     },
+    "--cluster": {"metavar": "ADDRESS", "help": "of a Dask scheduler, tcp://HOST:PORT; or `local`"},
     "--executor": {
         "metavar": "NAME",
         "choices": ("serial", "threads", "processes", "cluster"),

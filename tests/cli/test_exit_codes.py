@@ -204,8 +204,8 @@ def test_wrong_input_is_one_sentence(write, tmp_path, capsys, case):
 
 WRONG_COMMANDS = [
     "status x",
-    "sweep x.toml --hours 3",
-    "run x.toml --cluster=a",
+    "sweep x.toml --hours 0",
+    "sweep x.toml --executor cluster",
     "run",
     "fly",
     "run x.toml --samples 0",
