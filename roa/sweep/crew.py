@@ -25,20 +25,16 @@ class Crew:
     failed : a sentence for each block that failed whenever it was tried
     """
 
-    def __init__(self, name: str, jobs: int, cluster: str | None = None) -> None:
+    def __init__(self, name: str, jobs: int) -> None:
         self._name = name
         self._jobs = jobs
-        self._cluster = cluster
-        where = f" on {name}" + (f" {cluster}" if cluster else "")
-        self.words = f"{jobs} at a time" + ("" if name in WITHIN else where)
+        self.words = f"{jobs} at a time" + ("" if name in WITHIN else f" on {name}")
         self.failed: list[str] = []
 
     @classmethod
     def of(cls, means: Means, blocks: int) -> Crew:
         """Return the crew for so many blocks."""
         jobs = min(means.jobs or _processors(), blocks)
-        if means.cluster:
-            return cls("cluster", jobs, means.cluster)
         return cls(means.executor or ("serial" if jobs == 1 else "threads"), jobs)
 
     def run(
@@ -46,7 +42,7 @@ class Crew:
     ) -> Iterator[tuple[Block, Trajectories]]:
         """Yield the blocks with their rows as they finish, until all are done or a stop is asked for."""
         troubled = []
-        for block, result in self._results(simulation, blocks, stop, self._jobs, say):
+        for block, result in self._results(simulation, blocks, stop, self._jobs):
             if isinstance(result, Trajectories):
                 yield block, result
             elif isinstance(result, executors.WorkersLost):
@@ -57,21 +53,19 @@ class Crew:
             if stop.made:
                 return
             say(f"{block} failed and is tried again alone")
-            for _, result in self._results(simulation, [block], stop, 1, say):
+            for _, result in self._results(simulation, [block], stop, 1):
                 if isinstance(result, Trajectories):
                     yield block, result
                 elif result is not None:
                     self._give_up(block, result, say)
 
     def _results(
-        self, simulation: Simulation, blocks: list[Block], stop: StopRequest, jobs: int, say: Callable[[str], None]
+        self, simulation: Simulation, blocks: list[Block], stop: StopRequest, jobs: int
     ) -> Iterator[tuple[Block, executors.Result]]:
-        run: Callable[..., Iterator[tuple[Block, executors.Result]]] = executors.load(self._name)
+        run = executors.load(self._name)
         if self._name in WITHIN:
             yield from run(partial(_unless, stop, simulation), _until(stop, blocks), jobs)
             return
-        if self._cluster:
-            run = partial(run, address=self._cluster, say=say)
         for block, result in run(simulation.elsewhere, _until(stop, blocks), jobs, lambda: stop.impatient):
             yield block, simulation.received(block, result) if isinstance(result, dict) else result
 

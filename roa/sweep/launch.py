@@ -15,7 +15,7 @@ import numpy as np
 
 from roa.errors import Interrupted, MachineError, UserError
 from roa.kernel.lanes import compile_lanes
-from roa.sweep import executors, store
+from roa.sweep import store
 from roa.sweep.block import Block
 from roa.sweep.crew import Crew
 from roa.sweep.finished import Finished, look_through
@@ -101,8 +101,6 @@ def _one_sentence(folder: RunFolder) -> Iterator[None]:
         yield
     except OSError as error:
         raise MachineError(f"{folder.path}: {error}; carry on with `{folder.resume_command}`") from error
-    except executors.SchedulerLost as error:
-        raise Interrupted(f"{error}; what is finished is stored, carry on with `{folder.resume_command}`") from error
 
 
 def _begin(plan: Plan, folder: RunFolder) -> Header:

@@ -5,7 +5,6 @@ from __future__ import annotations
 import hashlib
 import platform
 import subprocess
-from collections.abc import Mapping
 from functools import cache
 from importlib.metadata import version
 from pathlib import Path
@@ -14,9 +13,8 @@ from typing import Any
 from roa import __version__
 
 PACKAGE = Path(__file__).parents[1]
-# Packages whose arithmetic or file format shows in what is stored; those of the first row decide bits.
-DECISIVE = ("numpy", "scipy", "numba")
-OTHERS = ("h5py", "sympy")
+# Packages whose arithmetic or file format shows in what is stored.
+PACKAGES = ("numpy", "scipy", "numba", "h5py", "sympy")
 
 
 def versions() -> dict[str, str]:
@@ -24,21 +22,8 @@ def versions() -> dict[str, str]:
     return {
         "roa": __version__,
         "python": platform.python_version(),
-        **{package: version(package) for package in (*DECISIVE, *OTHERS)},
+        **{package: version(package) for package in PACKAGES},
     }
-
-
-@cache
-def our_versions() -> dict[str, str]:
-    """Return what decides bits here: versions, and a digest of this program's source."""
-    return {key: versions()[key] for key in ("roa", *DECISIVE)} | {"code": code_state()["digest"][:12]}
-
-
-def differences(theirs: Mapping[str, str], ours: Mapping[str, str]) -> str:
-    """Return in words what differs; nothing where nothing does."""
-    return ", ".join(
-        f"{key} {theirs.get(key, 'absent')} in place of {ours[key]}" for key in ours if theirs.get(key) != ours[key]
-    )
 
 
 @cache

@@ -1,6 +1,6 @@
 """Blocks on workers that may die: a few are handed out ahead, and a block whose worker died is run once more, alone.
 
-What executors with workers outside this process share; each brings a `Pool` of its own.
+What executors with workers outside this process have in common; each brings a `Pool` of its own.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ POLL = 0.2
 
 
 class Future(Protocol):
-    """What both joblib's loky and distributed return for work that was handed out."""
+    """Work that was handed out, as the standard library has it."""
 
     def add_done_callback(self, fn: Callable[[Any], Any]) -> Any:
         """Call when it is done."""
@@ -43,10 +43,6 @@ class Pool(Protocol):
 
     def renew(self) -> None:
         """See to it that there are workers again."""
-        ...
-
-    def check(self) -> None:
-        """Raise if no worker can be reached any more."""
         ...
 
 
@@ -126,7 +122,6 @@ class _Window:
         while True:
             if self._given_up():
                 raise GivenUp
-            self._pool.check()
             try:
                 future = self._done.get(timeout=POLL)
             except queue.Empty:

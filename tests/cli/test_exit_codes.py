@@ -206,6 +206,7 @@ WRONG_COMMANDS = [
     "status x",
     "sweep x.toml --hours 0",
     "sweep x.toml --executor cluster",
+    "run x.toml --cluster=a",
     "run",
     "fly",
     "run x.toml --samples 0",

@@ -40,10 +40,6 @@ class WorkersLost(Exception):
     """A block ended two workers that ran it, the second one alone: it is not tried again."""
 
 
-class SchedulerLost(Exception):
-    """No worker can be reached any more: what is finished stays, the rest has to wait."""
-
-
 def available() -> list[str]:
     """Return the names of the executors, sorted."""
     return sorted(module.name for module in pkgutil.iter_modules(__path__))

@@ -60,9 +60,6 @@ class _Processes:
         self.end(at_once=True)
         self._pool = self._make()
 
-    def check(self) -> None:
-        """Nothing: a pool that is lost says so by its futures."""
-
     def end(self, at_once: bool) -> None:
         if at_once:
             # Not by loky's own way, whose thread may stumble over work that was just handed out.
