@@ -27,6 +27,7 @@ from roa.basin.counterexample import (
 from roa.basin.intervals import clopper_pearson_upper, success_run_samples
 from roa.basin.ring_attempt import attempt_ring
 from roa.bound.bounds import Bounds
+from roa.bound.invariance_proof import prove_by_invariance
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import branch_and_bound, proof_budget, prover_of
@@ -138,7 +139,11 @@ def judge(
     if configuration.bound.inner is not None or configuration.loop.disturbances:
         return _not_positive_definite(case) or _leaves_the_domain(case) or _ultimately(case, level)
     return (
-        _not_positive_definite(case) or _leaves_the_domain(case) or _proved(case, level, bounds) or _by_simulation(case)
+        _not_positive_definite(case)
+        or _leaves_the_domain(case)
+        or _proved(case, level, bounds)
+        or _proved_by_invariance(case, level)
+        or _by_simulation(case)
     )
 
 
@@ -160,9 +165,9 @@ class _Case:
     def witness(self) -> Array | None:
         """A point of the set with V̇ > 0, if one was found.
 
-        Not looked for where a ring is all that is claimed, nor with a hold, where V̇ means nothing.
+        With a hold: a start after which V is greater one period later. Not looked for where a ring is claimed.
         """
-        if self.configuration.bound.inner is not None or self.configuration.loop.hold is not None:
+        if self.configuration.bound.inner is not None:
             return None
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
 
@@ -238,11 +243,10 @@ def _leaves_the_domain(case: _Case) -> Claim | None:
 def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     """Prove the claim by a bound that is proved already, or by branch and bound at the very level."""
     for bound in bounds.stated:
-        if bound.strength is Strength.PROVED and level <= Decimal(bound.level):
+        same = bound.V is case.claimed.V and bound.inner is None
+        if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
             return case.judged(Result.PROVED, Decrease.PROVED, reason)
-    if case.configuration.loop.hold is not None:  # a continuous V̇ never proves a sampled loop
-        return None
     V, contact = case.claimed.V, bounds.named("contact level")
     # Above the estimate, which errs upwards only, there are points with V̇ >= 0 and no proof to be had.
     if contact is None or level > Decimal(contact.level_estimated or contact.level):
@@ -253,8 +257,16 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     proof = prover.prove(level, proof_budget(prover))
     if proof.answer is not Answer.PROVED:
         return None
-    reason = f"{branch_and_bound(proof)} on the whole claimed set, which lies inside the domain."
+    reason = f"{branch_and_bound(V, proof)} on the whole claimed set, which lies inside the domain."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
+
+
+def _proved_by_invariance(case: _Case, level: Decimal) -> Claim | None:
+    """Prove a claim of which only V̇ <= 0 is true; the decrease stays undecided, since V̇ < 0 is not what is proved."""
+    if case.witness is not None:
+        return None
+    proof = prove_by_invariance(case.claimed.V, level)
+    return case.judged(Result.PROVED, Decrease.UNDECIDED, f"{proof.reason}.") if proof.is_proved else None
 
 
 def _ultimately(case: _Case, level: Decimal) -> Claim:
@@ -316,7 +328,8 @@ def _by_draws(case: _Case, trajectories: Trajectories) -> Claim:
     if not supported:
         reason += f", where {_percent_up(1 - verdict.fraction)} is allowed"
     if case.decrease is Decrease.REFUTED:
-        reason += "; V̇ > 0 at a point of the set, so the set may be safe but the argument for it is wrong"
+        grows = "V̇ > 0" if case.configuration.loop.hold is None else "V grows over a period"
+        reason += f"; {grows} at a point of the set, so the set may be safe but the argument for it is wrong"
     return case.judged(
         Result.SUPPORTED if supported else Result.NOT_SETTLED,
         case.decrease,

@@ -271,7 +271,8 @@ def _integrate(
             flow, end = controller.flow, min(controller.next_instant, integration.longest)
         solver = _solver(method, flow, (at.time, end), at.final, *tolerances)
         if solver is None:
-            return ended(Outcome.FAILED, Reason.NOT_FINITE, at)
+            left = loop.leaves_tables(at.final)
+            return ended(Outcome.FAILED, Reason.OUTSIDE_TABLE if left else Reason.NOT_FINITE, at)
         while solver.status == "running":
             if at.steps >= cap:
                 return ended(Outcome.FAILED, Reason.STEP_CAP, at)
@@ -294,10 +295,12 @@ def _integrate(
 
 def _trouble(loop: Loop, flow: Flow, x: Array) -> tuple[Outcome, Reason]:
     """Name why no step leads on from the last accepted state x, float64 (n,)."""
-    if np.any(np.abs(x - loop.centre) > loop.half_widths):
-        return Outcome.ESCAPED, Reason.BLOW_UP
     slope = flow.rhs(x)
     with np.errstate(all="ignore"):  # a little further on: a millionth of the domain along the slope
         beyond = x + 1e-6 * np.min(loop.half_widths / np.abs(slope)) * slope
+    if loop.leaves_tables(x) or loop.leaves_tables(beyond):
+        return Outcome.FAILED, Reason.OUTSIDE_TABLE
+    if np.any(np.abs(x - loop.centre) > loop.half_widths):
+        return Outcome.ESCAPED, Reason.BLOW_UP
     finite = np.isfinite(slope).all() and np.isfinite(flow.rhs(beyond)).all()
     return Outcome.FAILED, Reason.STEP_UNDERFLOW if finite else Reason.NOT_FINITE

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from roa.basin.cautions import cautions
+from roa.basin.certificate import certificate
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
@@ -85,6 +86,7 @@ def conclude(
         "bounds_note": bounds.note,
         "basin": None if basin is None else _basin(basin),
         "comparison": _comparison(stated, claim, by_name),
+        "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
         "cautions": cautions(configuration, equilibrium, target, basin),

@@ -68,8 +68,6 @@ class LevelProver:
     def prove(self, level: Level, budget: int) -> LevelProof:
         """Try to prove a level, given exactly, with at most `budget` boxes; equal arguments give equal answers."""
         c = enclose_number(level)[1]
-        if self._V.loop.hold is not None:
-            return _undecided("V̇ says nothing of a loop with a hold, whose commands lag behind")
         if not self.is_ready:
             return _undecided("the equilibrium could not be enclosed, or V not be proved to be positive definite")
         if not 0 < c < np.inf:
@@ -90,8 +88,11 @@ class LevelProver:
 
     @property
     def is_ready(self) -> bool:
-        """Whether the equilibrium is enclosed and V proved to be positive definite, which every proof needs."""
-        return self._root is not None and self._shape > 0
+        """Whether the equilibrium is enclosed and V proved to be positive definite, which every proof needs.
+
+        Never for a loop with a hold: its commands lag behind, and V̇ says nothing of it.
+        """
+        return self._V.loop.hold is None and self._root is not None and self._shape > 0
 
     @property
     def box_work(self) -> int:

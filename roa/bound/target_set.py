@@ -51,6 +51,8 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
         note = "no level of the configured V is proved" if best is None else "the configured V is no quadratic"
         best = _bound_of_another_shape(configuration, equilibrium)
         note += "" if best is None else '; the V meant here is that of A\'P + PA = -Q with Q = "domain"'
+    if best is not None and loop.hold is not None and loop.hold.delay:
+        best, note = None, "what is proved with a delay is of the state together with the command that still acts"
     level = 0.0 if best is None else _safe_level(best)
     if best is not None and not _is_resolved(configuration, best.V, level):
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"

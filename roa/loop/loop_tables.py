@@ -15,6 +15,7 @@ from roa.loop.faults import Faults
 from roa.loop.formula import Vocabulary, parse
 from roa.loop.formula_syntax import FormulaError
 from roa.loop.hold import Hold, read_hold
+from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop, Parameter
 from roa.loop.values import kind, number, pair
 from roa.loop.wording import hint, listed, quoted
@@ -24,8 +25,10 @@ LONGEST_NAME = 64
 LONGEST_UNIT = 40
 
 
-def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) -> Loop | None:
-    """Build the loop from its tables, or record what is wrong and return None.
+def read_loop(
+    title: str, tables: Mapping[str, dict[str, Any]], lookups: Mapping[str, LookupTable], faults: Faults
+) -> Loop | None:
+    """Build the loop from its tables, or record what is wrong and return None; `lookups` are its look-up tables.
 
     A name that is faulty where it is defined still counts as known elsewhere: one slip, one fault.
     """
@@ -33,7 +36,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
     for required in ("states", "dynamics", "domain"):
         if required not in tables:
             faults.add(required, "", "the table is missing")
-    reader = _LoopTables(tables, faults)
+    reader = _LoopTables(tables, lookups, faults)
     reader.check_names()
     units = reader.units()
     parameters, disturbances = read_disturbances(tables.get("disturbance", {}), reader.parameters(), faults)
@@ -57,6 +60,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
         dynamics=tuple(dynamics[name] for name in states),
         domain=tuple(domain[name] for name in states),
         guess=tuple(guess.get(name, Decimal(0)) for name in states),
+        tables=lookups,
         hold=hold,
         disturbances=disturbances,
     )
@@ -65,6 +69,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
 @dataclass(frozen=True)
 class _LoopTables:
     tables: Mapping[str, dict[str, Any]]
+    lookups: Mapping[str, LookupTable]
     faults: Faults
 
     @property
@@ -76,7 +81,7 @@ class _LoopTables:
 
     def check_names(self) -> None:
         owner: dict[str, str] = {}
-        for table in ("states", "parameters", "signals", "disturbance"):
+        for table in ("states", "parameters", "signals", "disturbance", "tables"):
             for name in self.table(table):
                 if table == "disturbance" and owner.get(name) == "parameters":
                     continue  # a parameter that varies; its value there is the nominal one
@@ -130,7 +135,7 @@ class _LoopTables:
         above = [*self.states, *parameters]
         for name, text in self.table("signals").items():
             refused = {later: _too_early(name, later) for later in self.table("signals")}  # unless it stands above
-            tree = self._formula("signals", name, text, Vocabulary(above, known, refused))
+            tree = self._formula("signals", name, text, Vocabulary(above, known, refused, self.lookups))
             if tree is not None:
                 trees[name] = tree
             above.append(name)
@@ -138,7 +143,7 @@ class _LoopTables:
 
     def dynamics(self, parameters: Sequence[str], known: Mapping[str, Decimal]) -> dict[str, Expression]:
         trees: dict[str, Expression] = {}
-        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], known)
+        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], known, tables=self.lookups)
         for name, text in self._of_states("dynamics", "its time derivative", complete=True).items():
             tree = self._formula("dynamics", name, text, vocabulary)
             if tree is not None:

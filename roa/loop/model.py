@@ -11,8 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.loop.evaluate import evaluate
-from roa.loop.expression import Expression
+from roa.loop.expression import Expression, Lookup, walk
 from roa.loop.hold import Hold
+from roa.loop.lookup_table import LookupTable
 from roa.loop.symbolic import Partials
 
 Array = NDArray[np.float64]
@@ -39,6 +40,7 @@ class Loop:
     dynamics : tuple of n trees, the time derivative of each state, in state units per second
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
+    tables : mapping from name to look-up table; the trees hold the same objects
     hold : the digital part, or None; f below is then the loop with every signal taken as continuous, which has the
         same equilibria and nothing else in common with the sampled one (`roa.loop.sampled`)
     disturbances : names among the parameters that vary with time anywhere in an interval (low, high); the value of the
@@ -53,6 +55,7 @@ class Loop:
     dynamics: tuple[Expression, ...]
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
+    tables: Mapping[str, LookupTable] = field(default_factory=dict)
     hold: Hold | None = None
     disturbances: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
@@ -96,6 +99,20 @@ class Loop:
         """
         values = self.values_of(x)
         return np.stack([np.broadcast_to(evaluate(tree, values), x.shape[:-1]) for tree in self.dynamics], axis=-1)
+
+    @cached_property
+    def refusals(self) -> tuple[Lookup, ...]:
+        """The uses of tables that end with their points, each once, in the order in which they are worked out."""
+        used = (part for tree in (*self.signals.values(), *self.dynamics) for part in walk(tree))
+        return tuple(dict.fromkeys(part for part in used if isinstance(part, Lookup) and part.table.refuses))
+
+    def leaves_tables(self, x: Array) -> NDArray[np.bool_]:
+        """Whether some table that ends with its points is left at the points x, float64 (..., n) -> bool (...)."""
+        values = self.values_of(x)
+        left = np.zeros(x.shape[:-1], dtype=bool)
+        for use in self.refusals:
+            left = left | use.table.leaves(evaluate(use.argument, values))
+        return left
 
     @cached_property
     def _partials(self) -> Partials:

@@ -7,7 +7,6 @@ from __future__ import annotations
 
 TABLES = {
     "limits": "limits on states and signals",
-    "tables": "look-up tables",
 }
 
 KEYS = {
@@ -21,7 +20,6 @@ KEYS = {
 
 VALUES = {
     ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
-    ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
 }
 
 

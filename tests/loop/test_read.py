@@ -235,17 +235,14 @@ def test_one_fault_one_line(text, words):
     ("text", "words"),
     [
         (with_table("[limits]\ntilt = [-1, 1]"), "[limits]: not yet supported by this version"),
-        (with_table('[tables.drag]\ncsv = "drag.csv"'), "[tables]: not yet supported by this version"),
         (with_change("damping = 2", "damping = { value = 2, spread = [1, 3] }"), "spread is not yet supported"),
         (with_change("[dynamics]", '[dynamics]\npython = "plant.py:rhs"'), "[dynamics] python: not yet supported"),
-        (with_change('"stiffness*tilt"', '"lookup(drag, tilt)*tilt"'), "lookup is not yet supported by this version"),
         *((with_table(f"[bound]\n{key} = 1"), f"[bound] {key}: not yet supported by this version")
           for key in ("ball", "scale")),
         *((with_table(f"[sweep]\n{key} = 1"), f"[sweep] {key}: not yet supported by this version")
           for key in ("accuracy", "goal", "stop_outside")),
         *((with_table(f'[sweep]\ndesign = "{design}"'), f'"{design}" is not yet supported by this version; use "sobol"')
           for design in ("boundary",)),
-        (with_table('[sweep]\nmethod = "rodas4"'), '"rodas4" is not yet supported by this version; use "tsit'),
     ],
 )  # fmt: skip
 def test_not_yet_is_refused_by_name(text, words):
