@@ -83,7 +83,7 @@ def figure(evidence: Evidence) -> Figure:
         edges = [edge for region in one.slice(i, j).regions.values() for edge in region.edges]
         label_outlines(axes, outlines, [*edges, *(trace.points[:, [i, j]] for trace in traces)])
     simulated = [
-        *legends.region_entries(evidence.slice(i, j).regions, evidence.verdict["basin"]["fraction"]),
+        *legends.region_entries(evidence.slice(i, j).regions, evidence.verdict["basin"]),
         *legends.trace_entries(traces),
         *legends.other_entries(evidence),
     ]
