@@ -113,6 +113,19 @@ def resume(
         return _launched(prepared, folder, means, progress, figures=True)
 
 
+def status(run: str | Path) -> Result:
+    """Say how far a sweep is, from its folder alone; the writer does not notice."""
+    from roa.loop.read import read_text
+    from roa.report.status_text import status_document, status_text
+    from roa.sweep.status import read_status
+
+    folder = _existing(run)
+    found = read_status(folder)
+    confidence = read_text(found.header.config, str(folder.config)).verdict.confidence
+    text = status_text(found, confidence, str(folder.path), folder.resume_command)
+    return Result(text, status_document(found, confidence), 0, folder.path)
+
+
 def bound(
     config: str | Path, out: str | Path | None = None, seed: int | None = None, jobs: int | None = None,
     quick: bool = False,
@@ -304,7 +317,8 @@ def _stored(
     configuration = read_text(header.config, str(folder.config))
     quick = header.fingerprint_parts.get("config.bound.search") == []
     target = target_of(header.fingerprint_parts) if with_target else None
-    return Preparation(configuration, samples or header.samples, header.seed, progress, target, jobs, quick), folder
+    samples = samples or header.samples
+    return Preparation(configuration, samples, header.seed, progress, target, jobs, header.block_size, quick), folder
 
 
 def _samples_of(folder: RunFolder) -> Samples:

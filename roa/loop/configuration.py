@@ -11,6 +11,7 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, mod
 from roa.loop.expression import Expression
 from roa.loop.formula_text import decimal_text, to_text
 from roa.loop.hold import Hold
+from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop
 from roa.loop.values import Matrix, kind, number, real, symmetric_matrix, whole, word
 
@@ -104,6 +105,7 @@ class SweepTable(_Table):
     seed : of the scrambling
     horizon, longest : s; a trajectory unresolved at the horizon is followed further, up to `longest`
     escape : size of the escape box in domain sizes
+    store : "all", or "outcomes" for outcome and time alone
     method : name of an integration method, or "auto"
     rtol, atol : tolerances of one step, relative and in state units
     ball_radius : of a target ball, in half-widths of the domain
@@ -120,6 +122,7 @@ class SweepTable(_Table):
     horizon: _Positive = 60.0
     longest: _Positive = 60.0 * LONGEST_PER_HORIZON
     escape: _AtLeastOne = 10.0
+    store: Annotated[str, BeforeValidator(word("all", "outcomes"))] = "all"
     method: Annotated[str, BeforeValidator(word())] = "auto"
     rtol: Annotated[
         float,
@@ -171,7 +174,7 @@ class Configuration:
     Attributes
     ----------
     source : name of the file, for messages
-    text : as read
+    text : as read, with the texts of the files that it names
     loop, bound, sweep, verdict : its tables, checked, with defaults filled in
     """
 
@@ -204,10 +207,14 @@ class Configuration:
             "states": [[name, unit] for name, unit in zip(loop.states, loop.units, strict=True)],
             "parameters": {name: decimal_text(loop.parameters[name].value) for name in sorted(loop.parameters)},
             "signals": [[name, to_text(tree)] for name, tree in loop.signals.items()],
+            "tables": {name: _table(loop.tables[name]) for name in sorted(loop.tables)},
             "dynamics": [to_text(tree) for tree in loop.dynamics],
             "equilibrium": [decimal_text(value) for value in loop.guess],
             **_resolved_hold(loop.hold),
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "limits": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.limits.items())
+            },
             "disturbance": {
                 name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
             },
@@ -224,6 +231,11 @@ class Configuration:
             "sweep": self.sweep.model_dump(),
             "verdict": self.verdict.model_dump(),
         }
+
+
+def _table(table: LookupTable) -> dict[str, Any]:
+    points = {"x": [decimal_text(value) for value in table.x], "y": [decimal_text(value) for value in table.y]}
+    return {**points, "kind": table.kind, "beyond": table.beyond}
 
 
 def _resolved_hold(hold: Hold | None) -> dict[str, Any]:

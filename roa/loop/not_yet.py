@@ -5,10 +5,7 @@ They are refused by name: a table that is ignored in silence would give a wrong 
 
 from __future__ import annotations
 
-TABLES = {
-    "limits": "limits on states and signals",
-    "tables": "look-up tables",
-}
+TABLES: dict[str, str] = {}
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
@@ -20,9 +17,7 @@ KEYS = {
 }
 
 VALUES = {
-    ("sweep", "store", "outcomes"): 'use "all"',
     ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
-    ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
 }
 
 

@@ -60,6 +60,7 @@ seed    = 1
 horizon = 60.0              # s; by then a trajectory should be decided
 longest = 960.0             # s; one that is not is followed up to here
 escape  = 10.0              # size of the escape box in domain sizes: a trajectory that leaves it has escaped
+store   = "all"             # or "outcomes": outcome and time alone, 9 bytes a start
 method  = "auto"
 rtol    = 1e-6              # tolerance of one step, relative
 atol    = 1e-9              # and absolute, in the units of the states
