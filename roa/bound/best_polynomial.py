@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from scipy.optimize import linprog
 
 from roa.bound.level_set_proof import LevelSetProver
-from roa.bound.lyapunov_function import FormulaV, Quadratic
+from roa.bound.lyapunov_function import Quadratic
 from roa.bound.monomials import Monomials
 from roa.bound.search_guide import Guide, Say
 from roa.bound.statement import Bound, Strength
@@ -62,7 +62,9 @@ def best_polynomial(guide: Guide, degree: int | None, boxes: int | None, say: Sa
             break
     if best.volume > 1.0 or best.bound.level == 0:
         return best.bound
-    return Bound(NAME, best.bound.V, 0.0, Strength.ESTIMATED, "no polynomial was proved that exceeds the best ellipsoid")
+    return Bound(
+        NAME, best.bound.V, 0.0, Strength.ESTIMATED, "no polynomial was proved that exceeds the best ellipsoid"
+    )
 
 
 @dataclass(frozen=True)
@@ -181,7 +183,9 @@ class _Programme:
             rows = np.concatenate([inward, decreases, self._at_edge])
             last = np.concatenate([np.zeros(len(inward)), np.ones(len(decreases)), np.zeros(len(self._at_edge))])
             rows = np.concatenate([rows, last[:, None]], axis=1)
-            limits = np.concatenate([np.full(len(inward), -1.0), np.zeros(len(decreases)), np.full(len(self._at_edge), 1.5)])
+            limits = np.concatenate(
+                [np.full(len(inward), -1.0), np.zeros(len(decreases)), np.full(len(self._at_edge), 1.5)]
+            )
         found = linprog(cost, A_ub=rows, b_ub=limits, bounds=(None, None), method="highs")
         if found.status != 0 or (not self._widest and found.x[-1] <= 0):
             return None
@@ -209,7 +213,9 @@ def _proved(guide: Guide, monomials: Monomials, coefficients: Array, boxes: int 
             return None
         proof = prover.prove(level, budget)
         if proof.answer is Answer.PROVED:
-            note = f"a polynomial of degree {monomials.exponents.sum(axis=1).max()}: V̇ < 0 is proved by interval branch "
+            note = (
+                f"a polynomial of degree {monomials.exponents.sum(axis=1).max()}: V̇ < 0 is proved by interval branch "
+            )
             note += f"and bound ({proof.boxes} boxes) on the part of the set that holds the equilibrium"
             bound = Bound(NAME, V, level, Strength.PROVED, note)
             volume = _volume(guide, _radii(guide, monomials, coefficients, level))

@@ -3,7 +3,8 @@
 It is enough that U̇ > 0 at every point of the domain with U = c, and that U < c at the equilibrium: a trajectory would
 have to cross U = c downwards. U is a polynomial, zero at the equilibrium, from a linear programme: U <= 1 within the
 simulated edge R and up to (1 + 0.15 δ) R, U >= 1 from (1 + δ) R out to the faces, and in the shell between the two
-U̇ >= m (r/R - 1) with m as large as can be; |U| <= 1 within keeps that finite. Then c is lowered as far as the proof goes.
+U̇ >= m (r/R - 1) with m as large as can be; |U| <= 1 within keeps that
+finite. Then c is lowered as far as the proof goes.
 """
 
 from __future__ import annotations
@@ -16,12 +17,13 @@ from roa.bound.level_set_proof import LevelSetProver
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.monomials import Monomials
 from roa.bound.search_guide import Guide, Say
-from roa.bound.statement import Bound, Strength
+from roa.bound.statement import OUTER, Bound, Strength
+from roa.bound.volume import ball_volume
 from roa.kernel.branch_and_bound import Answer
 
 Array = NDArray[np.float64]
 
-NAME = "no-return set"
+NAME = OUTER
 DEGREES = {1: (2, 4), 2: (2, 4, 6, 8), 3: (2, 4)}
 DEGREES_MORE = (2, 4)
 DELTAS = (0.01, 0.03, 0.1, 0.3)
@@ -49,7 +51,9 @@ def no_return_set(guide: Guide, degree: int | None, boxes: int | None, say: Say)
     """
     nothing = Bound(NAME, Quadratic(guide.loop, guide.centre, guide.S.T @ guide.S), 0.0, Strength.ESTIMATED, "")
     if np.all(guide.edge.open):
-        return _without(nothing, "all rays reach the domain's faces within the simulated basin: nothing is left outside")
+        return _without(
+            nothing, "all rays reach the domain's faces within the simulated basin: nothing is left outside"
+        )
     best, smallest = nothing, np.inf
     inside = float(np.mean(guide.edge.radius**guide.n))
     for d in (degree,) if degree is not None else DEGREES.get(guide.n, DEGREES_MORE):
@@ -59,11 +63,13 @@ def no_return_set(guide: Guide, degree: int | None, boxes: int | None, say: Say)
                 continue
             if found[0] < smallest:
                 smallest, best = found
-                say(f"proved a no-return set of degree {d}: the rest has {smallest / inside:.5g} times the simulated volume")
+                say(f"proved a no-return set of degree {d}: {smallest / inside:.5g} times the simulated volume is left")
             break
         if smallest < GOOD * inside:
             break
-    return best if best.level > 0 else _without(nothing, "no polynomial that rises on a level all round could be proved")
+    return (
+        best if best.level > 0 else _without(nothing, "no polynomial that rises on a level all round could be proved")
+    )
 
 
 def _without(nothing: Bound, reason: str) -> Bound:
@@ -98,12 +104,14 @@ class _Programme:
     def _solve(self) -> Array | None:
         rising = np.concatenate(self._rising)
         k = len(self._monomials.exponents)
-        rows = np.concatenate([
-            np.column_stack([self._inner, np.zeros(len(self._inner))]),
-            np.column_stack([-self._inner, np.zeros(len(self._inner))]),
-            np.column_stack([-self._outer, np.zeros(len(self._outer))]),
-            rising,
-        ])
+        rows = np.concatenate(
+            [
+                np.column_stack([self._inner, np.zeros(len(self._inner))]),
+                np.column_stack([-self._inner, np.zeros(len(self._inner))]),
+                np.column_stack([-self._outer, np.zeros(len(self._outer))]),
+                rising,
+            ]
+        )
         limits = np.concatenate([np.ones(2 * len(self._inner)), -np.ones(len(self._outer)), np.zeros(len(rising))])
         found = linprog(np.append(np.zeros(k), -1.0), A_ub=rows, b_ub=limits, bounds=(None, None), method="highs")
         return np.asarray(found.x[:k]) if found.status == 0 and found.x[-1] > 0 else None
@@ -122,7 +130,7 @@ class _Programme:
                 return None
             U, falling = values @ a, known & (derivatives @ a <= 0)
             lowest = float(U[falling & ~beyond].max(initial=0.0))
-            outside = falling & beyond & (U > lowest)
+            outside = beyond & falling & (lowest < U)
             highest = float(U[outside].min(initial=1.02 * max(1.0, lowest)))
             if highest > 1.0:
                 found = self._lowered(a, lowest, highest, boxes)
@@ -150,15 +158,9 @@ class _Programme:
                 note += f"({proof.boxes} boxes), so that no point beyond converges without leaving the domain first"
                 share = float(np.mean(self._monomials.values(self._guide.checked) @ a <= c))
                 volume = share * self._guide.loop.domain_volume * abs(float(np.linalg.det(self._guide.S)))
-                return volume / _ball_volume(self._guide.n), Bound(NAME, V, c, Strength.PROVED, note)
+                return volume / ball_volume(self._guide.n), Bound(NAME, V, c, Strength.PROVED, note)
         return None
 
 
 def _finite(points: Array) -> Array:
     return np.asarray(points[np.all(np.isfinite(points), axis=1)])
-
-
-def _ball_volume(n: int) -> float:
-    from roa.bound.volume import ball_volume
-
-    return ball_volume(n)

@@ -54,7 +54,7 @@ class Guide:
     @classmethod
     def about(cls, loop: Loop, centre: Array, P: Array, run: Run) -> Guide:
         """Simulate the edge along rays that are evenly spread in the metric of P; `run` stops at the domain."""
-        S = np.linalg.cholesky(P).T
+        S = np.asarray(np.linalg.cholesky(P).T, dtype=np.float64)
         T = np.linalg.inv(S)
         u = unit_vectors(loop.n, RAYS.get(loop.n, RAYS_MORE))
         edge = simulated_edge(loop, centre, u @ T.T, run)
