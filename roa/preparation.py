@@ -61,7 +61,13 @@ class Preparation:
         block_size: int | None = None,
         quick: bool = False,
     ) -> None:
-        from roa.loop.equilibrium import check_V, find_equilibrium, require_given_V, require_stable
+        from roa.loop.equilibrium import (
+            check_V,
+            find_equilibrium,
+            require_given_V,
+            require_stable,
+            require_within_limits,
+        )
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
@@ -74,6 +80,7 @@ class Preparation:
             require_stable(self.equilibrium, configuration.loop, configuration.source)
         else:
             require_given_V(configuration, self.equilibrium)
+        require_within_limits(self.equilibrium, configuration.loop, configuration.source)
         check_V(configuration, self.equilibrium)
 
     @cached_property
@@ -85,6 +92,20 @@ class Preparation:
         if not is_kept():
             self.progress.say("compiling the prover (once on this machine, about half a minute)")
         return derive_bounds(self.configuration, self.equilibrium, self.progress.say)
+
+    @cached_property
+    def all_bounds(self) -> Bounds:
+        """The bounds, with those that are searched for by means of simulation."""
+        from dataclasses import replace
+
+        from roa.bound.searched_bounds import search_bounds
+        from roa.kernel.lanes import compile_lanes
+
+        if not self.configuration.searches or self.configuration.loop.hold is not None:
+            return self.bounds
+        within = replace(self.integration, escape=1.0)
+        lanes = compile_lanes(self.configuration.loop, self.target, within)
+        return search_bounds(self.configuration, self.equilibrium, self.bounds, lanes.run, self.progress.say)
 
     @cached_property
     def pilot(self) -> Pilot:

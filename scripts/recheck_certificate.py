@@ -278,6 +278,8 @@ class Loop:
         self.domain = [tuple(map(exact, ends)) for ends in certificate["domain"]]
         self.T = [[enclosed(entry) for entry in row] for row in certificate["T"]]
         self.P = [[enclosed(entry) for entry in row] for row in certificate["P"]]
+        if not self.varying.keys() <= self.known.keys():
+            raise NotSo("a disturbance is no parameter")
         if any(self.P[i][j] != self.P[j][i] for i in range(self.n) for j in range(i)):
             raise NotSo("P is not symmetric")
         self.PT = product(self.P, self.T)
@@ -506,6 +508,9 @@ def main(arguments: list[str]) -> int:
         return FALSE
     try:
         done = check(certificate, boxes)
+    except (KeyError, ValueError, TypeError, IndexError, SyntaxError) as fault:
+        print(f"NOT SO: the certificate cannot be read ({type(fault).__name__}: {fault}).")
+        return FALSE
     except NotSo as fault:
         print(f"NOT SO: {fault}.")
         return FALSE

@@ -13,12 +13,14 @@ from roa.basin.certificate import certificate
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
+from roa.basin.ladder import bracket, ladder
 from roa.basin.levels import Levels, by_level
+from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import Quadratic
-from roa.bound.statement import Bound, Strength
-from roa.bound.volume import volume_inside
+from roa.bound.statement import OUTER, Bound, Strength
+from roa.bound.volume import volume_of
 from roa.kernel.target import Target
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
@@ -71,11 +73,12 @@ def conclude(
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
     by_name = {comparison.bound.name: comparison for comparison in comparisons}
     loop = configuration.loop
-    verdict = {
+    verdict: dict[str, Any] = {
         "title": loop.title,
         "states": loop.states,
         "units": loop.units,
         "domain": loop.box,
+        "limits": {name: [float(low), float(high)] for name, (low, high) in loop.limits.items()},
         "equilibrium": equilibrium.x,
         "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues],
         "stability": equilibrium.stability,
@@ -86,12 +89,16 @@ def conclude(
         "bounds_note": bounds.note,
         "basin": None if basin is None else _basin(basin),
         "comparison": _comparison(stated, claim, by_name),
+        "bracket": None,
+        "ladder": None,
         "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
         "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
+    verdict["bracket"] = bracket(verdict["bounds"], verdict["basin"], loop.domain_volume)
+    verdict["ladder"] = ladder(verdict["bounds"], verdict["basin"])
     plain: dict[str, Any] = _plain(verdict)
     return plain
 
@@ -137,7 +144,7 @@ def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
         "strength": bound.strength,
         "note": bound.note,
         **_function(bound),
-        "volume": volume_inside(bound.V, bound.level) if comparison is None else comparison.volume,
+        "volume": volume_of(bound) if comparison is None else comparison.volume,
         "volume_interval": _ends(None if comparison is None else comparison.volume_interval),
         "volume_strength": Strength.ESTIMATED,
         **_ratios_flat(comparison),
@@ -175,6 +182,20 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "count_intervals": {word: _ends(interval) for word, interval in basin.outcome_intervals.items()},
         "reasons": basin.reasons,
         "by_replicate": dict(zip(("converged", "samples"), basin.share.by_replicate, strict=True)),
+        "safe": None if basin.safe is None else _safe(basin, basin.safe),
+        "strength": Strength.SIMULATED,
+    }
+
+
+def _safe(basin: Basin, safe: Share) -> dict[str, Any]:
+    """What converges without crossing a limit."""
+    interval = safe.interval(basin.loop.n, basin.confidence)
+    return {
+        "fraction": safe.fraction,
+        "interval": _ends(interval),
+        "volume": safe.fraction * basin.loop.domain_volume,
+        "volume_interval": _ends(interval.scaled(basin.loop.domain_volume)),
+        "by_replicate": dict(zip(("converged", "samples"), safe.by_replicate, strict=True)),
         "strength": Strength.SIMULATED,
     }
 
@@ -185,7 +206,7 @@ def _comparison(stated: Sequence[Bound], claim: Claim | None, by_name: Mapping[s
     proved = [
         by_name[bound.name]
         for bound in stated
-        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name
+        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name and bound.name != OUTER
     ]
     compared = by_name.get("claim") if claim else max(proved, key=lambda one: one.volume, default=None)
     return {

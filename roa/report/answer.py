@@ -70,12 +70,14 @@ def _basin_sentence(verdict: Verdict) -> str:
     if basin.get("refusal"):
         return str(basin["refusal"])
     share = share_with_interval(basin["fraction"], tuple(basin["interval"]), basin["confidence"], "simulated")
-    return f"The simulated basin fills {share} of the domain."
+    safe = basin.get("safe")
+    within = "" if not safe else f", {percent(safe['fraction'], 2)} without crossing a limit on the way (simulated)"
+    return f"The simulated basin fills {share} of the domain{within}."
 
 
 def _bounds_sentence(verdict: Verdict) -> str:
     # The unfalsified level is no bound to rely on, but what the samples leave of V.
-    bounds = [bound for bound in verdict["bounds"] if bound["name"] != "unfalsified level"]
+    bounds = [bound for bound in verdict["bounds"] if bound["name"] not in ("unfalsified level", "no-return set")]
     found = [bound for bound in bounds if bound["level"] > 0]
     if not found:
         return f"No bound above level zero was found for this V (estimated). {verdict['bounds_note']}".rstrip()
