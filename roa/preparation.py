@@ -94,6 +94,20 @@ class Preparation:
         return derive_bounds(self.configuration, self.equilibrium, self.progress.say)
 
     @cached_property
+    def all_bounds(self) -> Bounds:
+        """The bounds, with those that are searched for by means of simulation."""
+        from dataclasses import replace
+
+        from roa.bound.searched_bounds import search_bounds
+        from roa.kernel.lanes import compile_lanes
+
+        if not self.configuration.searches or self.configuration.loop.hold is not None:
+            return self.bounds
+        within = replace(self.integration, escape=1.0)
+        lanes = compile_lanes(self.configuration.loop, self.target, within)
+        return search_bounds(self.configuration, self.equilibrium, self.bounds, lanes.run, self.progress.say)
+
+    @cached_property
     def pilot(self) -> Pilot:
         """A few trajectories that show where else the loop comes to rest."""
         from roa.kernel.lanes import are_compiled

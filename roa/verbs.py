@@ -138,7 +138,7 @@ def bound(
     folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress, jobs, quick)
     verdict = conclude(
-        prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed, jobs=jobs)
+        prepared.configuration, prepared.equilibrium, prepared.all_bounds, provenance(command, prepared.seed, jobs=jobs)
     )
     return _written(prepared.configuration, verdict, folder, 0)
 
@@ -346,7 +346,7 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
     verdict = conclude(
         prepared.configuration,
         prepared.equilibrium,
-        prepared.bounds,
+        prepared.all_bounds if figures else prepared.bounds,
         provenance(command, prepared.seed, samples.n, jobs, plan.fingerprint),
         target=prepared.target,
         samples=samples,

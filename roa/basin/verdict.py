@@ -13,14 +13,15 @@ from roa.basin.certificate import certificate
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
+from roa.basin.ladder import bracket, ladder
 from roa.basin.levels import Levels, by_level
 from roa.basin.sensitivity import Sensitivity
 from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import Quadratic
-from roa.bound.statement import Bound, Strength
-from roa.bound.volume import volume_inside
+from roa.bound.statement import OUTER, Bound, Strength
+from roa.bound.volume import volume_of
 from roa.kernel.target import Target
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
@@ -75,7 +76,7 @@ def conclude(
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
     by_name = {comparison.bound.name: comparison for comparison in comparisons}
     loop = configuration.loop
-    verdict = {
+    verdict: dict[str, Any] = {
         "title": loop.title,
         "states": loop.states,
         "units": loop.units,
@@ -91,6 +92,8 @@ def conclude(
         "bounds_note": bounds.note,
         "basin": None if basin is None else _basin(basin),
         "comparison": _comparison(stated, claim, by_name),
+        "bracket": None,
+        "ladder": None,
         "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
@@ -98,6 +101,8 @@ def conclude(
         "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
+    verdict["bracket"] = bracket(verdict["bounds"], verdict["basin"], loop.domain_volume)
+    verdict["ladder"] = ladder(verdict["bounds"], verdict["basin"])
     plain: dict[str, Any] = _plain(verdict)
     return plain
 
@@ -154,7 +159,7 @@ def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
         "strength": bound.strength,
         "note": bound.note,
         **_function(bound),
-        "volume": volume_inside(bound.V, bound.level) if comparison is None else comparison.volume,
+        "volume": volume_of(bound) if comparison is None else comparison.volume,
         "volume_interval": _ends(None if comparison is None else comparison.volume_interval),
         "volume_strength": Strength.ESTIMATED,
         **_ratios_flat(comparison),
@@ -216,7 +221,7 @@ def _comparison(stated: Sequence[Bound], claim: Claim | None, by_name: Mapping[s
     proved = [
         by_name[bound.name]
         for bound in stated
-        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name
+        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name and bound.name != OUTER
     ]
     compared = by_name.get("claim") if claim else max(proved, key=lambda one: one.volume, default=None)
     return {
