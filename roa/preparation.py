@@ -61,7 +61,13 @@ class Preparation:
         block_size: int | None = None,
         quick: bool = False,
     ) -> None:
-        from roa.loop.equilibrium import check_V, find_equilibrium, require_given_V, require_stable
+        from roa.loop.equilibrium import (
+            check_V,
+            find_equilibrium,
+            require_given_V,
+            require_stable,
+            require_within_limits,
+        )
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
@@ -74,6 +80,7 @@ class Preparation:
             require_stable(self.equilibrium, configuration.loop, configuration.source)
         else:
             require_given_V(configuration, self.equilibrium)
+        require_within_limits(self.equilibrium, configuration.loop, configuration.source)
         check_V(configuration, self.equilibrium)
 
     @cached_property

@@ -13,6 +13,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from roa.basin.claimed_limits import LimitsOfSet, limits_of
 from roa.basin.claimed_set import ClaimedSet
 from roa.basin.counterexample import (
     REFUTING,
@@ -43,7 +44,7 @@ Array = NDArray[np.float64]
 
 # Streams of random numbers, apart from each other and (by the first number) from those of the designs: points that
 # helped to look for a counterexample never count as independent draws.
-SEARCH_STREAM, DRAW_STREAM, DECREASE_STREAM = (1, 0), (1, 1), (1, 2)
+SEARCH_STREAM, DRAW_STREAM, DECREASE_STREAM, LIMITS_STREAM = (1, 0), (1, 1), (1, 2), (1, 3)
 
 
 class Result(StrEnum):
@@ -76,7 +77,7 @@ class Claim:
     counterexample : where refuted by a trajectory
     replay : how to see the counterexample again, a command line
     witness : float64 (n,), a point of the set with V̇ > 0, where the decrease is refuted
-    largest_level_inside : where the set leaves the domain
+    largest_level_inside : where the set leaves the domain or crosses a limit
     inner : where the claim is an ultimate bound: every trajectory from the set enters {V <= inner}, for good
     disturbances : name -> (low, high), under every course of which the claim is meant
     witness_disturbance : name -> value, under which V̇ > 0 at the witness
@@ -137,10 +138,16 @@ def judge(
     claimed = ClaimedSet(bounds.V, _at_most(level))
     case = _Case(configuration, claimed, target, integration, run, seed)
     if configuration.bound.inner is not None or configuration.loop.disturbances:
-        return _not_positive_definite(case) or _leaves_the_domain(case) or _ultimately(case, level)
+        return (
+            _not_positive_definite(case)
+            or _leaves_the_domain(case)
+            or _crosses_a_limit(case)
+            or _ultimately(case, level)
+        )
     return (
         _not_positive_definite(case)
         or _leaves_the_domain(case)
+        or _crosses_a_limit(case)
         or _proved(case, level, bounds)
         or _proved_by_invariance(case, level)
         or _by_simulation(case)
@@ -170,6 +177,13 @@ class _Case:
         if self.configuration.bound.inner is not None:
             return None
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
+
+    @cached_property
+    def limits(self) -> LimitsOfSet:
+        """What is known of the limits on the set."""
+        level = self.configuration.bound.level
+        assert level is not None
+        return limits_of(self.claimed, level, self.stream(LIMITS_STREAM))
 
     @property
     def decrease(self) -> Decrease:
@@ -237,11 +251,33 @@ def _leaves_the_domain(case: _Case) -> Claim | None:
         return None
     largest = claimed.largest_level_inside
     reason = f"The claimed set leaves the domain; the largest level of this V that stays inside is {largest:.6g}."
+    if case.limits.largest_level is not None and case.limits.largest_level < largest:
+        largest = case.limits.largest_level
+        reason = f"The claimed set leaves the domain and the limits; up to level {largest:.6g} it stays within both."
     return case.judged(Result.NOT_SETTLED, case.decrease, reason, witness=case.witness, largest_level_inside=largest)
+
+
+def _crosses_a_limit(case: _Case) -> Claim | None:
+    limits = case.limits
+    if not limits.crossed:
+        return None
+    reason = f"The claimed set crosses the limit on {' and '.join(limits.crossed)}"
+    if limits.largest_level is not None:
+        shown = "proved to stay" if limits.is_proved else "estimated to stay"
+        reason += f"; the largest level of this V that is {shown} within the limits is {limits.largest_level:.6g}"
+    return case.judged(
+        Result.NOT_SETTLED,
+        case.decrease,
+        f"{reason}.",
+        witness=case.witness,
+        largest_level_inside=limits.largest_level,
+    )
 
 
 def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
     """Prove the claim by a bound that is proved already, or by branch and bound at the very level."""
+    if not case.limits.kept:
+        return None
     for bound in bounds.stated:
         same = bound.V is case.claimed.V and bound.inner is None
         if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
@@ -263,7 +299,7 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
 
 def _proved_by_invariance(case: _Case, level: Decimal) -> Claim | None:
     """Prove a claim of which only V̇ <= 0 is true; the decrease stays undecided, since V̇ < 0 is not what is proved."""
-    if case.witness is not None:
+    if case.witness is not None or not case.limits.kept:
         return None
     proof = prove_by_invariance(case.claimed.V, level)
     return case.judged(Result.PROVED, Decrease.UNDECIDED, f"{proof.reason}.") if proof.is_proved else None
@@ -274,8 +310,10 @@ def _ultimately(case: _Case, level: Decimal) -> Claim:
     loop, inner = case.configuration.loop, case.configuration.bound.inner
     attempt = attempt_ring(case.claimed.V, inner, level)
     decrease, reason = Decrease(attempt.decrease), attempt.reason
-    if decrease is Decrease.PROVED:
+    if decrease is Decrease.PROVED and case.limits.kept:
         return case.judged(Result.PROVED, decrease, reason)
+    if not case.limits.kept:
+        reason += " That the set stays within the limits is not proved."
     found_by_proof: dict[str, Any] = {"witness": attempt.witness, "witness_disturbance": attempt.disturbance}
     if not loop.disturbances and case.target.residual:
         claim = _by_simulation(case)
@@ -327,6 +365,8 @@ def _by_draws(case: _Case, trajectories: Trajectories) -> Claim:
     )
     if not supported:
         reason += f", where {_percent_up(1 - verdict.fraction)} is allowed"
+    if not case.limits.kept:
+        reason += "; that the set stays within the limits is not proved"
     if case.decrease is Decrease.REFUTED:
         grows = "V̇ > 0" if case.configuration.loop.hold is None else "V grows over a period"
         reason += f"; {grows} at a point of the set, so the set may be safe but the argument for it is wrong"

@@ -31,6 +31,7 @@ class Basin:
     wanted : number of starts that the sweep is to have
     confidence : of the intervals, two-sided
     loop : Loop
+    safe : share of the samples that converge without crossing a limit; None where there are no limits
     """
 
     share: Tally
@@ -40,6 +41,7 @@ class Basin:
     wanted: int
     confidence: float
     loop: Loop
+    safe: Share | None = None
 
     @property
     def samples(self) -> int:
@@ -107,4 +109,5 @@ def measure(samples: Samples, loop: Loop, confidence: float, centre: NDArray[np.
         wanted=samples.wanted,
         confidence=confidence,
         loop=loop,
+        safe=by_outcome[Outcome.CONVERGED] if loop.limits else None,
     )

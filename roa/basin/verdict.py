@@ -14,6 +14,7 @@ from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
 from roa.basin.levels import Levels, by_level
+from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import Quadratic
@@ -76,6 +77,7 @@ def conclude(
         "states": loop.states,
         "units": loop.units,
         "domain": loop.box,
+        "limits": {name: [float(low), float(high)] for name, (low, high) in loop.limits.items()},
         "equilibrium": equilibrium.x,
         "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues],
         "stability": equilibrium.stability,
@@ -175,6 +177,20 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "count_intervals": {word: _ends(interval) for word, interval in basin.outcome_intervals.items()},
         "reasons": basin.reasons,
         "by_replicate": dict(zip(("converged", "samples"), basin.share.by_replicate, strict=True)),
+        "safe": None if basin.safe is None else _safe(basin, basin.safe),
+        "strength": Strength.SIMULATED,
+    }
+
+
+def _safe(basin: Basin, safe: Share) -> dict[str, Any]:
+    """What converges without crossing a limit."""
+    interval = safe.interval(basin.loop.n, basin.confidence)
+    return {
+        "fraction": safe.fraction,
+        "interval": _ends(interval),
+        "volume": safe.fraction * basin.loop.domain_volume,
+        "volume_interval": _ends(interval.scaled(basin.loop.domain_volume)),
+        "by_replicate": dict(zip(("converged", "samples"), safe.by_replicate, strict=True)),
         "strength": Strength.SIMULATED,
     }
 

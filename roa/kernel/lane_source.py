@@ -26,15 +26,15 @@ from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.straight_line import StraightLine, commands, right_hand_side
 from roa.kernel.tableau import Method, RosenbrockTableau
 from roa.kernel.target import Target
-from roa.loop.expression import Expression
+from roa.loop.expression import Expression, Name
 from roa.loop.model import Loop
 
 # 8 lanes do not vectorise, 16 give 0.89-0.96 of the speed of 32, and 64-128 no more than 1.03 of it.
 LANES = 32
 
 SIGNATURE = (
-    "void(f8[:,::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[:,::1], f8, f8[:,::1], f8, f8, "
-    "f8, f8, f8, i8, u1[::1], f8[::1], f8[:,::1], f8[:,::1], i4[::1], u1[::1])"
+    "void(f8[:,::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[:,::1], f8[:,::1], f8, f8[:,::1], f8, "
+    "f8, f8, f8, f8, i8, u1[::1], f8[::1], f8[:,::1], f8[:,::1], i4[::1], u1[::1])"
 )
 
 
@@ -60,8 +60,10 @@ def lane_source(loop: Loop, tableau: Method, target: Target) -> LaneSource:
     # 1 is the target itself, where it is a ball; 2, 3, … are the other equilibria.
     balls = ([] if level else [1]) + [2 + k for k in range(len(target.elsewhere))]
     hold = _hold(loop, command_values)
+    lines = list(code.lines)
+    limits = [code.variable(Name(name)) for name in loop.limits]
     numbers = "".join(f", c{i}" for i in range(len(code.constants)))
-    rows = _buffer_rows(states, bool(balls), hold)
+    rows = _buffer_rows(states, bool(balls), bool(limits), hold)
     text = _template().render(
         outcome=Outcome,
         reason=Reason,
@@ -73,7 +75,11 @@ def lane_source(loop: Loop, tableau: Method, target: Target) -> LaneSource:
         rows=rows,
         n=loop.n,
         states=states,
-        lines=code.lines,
+        lines=lines,
+        limits=limits,
+        limit_lines=code.lines,
+        limit_ends="".join(f", low{i}, high{i}" for i in range(len(limits))),
+        hermite=_hermite,
         derivatives=derivatives,
         refusals=_refusals(loop, code),
         n_constants=len(code.constants),
@@ -144,12 +150,14 @@ def _hold(loop: Loop, values: list[str]) -> _HoldCode:
     return _HoldCode(values, "none" if delay == 0 else "full" if delay == period else "part")
 
 
-def _buffer_rows(states: range, balls: bool, hold: _HoldCode) -> dict[str, int]:
+def _buffer_rows(states: range, balls: bool, limits: bool, hold: _HoldCode) -> dict[str, int]:
     """Name the rows of the lanes' buffer."""
     names = ["t", "h", "steps", *(f"{row}{j}" for row in ("x", "k", "peak") for j in states)]
     if balls:
         names += ["ball", "since", "entry", "entry_steps"]
         names += [f"{row}{j}" for row in ("entry_x", "entry_peak") for j in states]
+    if limits:
+        names += ["over"]
     return {name: row for row, name in enumerate([*names, *hold.rows])}
 
 
@@ -178,3 +186,11 @@ class _Jacobian:
 def _combination(weights: tuple[float, ...], state: int, stages: str = "k") -> str:
     """Write the weighted sum of one state's slopes over the stages."""
     return " + ".join(f"{weight!r} * {stages}{stage}_{state}" for stage, weight in enumerate(weights) if weight != 0.0)
+
+
+def _hermite(part: float, state: int) -> str:
+    """Write a state inside the step, on the cubic through the states and slopes of its ends."""
+    rest = 1.0 - part
+    old, new = rest * rest * (1.0 + 2.0 * part), part * part * (3.0 - 2.0 * part)
+    slope_old, slope_new = rest * rest * part, -part * part * rest
+    return f"{old} * x{state} + {new} * y{state} + h * ({slope_old} * k0_{state} + {slope_new} * f{state})"

@@ -48,6 +48,7 @@ def read_loop(
     hold = reader.hold(signals, dynamics)
     guess = reader.guess()
     domain = reader.domain(guess)
+    limits = reader.limits()
     if len(faults.found) > before:
         return None
     states = tuple(units)
@@ -60,6 +61,7 @@ def read_loop(
         dynamics=tuple(dynamics[name] for name in states),
         domain=tuple(domain[name] for name in states),
         guess=tuple(guess.get(name, Decimal(0)) for name in states),
+        limits=limits,
         tables=lookups,
         hold=hold,
         disturbances=disturbances,
@@ -183,6 +185,21 @@ class _LoopTables:
             if not low <= start <= high:
                 sentence = f"the guess {name} = {start} of [equilibrium] lies outside; move the guess or the domain"
                 self.faults.add("domain", name, sentence, value)
+        return pairs
+
+    def limits(self) -> dict[str, tuple[Decimal, Decimal]]:
+        known = [*self.states, *self.table("signals")]
+        pairs: dict[str, tuple[Decimal, Decimal]] = {}
+        for name, value in self.table("limits").items():
+            if name not in known:
+                found = "a parameter" if name in self.table("parameters") else "no state or signal"
+                sentence = f"is {found}; limits are set on {listed(known)}{hint(name, known)}"
+                self.faults.add("limits", name, sentence)
+                continue
+            try:
+                pairs[name] = pair(value)
+            except ValueError as error:
+                self.faults.add("limits", name, str(error), value)
         return pairs
 
     def _of_states(self, table: str, what: str, complete: bool) -> dict[str, Any]:

@@ -5,9 +5,7 @@ They are refused by name: a table that is ignored in silence would give a wrong 
 
 from __future__ import annotations
 
-TABLES = {
-    "limits": "limits on states and signals",
-}
+TABLES: dict[str, str] = {}
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",

@@ -27,8 +27,8 @@ from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
 TABLES = (
-    "states", "parameters", "signals", "tables", "dynamics", "equilibrium", "domain", "hold", "disturbance", "bound",
-    "sweep", "verdict", "files",
+    "states", "parameters", "signals", "tables", "dynamics", "equilibrium", "domain", "limits", "hold", "disturbance",
+    "bound", "sweep", "verdict", "files",
 )  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
 BOUND_KEYS = ("Q", "P", "V", "level", "inner", "search", "degree", "boxes")

@@ -220,6 +220,10 @@ def test_a_matrix_a_level_and_a_formula_for_V():
         (with_table("[bound]\nV_text = 0"), "[bound] V_text: unknown key"),
         (with_table('[bound]\nV = "tilt**2 + torque"'), 'column 11: "torque" is a signal; V is a formula in'),
         (with_table("[bound]\nV = 3"), "[bound] V = 3: must be a formula in quotes, a number found"),
+        (with_table("[limits]\ntilt = [1, 1]"), "[limits] tilt = [1, 1]: must be a pair [low, high] with low below"),
+        (with_table("[limits]\ntilt = 1"), "[limits] tilt = 1: must be a pair [low, high], a number found"),
+        (with_table("[limits]\ndamping = [1, 3]"), "[limits] damping: is a parameter; limits are set on tilt, rate"),
+        (with_table("[limits]\ntilr = [-1, 1]"), '[limits] tilr: is no state or signal; limits are set on tilt, rate'),
         ("x = [1", "a.toml: not valid TOML: "),
         ("x = 1\nx = 2\n", "(at line 2, column"),
         ("x = " + "[" * 3000, "nested too deep"),
@@ -234,7 +238,6 @@ def test_one_fault_one_line(text, words):
 @pytest.mark.parametrize(
     ("text", "words"),
     [
-        (with_table("[limits]\ntilt = [-1, 1]"), "[limits]: not yet supported by this version"),
         (with_change("damping = 2", "damping = { value = 2, spread = [1, 3] }"), "spread is not yet supported"),
         (with_change("[dynamics]", '[dynamics]\npython = "plant.py:rhs"'), "[dynamics] python: not yet supported"),
         *((with_table(f"[bound]\n{key} = 1"), f"[bound] {key}: not yet supported by this version")
