@@ -11,7 +11,7 @@ def test_whoever_adds_to_the_loop_has_looked_at_the_proofs():
     # What moves a loop, or what it must not touch, and is unknown to a prover would make its proofs false.
     known = {
         "title", "states", "units", "parameters", "signals", "dynamics", "domain", "guess", "tables", "hold",
-        "disturbances",
+        "disturbances", "limits",
     }  # fmt: skip
     assert {field.name for field in fields(Loop)} == known, f"see that these know the new field: {PROVERS}"
     assert {field.name for field in fields(Parameter)} == {"value", "unit"}, f"see that these know it: {PROVERS}"
