@@ -138,7 +138,7 @@ def bound(
     folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress, jobs, quick)
     verdict = conclude(
-        prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed, jobs=jobs)
+        prepared.configuration, prepared.equilibrium, prepared.all_bounds, provenance(command, prepared.seed, jobs=jobs)
     )
     return _written(prepared.configuration, verdict, folder, 0)
 
@@ -336,6 +336,7 @@ def _samples_of(folder: RunFolder) -> Samples:
 def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int | None, figures: bool) -> Result:
     """Judge what the folder holds; write verdict, figures and report."""
     from roa.basin.provenance import provenance
+    from roa.basin.sensitivity import sensitivity
     from roa.basin.verdict import conclude, exit_code
     from roa.report.draw import draw_figures
     from roa.report.html import write_report
@@ -345,11 +346,12 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
     verdict = conclude(
         prepared.configuration,
         prepared.equilibrium,
-        prepared.bounds,
+        prepared.all_bounds if figures else prepared.bounds,
         provenance(command, prepared.seed, samples.n, jobs, plan.fingerprint),
         target=prepared.target,
         samples=samples,
         claim=claim,
+        sensitive=sensitivity(samples, prepared.simulate_tighter, prepared.configuration.verdict.confidence),
     )
     _write_verdict(folder, verdict)
     if figures:
