@@ -22,7 +22,6 @@ KEYS = {
 
 VALUES = {
     ("sweep", "store", "outcomes"): 'use "all"',
-    ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
     ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
 }
 

@@ -225,8 +225,6 @@ def test_one_fault_one_line(text, words):
         *((with_table(f"[sweep]\n{key} = 1"), f"[sweep] {key}: not yet supported by this version")
           for key in ("accuracy", "goal", "stop_outside")),
         (with_table('[sweep]\nstore = "outcomes"'), '"outcomes" is not yet supported by this version; use "all"'),
-        *((with_table(f'[sweep]\ndesign = "{design}"'), f'"{design}" is not yet supported by this version; use "sobol"')
-          for design in ("boundary",)),
         (with_table('[sweep]\nmethod = "rodas4"'), '"rodas4" is not yet supported by this version; use "tsit'),
     ],
 )  # fmt: skip
