@@ -120,9 +120,15 @@ class Preparation:
     @cached_property
     def plan(self) -> Plan:
         """The plan of the sweep."""
+        from roa.basin.goal import goal_samples, stopping
         from roa.sweep.plan import make_plan
 
-        return make_plan(self.configuration, self.equilibrium, self.bounds, self.target, self._samples, self._seed)
+        samples, wanted = self._samples, goal_samples(self.configuration)
+        if wanted is not None and samples not in (None, wanted):
+            raise UserError(f"--samples {samples}: contradicts the goal in [sweep], which picks the number of samples")
+        return stopping(
+            make_plan(self.configuration, self.equilibrium, self.bounds, self.target, samples or wanted, self._seed)
+        )
 
     @cached_property
     def lanes(self) -> Lanes:

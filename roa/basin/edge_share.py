@@ -71,7 +71,7 @@ class EdgeShare:
         doubt = 1 - confidence
         at_the_edge = [(share, int(np.sum(edge))) for share, _, edge in self._course.leaves()]
         deviation = np.sqrt(sum(count * share**2 / 4 for share, count in at_the_edge))
-        edge = min(float(norm.isf(doubt / 4)) * float(deviation), sum(count * share for share, count in at_the_edge))
+        edge = min(float(norm.isf(doubt / 4) * deviation), sum(count * share for share, count in at_the_edge))
         starts, falsely_in, falsely_out = self._later_looks
         below, above = (clopper_pearson_upper(k, starts, 1 - doubt / 4) for k in (falsely_in, falsely_out))
         share = self.fraction

@@ -96,7 +96,7 @@ class RayShare:
         # other; an eighth of all brackets covers what the edge's curve makes of that.
         brackets = float(np.mean(self._bundle.high**n - self._bundle.low**n)) / (2 if n == 1 else 8)
         error, method = self._sum_error(confidence)
-        half = max((error + brackets) / self._domain, 1e-12)
+        half = float(max((error + brackets) / self._domain, 1e-12))
         looks = clopper_pearson_upper(0, self._course.looks, confidence)
         method += (
             f"; if the basin is star-shaped, which {self._course.looks} looks beside the rays did not contradict "

@@ -11,6 +11,7 @@ import numpy as np
 from roa.basin.cautions import cautions
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
+from roa.basin.goal import goal_of, looks_of
 from roa.basin.intervals import Interval
 from roa.basin.levels import Levels, by_level
 from roa.basin.size import Basin, measure
@@ -62,7 +63,8 @@ def conclude(
     stated = list(bounds.stated)
     comparisons: Sequence[Comparison] = ()
     if samples is not None:
-        basin = measure(samples, configuration.loop, confidence, equilibrium.x)
+        looks = looks_of(configuration.sweep, samples)
+        basin = measure(samples, configuration.loop, confidence, equilibrium.x, looks)
         levels = by_level(samples, bounds.V, confidence)
         stated += [levels.bound] if levels.bound else []
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
@@ -81,7 +83,7 @@ def conclude(
         "claim": None if claim is None else _claim(claim),
         "bounds": [_bound(bound, by_name.get(bound.name)) for bound in stated],
         "bounds_note": bounds.note,
-        "basin": None if basin is None else _basin(basin),
+        "basin": None if basin is None else _basin(basin) | {"goal": goal_of(configuration.sweep, basin)},
         "comparison": _comparison(stated, claim, by_name),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,

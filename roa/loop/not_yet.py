@@ -15,8 +15,6 @@ KEYS = {
     ("bound", "ball"): "a claim in the form of a ball",
     ("bound", "scale"): "the scale of a claimed ball",
     ("bound", "search"): "the search for better bounds",
-    ("sweep", "accuracy"): "stopping at an accuracy of the share",
-    ("sweep", "goal"): "a goal in place of a number of samples",
     ("sweep", "stop_outside"): "stopping outside by proof",
 }
 
