@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from roa.basin.claim import Claim
+    from roa.basin.findings import Findings
     from roa.bound.bounds import Bounds
     from roa.kernel.integration import Integration
     from roa.kernel.lanes import Lanes
@@ -164,6 +165,16 @@ class Preparation:
         tight = replace(loose, rtol=loose.rtol / 10, atol=loose.atol / 10)
         tighter = compile_lanes(self.configuration.loop, self.target, tight)
         return Evidence(self.configuration, verdict, samples, self.simulate, self._on_all_jobs(tighter))
+
+    def findings(self, samples: Samples) -> Findings:
+        """Look for what the sweep alone does not say: weak starts, attractors, an audit."""
+        from roa.basin.findings import look_further
+
+        self.progress.say("looking for the weakest starts, and integrating some again")
+        return look_further(
+            self.configuration, self.equilibrium, self.bounds.V, self.target, self.integration, samples,
+            self.lanes.run, self.seed,
+        )  # fmt: skip
 
     def claim(self) -> Claim | None:
         """Judge the claimed level, where there is one."""

@@ -11,6 +11,7 @@ import numpy as np
 from roa.basin.cautions import cautions
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
+from roa.basin.findings import NOTHING_FOUND, Findings
 from roa.basin.goal import goal_of, looks_of
 from roa.basin.intervals import Interval
 from roa.basin.levels import Levels, by_level
@@ -44,6 +45,7 @@ def conclude(
     target: Target | None = None,
     samples: Samples | None = None,
     claim: Claim | None = None,
+    findings: Findings | None = None,
 ) -> dict[str, Any]:
     """Measure what the samples say, put it beside bounds and claim, and return the verdict.
 
@@ -57,6 +59,7 @@ def conclude(
     target : what entering meant, where something was simulated
     samples : of the sweep, if there was one
     claim : judged, if one was
+    findings : what was looked for beside the sweep, if it was
     """
     confidence = configuration.verdict.confidence
     basin = levels = None
@@ -66,7 +69,8 @@ def conclude(
         looks = looks_of(configuration.sweep, samples)
         basin = measure(samples, configuration.loop, confidence, equilibrium.x, looks)
         levels = by_level(samples, bounds.V, confidence)
-        stated += [levels.bound] if levels.bound else []
+        unfalsified = levels.bound if findings is None else findings.lower(levels.bound, bounds.V)
+        stated += [unfalsified] if unfalsified else []
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
     by_name = {comparison.bound.name: comparison for comparison in comparisons}
     loop = configuration.loop
@@ -85,6 +89,7 @@ def conclude(
         "bounds_note": bounds.note,
         "basin": None if basin is None else _basin(basin) | {"goal": goal_of(configuration.sweep, basin)},
         "comparison": _comparison(stated, claim, by_name),
+        **(NOTHING_FOUND if findings is None else findings.document(configuration)),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
         "cautions": cautions(configuration, equilibrium, target, basin),
