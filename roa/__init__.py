@@ -9,11 +9,26 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from roa.verbs import Result, bound, check, evidence, init, overlay, replay, report, resume, run, sweep, validate
+    from roa.verbs import (
+        Result,
+        bound,
+        check,
+        evidence,
+        init,
+        overlay,
+        replay,
+        report,
+        resume,
+        run,
+        status,
+        sweep,
+        validate,
+    )
 
 __version__ = "0.1.0"
 __all__ = [
-    "Result", "bound", "check", "evidence", "init", "overlay", "replay", "report", "resume", "run", "sweep", "validate",
+    "Result", "bound", "check", "evidence", "init", "overlay", "replay", "report", "resume", "run", "status",
+    "sweep", "validate",
 ]  # fmt: skip
 
 

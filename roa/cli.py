@@ -7,6 +7,7 @@ import json
 import os
 import shlex
 import sys
+import time
 from collections.abc import Callable, Sequence
 from contextlib import suppress
 from typing import TYPE_CHECKING, Any, NoReturn
@@ -18,10 +19,12 @@ from roa.interruption import watched
 if TYPE_CHECKING:
     from roa.verbs import Result
 
+# Between two looks of `status --watch`, s.
+WATCH = 5.0
 USAGE_ERROR, MACHINE_FAILED, INTERRUPTED = 2, 4, 130
 
 # Part of the contract, refused by name until it is there.
-NOT_YET = ("status", "--cluster")
+NOT_YET = ("--cluster",)
 
 EXIT_CODES = """\
 exit codes
@@ -51,6 +54,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
             print(f"roa: {what}: not yet supported by this version; leave it out", file=sys.stderr)
             return USAGE_ERROR
     options = vars(_parser().parse_args(given))
+    if options.get("watch") and options["json"]:
+        print(
+            "roa status: --watch and --json: one JSON document cannot be watched; give one of the two", file=sys.stderr
+        )
+        return USAGE_ERROR
     verb, as_json, quiet = options.pop("verb"), options.pop("json"), options.pop("quiet")
     try:
         with watched():
@@ -84,12 +92,26 @@ def _call(verb: str, options: dict[str, Any], quiet: bool, command: str) -> Resu
     from roa import verbs
     from roa.sweep.progress import on_standard_error
 
-    if verb not in ("init", "report"):
+    if verb not in ("init", "report", "status"):
         options["progress"] = on_standard_error(quiet)
     if verb in ("run", "sweep", "resume", "bound", "validate"):
         options["command"] = command
+    if options.pop("watch", False):
+        return _watch(options["run"])
     function: Callable[..., Result] = getattr(verbs, verb)
     return function(**options)
+
+
+def _watch(run: str) -> Result:
+    """Print how far a sweep is, again and again; return how it stands when it does not run any more."""
+    from roa import verbs
+
+    while True:
+        result = verbs.status(run)
+        if result.document["state"] != "running":
+            return result
+        _print(("\x1b[H\x1b[J" if sys.stdout.isatty() else "") + result.text)
+        time.sleep(WATCH)
 
 
 def _print(text: str) -> None:
@@ -123,14 +145,16 @@ def _parser() -> argparse.ArgumentParser:
     folder: dict[str, Any] = {"metavar": "RUN", "help": "folder of a run"}
     means = ("--jobs", "--hours", "--executor")
     verb("init", "write a commented configuration to start from").add_argument("file", metavar="FILE")
-    verb("check", "is it sound, and what will it cost", "--samples", "--seed", "--jobs").add_argument(
+    verb("check", "is it sound, and what will it cost", "--samples", "--seed", "--jobs", "--quick").add_argument(
         "config", **config
     )
     for name, text in (("run", "the whole job: bound, sweep, comparison, figures, report, verdict"),
                        ("sweep", "the simulation alone")):  # fmt: skip
-        verb(name, text, "--out", "--samples", "--seed", *means).add_argument("config", **config)
-    verb("bound", "the analytic estimates alone", "--out", "--seed", "--jobs").add_argument("config", **config)
-    verb("validate", "judge the claimed bound", "--out", "--seed", "--jobs").add_argument("config", **config)
+        verb(name, text, "--out", "--samples", "--seed", "--quick", *means).add_argument("config", **config)
+    verb("bound", "the analytic estimates alone", "--out", "--seed", "--jobs", "--quick").add_argument(
+        "config", **config
+    )
+    verb("validate", "judge the claimed bound", "--out", "--seed", "--jobs", "--quick").add_argument("config", **config)
     verb("resume", "carry on a sweep that stopped, or extend one", "--samples", *means).add_argument("run", **folder)
     replay = verb("replay", "integrate one start again by an independent integrator", "--jobs")
     replay.add_argument(
@@ -145,6 +169,9 @@ def _parser() -> argparse.ArgumentParser:
         help="so many stored starts",
     )
     which.add_argument("--from", dest="start", metavar="STATE=VALUE,…", help="any start, every state named")
+    status = verb("status", "how far a sweep is, asked from another shell")
+    status.add_argument("run", **folder)
+    status.add_argument("--watch", action="store_true", help="again every few seconds, until it does not run any more")
     overlay = verb("overlay", "draw the figures of a run again, or two runs in one picture", "--jobs")
     overlay.add_argument("run", **folder)
     overlay.add_argument("other", metavar="RUN2", nargs="?", help="a second run, to be drawn against the first")
@@ -204,6 +231,7 @@ _OPTIONS: dict[str, dict[str, Any]] = {
         "type": _whole(0, 2**63 - 1, "from 0 to 2**63 - 1"),
         "help": "seed of the design and of every search",
     },
+    "--quick": {"action": "store_true", "help": "leave out the search for better bounds"},
 }
 
 if __name__ == "__main__":

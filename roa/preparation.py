@@ -42,7 +42,8 @@ class Preparation:
     samples, seed : in place of the configuration's, where given
     progress : told what takes a while
     jobs : threads for what is simulated beside the sweep; None for as many as this process may use processors
-    target : that of a stored run, which is then not derived again
+    target, block_size : those of a stored run, which are then not derived again
+    quick : leave out the search for better bounds
 
     Raises
     ------
@@ -58,19 +59,29 @@ class Preparation:
         progress: Progress | None = None,
         target: Target | None = None,
         jobs: int | None = None,
+        block_size: int | None = None,
+        quick: bool = False,
     ) -> None:
-        from roa.loop.equilibrium import check_V, find_equilibrium, require_given_V, require_stable
+        from roa.loop.equilibrium import (
+            check_V,
+            find_equilibrium,
+            require_given_V,
+            require_stable,
+            require_within_limits,
+        )
         from roa.sweep.progress import Progress
 
         _require_files(configuration)
-        self.configuration = configuration
+        self.configuration = configuration.quick() if quick else configuration
         self.progress = progress or Progress()
         self._samples, self._seed, self._stored_target, self._jobs = samples, seed, target, jobs
+        self._block_size = block_size
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
         if configuration.bound.inner is None:
             require_stable(self.equilibrium, configuration.loop, configuration.source)
         else:
             require_given_V(configuration, self.equilibrium)
+        require_within_limits(self.equilibrium, configuration.loop, configuration.source)
         check_V(configuration, self.equilibrium)
 
     @cached_property
@@ -81,7 +92,7 @@ class Preparation:
 
         if not is_kept():
             self.progress.say("compiling the prover (once on this machine, about half a minute)")
-        return derive_bounds(self.configuration, self.equilibrium)
+        return derive_bounds(self.configuration, self.equilibrium, self.progress.say)
 
     @cached_property
     def pilot(self) -> Pilot:
@@ -128,7 +139,16 @@ class Preparation:
         if wanted is not None and samples not in (None, wanted):
             raise UserError(f"--samples {samples}: contradicts the goal in [sweep], which picks the number of samples")
         return stopping(
-            make_plan(self.configuration, self.equilibrium, self.bounds, self.target, samples or wanted, self._seed)
+            make_plan(
+                self.configuration,
+                self.equilibrium,
+                self.bounds,
+                self.target,
+                samples or wanted,
+                self._seed,
+                steps=0.0 if self._block_size else self.pilot.steps,
+                block_size=self._block_size,
+            )
         )
 
     @cached_property

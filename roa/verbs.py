@@ -63,13 +63,13 @@ def init(file: str | Path) -> Result:
 
 def check(
     config: str | Path, samples: int | None = None, seed: int | None = None, jobs: int | None = None,
-    progress: Progress | None = None,
+    quick: bool = False, progress: Progress | None = None,
 ) -> Result:  # fmt: skip
     """Say whether a configuration is sound, where it rests, and what its sweep will cost."""
     from roa.report.soundness import soundness_document, soundness_text
     from roa.sweep.cost import forecast
 
-    prepared = _prepare(config, samples, seed, progress)
+    prepared = _prepare(config, samples, seed, progress, jobs, quick)
     cost = forecast(prepared.plan, prepared.lanes, jobs)
     text = soundness_text(prepared.plan, cost, shlex.quote(str(config)))
     return Result(text, soundness_document(prepared.plan, cost))
@@ -78,25 +78,25 @@ def check(
 def run(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
     seed: int | None = None, hours: float | None = None, cluster: str | None = None, executor: str | None = None,
-    progress: Progress | None = None, command: str = "roa.run",
+    quick: bool = False, progress: Progress | None = None, command: str = "roa.run",
 ) -> Result:  # fmt: skip
     """Do the whole job: bound, sweep, comparison, figures, report, verdict."""
     from roa.sweep.means import Means
 
     means = Means.granted(jobs, hours, cluster, executor, command)
-    return _swept(config, out, samples, seed, means, progress, figures=True)
+    return _swept(config, out, samples, seed, means, quick, progress, figures=True)
 
 
 def sweep(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
     seed: int | None = None, hours: float | None = None, cluster: str | None = None, executor: str | None = None,
-    progress: Progress | None = None, command: str = "roa.sweep",
+    quick: bool = False, progress: Progress | None = None, command: str = "roa.sweep",
 ) -> Result:  # fmt: skip
     """Do the simulation alone, with its counts and the bounds that it took its target set from."""
     from roa.sweep.means import Means
 
     means = Means.granted(jobs, hours, cluster, executor, command)
-    return _swept(config, out, samples, seed, means, progress, figures=False)
+    return _swept(config, out, samples, seed, means, quick, progress, figures=False)
 
 
 def resume(
@@ -113,8 +113,22 @@ def resume(
         return _launched(prepared, folder, means, progress, figures=True)
 
 
+def status(run: str | Path) -> Result:
+    """Say how far a sweep is, from its folder alone; the writer does not notice."""
+    from roa.loop.read import read_text
+    from roa.report.status_text import status_document, status_text
+    from roa.sweep.status import read_status
+
+    folder = _existing(run)
+    found = read_status(folder)
+    confidence = read_text(found.header.config, str(folder.config)).verdict.confidence
+    text = status_text(found, confidence, str(folder.path), folder.resume_command)
+    return Result(text, status_document(found, confidence), 0, folder.path)
+
+
 def bound(
     config: str | Path, out: str | Path | None = None, seed: int | None = None, jobs: int | None = None,
+    quick: bool = False,
     progress: Progress | None = None, command: str = "roa.bound",
 ) -> Result:  # fmt: skip
     """Derive the analytic estimates alone, without a simulation."""
@@ -122,7 +136,7 @@ def bound(
     from roa.basin.verdict import conclude
 
     folder = _new_folder(config, out)
-    prepared = _prepare(config, None, seed, progress, jobs)
+    prepared = _prepare(config, None, seed, progress, jobs, quick)
     verdict = conclude(
         prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed, jobs=jobs)
     )
@@ -131,6 +145,7 @@ def bound(
 
 def validate(
     config: str | Path, out: str | Path | None = None, seed: int | None = None, jobs: int | None = None,
+    quick: bool = False,
     progress: Progress | None = None, command: str = "roa.validate",
 ) -> Result:  # fmt: skip
     """Judge the claimed bound: prove it, break it, or say how far it is supported."""
@@ -138,7 +153,7 @@ def validate(
     from roa.basin.verdict import conclude, exit_code
 
     folder = _new_folder(config, out)
-    prepared = _prepare(config, None, seed, progress, jobs)
+    prepared = _prepare(config, None, seed, progress, jobs, quick)
     configuration = prepared.configuration
     if configuration.bound.level is None:
         raise UserError(
@@ -257,20 +272,25 @@ def report(run: str | Path) -> Result:
 
 
 def _prepare(
-    config: str | Path, samples: int | None, seed: int | None, progress: Progress | None, jobs: int | None = None
+    config: str | Path,
+    samples: int | None,
+    seed: int | None,
+    progress: Progress | None,
+    jobs: int | None = None,
+    quick: bool = False,
 ) -> Preparation:
     from roa.loop.read import read
     from roa.preparation import Preparation
 
-    return Preparation(read(Path(config)), samples, seed, progress, jobs=jobs)
+    return Preparation(read(Path(config)), samples, seed, progress, jobs=jobs, quick=quick)
 
 
 def _swept(
     config: str | Path, out: str | Path | None, samples: int | None, seed: int | None, means: Means,
-    progress: Progress | None, figures: bool,
+    quick: bool, progress: Progress | None, figures: bool,
 ) -> Result:  # fmt: skip
     folder = _new_folder(config, out)
-    prepared = _prepare(config, samples, seed, progress, means.jobs)
+    prepared = _prepare(config, samples, seed, progress, means.jobs, quick)
     return _launched(prepared, folder, means, progress, figures)
 
 
@@ -311,8 +331,10 @@ def _stored(
     folder = _existing(run)
     header = Header.read(folder.plan)
     configuration = read_text(header.config, str(folder.config))
+    quick = header.fingerprint_parts.get("config.bound.search") == []
     target = target_of(header.fingerprint_parts) if with_target else None
-    return Preparation(configuration, samples or header.samples, header.seed, progress, target, jobs), folder
+    samples = samples or header.samples
+    return Preparation(configuration, samples, header.seed, progress, target, jobs, header.block_size, quick), folder
 
 
 def _samples_of(folder: RunFolder) -> Samples:

@@ -20,18 +20,24 @@ def toml(
     parameters: Mapping[str, float] | None = None,
     signals: Mapping[str, str] | None = None,
     equilibrium: Mapping[str, float] | None = None,
+    limits: Mapping[str, tuple[float, float]] | None = None,
     hold: str = "",
     bound: str = "",
     sweep: str = "",
     verdict: str = "",
 ) -> str:
-    """Write a configuration; `hold`, `bound`, `sweep` and `verdict` are lines of those tables."""
+    """Write a configuration; `hold`, `bound`, `sweep` and `verdict` are lines of those tables.
+
+    Nothing is searched for unless `bound` says so.
+    """
+    bound += "" if "search" in bound else "\nsearch = []"
     lines = ['title = "a loop of the tests"', "[states]", *(f'{s} = "1"' for s in states)]
     lines += ["[parameters]", *(f"{name} = {value!r}" for name, value in (parameters or {}).items())]
     lines += ["[signals]", *(f'{name} = "{text}"' for name, text in (signals or {}).items())]
     lines += ["[dynamics]", *(f'{s} = "{text}"' for s, text in zip(states, dynamics, strict=True))]
     lines += ["[equilibrium]", *(f"{name} = {value!r}" for name, value in (equilibrium or {}).items())]
     lines += ["[domain]", *(f"{s} = [{low!r}, {high!r}]" for s, (low, high) in zip(states, domain, strict=True))]
+    lines += ["[limits]", *(f"{name} = [{low!r}, {high!r}]" for name, (low, high) in (limits or {}).items())]
     lines += ["[hold]", hold] if hold else []
     return "\n".join([*lines, "[bound]", bound, "[sweep]", sweep, "[verdict]", verdict, ""])
 
@@ -83,6 +89,11 @@ def parabola(**keywords: str) -> Configuration:
 def double_well(**keywords: str) -> Configuration:
     """x'' = -0.25 x' + x - x³: rests at ±1, each with half of a symmetric box (computed independently)."""
     return configuration("xv", ["v", "-0.25*v + x - x**3"], [(-2.0, 2.0)] * 2, equilibrium={"x": 1.0}, **keywords)  # type: ignore[arg-type]
+
+
+def spring(**keywords: object) -> Configuration:
+    """x'' = -x - 0.4 x': overshoots by a closed form; everything converges (computed independently)."""
+    return configuration("xv", ["v", "-x - 0.4*v"], [(-1.5, 1.5), (-2.0, 2.0)], **keywords)
 
 
 def saturated_integrator(a: float = 0.5, k: float = 2.0, **keywords: str) -> Configuration:

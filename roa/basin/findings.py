@@ -15,7 +15,7 @@ from roa.basin.frontier import Height, Lowest, Run
 from roa.bound.lyapunov_function import LyapunovFunction
 from roa.bound.statement import Bound, Strength
 from roa.kernel.integration import Integration
-from roa.kernel.outcomes import IN_BASIN
+from roa.kernel.outcomes import IN_BASIN, Outcome
 from roa.kernel.target import Target
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
@@ -25,7 +25,13 @@ from roa.sweep.samples import Samples
 BUDGET = 1000
 STREAM = (1, 8)
 # Of a verdict without a sweep.
-NOTHING_FOUND: dict[str, Any] = {"weakest": None, "nearest": None, "attractors": [], "audit": None}
+NOTHING_FOUND: dict[str, Any] = {
+    "weakest": None,
+    "nearest": None,
+    "over_limit": None,
+    "attractors": [],
+    "audit": None,
+}
 
 
 @dataclass(frozen=True)
@@ -36,12 +42,14 @@ class Findings:
     ----------
     weakest : the start of lowest V that does not converge; None where none was found
     nearest : the start nearest to the equilibrium, in half-widths of the domain, that does not converge
+    over_limit : the start of lowest V that converges over a limit
     attractors : what trajectories end at
     audit : stored starts integrated again
     """
 
     weakest: Lowest | None
     nearest: Lowest | None
+    over_limit: Lowest | None
     attractors: tuple[Attractor, ...]
     audit: Audit
 
@@ -60,6 +68,7 @@ class Findings:
         return {
             "weakest": _start(configuration, self.weakest),
             "nearest": nearest,
+            "over_limit": _start(configuration, self.over_limit),
             "attractors": [one.document for one in self.attractors],
             "audit": self.audit.document,
         }
@@ -81,16 +90,20 @@ def look_further(
     """
     loop, confidence = configuration.loop, configuration.verdict.confidence
 
-    def lowest(height: Height, key: int) -> Lowest | None:
+    def lowest(height: Height, key: int, against: tuple[Outcome, ...]) -> Lowest | None:
         rng = np.random.default_rng(np.random.SeedSequence(seed, spawn_key=(*STREAM, key)))
-        found = frontier.lowest(height, run, lambda rows: ~rows.in_basin, BUDGET, rng)
+        found = frontier.lowest(height, run, lambda rows: np.isin(rows.outcome, against), BUDGET, rng)
         if found is None:
             return None
-        return frontier.confirmed(height, found, target, integration, lambda one: one.outcome not in IN_BASIN)
+        return frontier.confirmed(height, found, target, integration, lambda one: one.outcome in against)
+
+    outside = tuple(outcome for outcome in Outcome if outcome not in IN_BASIN)
+    over_limit = (Outcome.CONVERGED_OVER_LIMIT,)
 
     return Findings(
-        weakest=lowest(Height(loop, equilibrium.x, V), 0),
-        nearest=lowest(Height(loop, equilibrium.x), 1),
+        weakest=lowest(Height(loop, equilibrium.x, V), 0, outside),
+        nearest=lowest(Height(loop, equilibrium.x), 1, outside),
+        over_limit=lowest(Height(loop, equilibrium.x, V), 2, over_limit) if loop.limits else None,
         attractors=attractors(samples, loop, equilibrium, target, integration, confidence),
         audit=audit(samples, loop, target, integration, BY_DEFAULT, seed, confidence),
     )

@@ -18,7 +18,7 @@ from roa.basin.tally import tally_for
 from roa.errors import UserError
 from roa.loop.configuration import MOST_SAMPLES, Configuration, SweepTable
 from roa.sweep.designs import Answers
-from roa.sweep.plan import BLOCK_SIZE, Plan
+from roa.sweep.plan import FIRST_LOOK, Plan
 from roa.sweep.samples import Samples
 
 
@@ -35,7 +35,7 @@ def goal_samples(configuration: Configuration) -> int | None:
     width = configuration.sweep.goal
     if width is None:
         return None
-    looks, samples = 1, BLOCK_SIZE
+    looks, samples = 1, FIRST_LOOK
     while samples <= MOST_SAMPLES:
         z = float(norm.isf((1 - corrected(configuration.verdict.confidence, looks)) / 2))
         if z / np.sqrt(samples) <= width:
@@ -49,7 +49,7 @@ def goal_samples(configuration: Configuration) -> int | None:
 def number_of_looks(table: SweepTable, asked: int) -> int:
     """At how many moments, fixed beforehand, the sweep may end; `asked` is the most starts that it may have."""
     if table.goal is not None:
-        return (asked // BLOCK_SIZE).bit_length()
+        return (asked // FIRST_LOOK).bit_length()
     return asked.bit_length() if table.accuracy is not None else 1
 
 
@@ -64,7 +64,7 @@ def stopping(plan: Plan) -> Plan:
     """Return the plan with the looks that its configuration asks for."""
     table, asked = plan.configuration.sweep, plan.samples
     if table.goal is not None:
-        looks = tuple(BLOCK_SIZE << k for k in range(number_of_looks(table, asked)))
+        looks = tuple(FIRST_LOOK << k for k in range(number_of_looks(table, asked)))
         return replace(plan, looks=looks, enough=_NarrowEnough(plan, table.goal))
     if table.accuracy is not None:
         return replace(plan, enough=_AccurateEnough(plan, table.accuracy))

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.integrate import DOP853, OdeSolver, Radau
 
-from roa.basin.controller import Controller
+from roa.basin.controller import Controller, Frozen
 from roa.kernel.integration import Integration
 from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.target import Target
@@ -88,6 +88,9 @@ class _Watch:
         self.target = target
         self.low, self.high = _escape_box(loop, integration.escape)
         self.peak = np.zeros(loop.n)
+        self.loop = loop
+        self.held: dict[str, float] | None = None  # commands that act, where there is a hold
+        self.over_limit = False
         centres = [] if target.kind == "level" else [(target.centre, Outcome.CONVERGED)]
         centres += [(centre, Outcome.SETTLED_ELSEWHERE) for centre in target.elsewhere]
         self.balls = centres
@@ -100,9 +103,10 @@ class _Watch:
         """
         offset = x - self.target.centre
         self.peak = np.maximum(self.peak, np.abs(offset))
+        self.over_limit |= not self.loop.within_limits(x, self.held)
         now = _Moment(time, x, self.peak, steps)
         if entry and self.target.P is not None and offset @ self.target.P @ offset <= self.target.level:
-            return Outcome.CONVERGED, now
+            return self._converged, now
         for i, (centre, outcome) in enumerate(self.balls if entry else []):
             distance = float(np.linalg.norm((x - centre) / self.target.half_widths))
             since = self.entries[i]
@@ -112,11 +116,15 @@ class _Watch:
                 self.entries[i] = _Moment(time, x, self.peak, steps, distance)
             elif time - since.time >= self.target.dwell:
                 if distance <= since.distance / 2:
-                    return outcome, since
+                    return (self._converged if outcome is Outcome.CONVERGED else outcome), since
                 self.entries[i] = _Moment(time, x, self.peak, steps, distance)  # too slow: the dwell starts again
         if np.any(x < self.low) or np.any(x > self.high):
             return Outcome.ESCAPED, now
         return None
+
+    @property
+    def _converged(self) -> Outcome:
+        return Outcome.CONVERGED_OVER_LIMIT if self.over_limit else Outcome.CONVERGED
 
 
 def decide(loop: Loop, target: Target, integration: Integration, start: Array, rtol: float, atol: float) -> Decision:
@@ -262,6 +270,10 @@ def _integrate(
     def ended(outcome: Outcome, reason: Reason, at: _Moment) -> Decision:
         return Decision(outcome, reason, float(at.time), at.final, at.peak, at.steps, method.__name__)
 
+    def acting(flow: Flow) -> dict[str, float] | None:
+        return dict(zip(loop.hold.signals, flow.u, strict=True)) if loop.hold and isinstance(flow, Frozen) else None
+
+    watch.held = acting(controller.flow) if controller else None
     decided = watch.look(0.0, start, 0)
     if decided:
         return ended(decided[0], Reason.NONE, decided[1])
@@ -269,9 +281,11 @@ def _integrate(
     while at.time < integration.longest:
         if controller is not None:
             flow, end = controller.flow, min(controller.next_instant, integration.longest)
+            watch.held = acting(flow)
         solver = _solver(method, flow, (at.time, end), at.final, *tolerances)
         if solver is None:
-            return ended(Outcome.FAILED, Reason.NOT_FINITE, at)
+            left = loop.leaves_tables(at.final)
+            return ended(Outcome.FAILED, Reason.OUTSIDE_TABLE if left else Reason.NOT_FINITE, at)
         while solver.status == "running":
             if at.steps >= cap:
                 return ended(Outcome.FAILED, Reason.STEP_CAP, at)
@@ -294,10 +308,12 @@ def _integrate(
 
 def _trouble(loop: Loop, flow: Flow, x: Array) -> tuple[Outcome, Reason]:
     """Name why no step leads on from the last accepted state x, float64 (n,)."""
-    if np.any(np.abs(x - loop.centre) > loop.half_widths):
-        return Outcome.ESCAPED, Reason.BLOW_UP
     slope = flow.rhs(x)
     with np.errstate(all="ignore"):  # a little further on: a millionth of the domain along the slope
         beyond = x + 1e-6 * np.min(loop.half_widths / np.abs(slope)) * slope
+    if loop.leaves_tables(x) or loop.leaves_tables(beyond):
+        return Outcome.FAILED, Reason.OUTSIDE_TABLE
+    if np.any(np.abs(x - loop.centre) > loop.half_widths):
+        return Outcome.ESCAPED, Reason.BLOW_UP
     finite = np.isfinite(slope).all() and np.isfinite(flow.rhs(beyond)).all()
     return Outcome.FAILED, Reason.STEP_UNDERFLOW if finite else Reason.NOT_FINITE

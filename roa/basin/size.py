@@ -32,6 +32,7 @@ class Basin:
     confidence : of the intervals, two-sided
     looks : at how many moments the sweep might have ended, by what it showed; each interval takes them into account
     loop : Loop
+    safe : share of the samples that converge without crossing a limit; None where there are no limits
     """
 
     share: Tally
@@ -42,6 +43,7 @@ class Basin:
     confidence: float
     loop: Loop
     looks: int = 1
+    safe: Share | None = None
 
     @property
     def samples(self) -> int:
@@ -124,4 +126,5 @@ def measure(
         confidence=confidence,
         loop=loop,
         looks=looks,
+        safe=by_outcome[Outcome.CONVERGED] if loop.limits else None,
     )

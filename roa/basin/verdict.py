@@ -9,12 +9,14 @@ from typing import Any
 import numpy as np
 
 from roa.basin.cautions import cautions
+from roa.basin.certificate import certificate
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.findings import NOTHING_FOUND, Findings
 from roa.basin.goal import goal_of, looks_of
 from roa.basin.intervals import Interval
 from roa.basin.levels import Levels, by_level
+from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import Quadratic
@@ -71,6 +73,8 @@ def conclude(
         levels = by_level(samples, bounds.V, confidence)
         unfalsified = levels.bound if findings is None else findings.lower(levels.bound, bounds.V)
         stated += [unfalsified] if unfalsified else []
+    stated += bounds.searched
+    if samples is not None and basin is not None:
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
     by_name = {comparison.bound.name: comparison for comparison in comparisons}
     loop = configuration.loop
@@ -79,6 +83,7 @@ def conclude(
         "states": loop.states,
         "units": loop.units,
         "domain": loop.box,
+        "limits": {name: [float(low), float(high)] for name, (low, high) in loop.limits.items()},
         "equilibrium": equilibrium.x,
         "eigenvalues": [[value.real, value.imag] for value in equilibrium.eigenvalues],
         "stability": equilibrium.stability,
@@ -90,6 +95,7 @@ def conclude(
         "basin": None if basin is None else _basin(basin) | {"goal": goal_of(configuration.sweep, basin)},
         "comparison": _comparison(stated, claim, by_name),
         **(NOTHING_FOUND if findings is None else findings.document(configuration)),
+        "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
         "cautions": cautions(configuration, equilibrium, target, basin),
@@ -178,6 +184,20 @@ def _basin(basin: Basin) -> dict[str, Any]:
         "count_intervals": {word: _ends(interval) for word, interval in basin.outcome_intervals.items()},
         "reasons": basin.reasons,
         "by_replicate": dict(zip(("converged", "samples"), basin.share.by_replicate, strict=True)),
+        "safe": None if basin.safe is None else _safe(basin, basin.safe),
+        "strength": Strength.SIMULATED,
+    }
+
+
+def _safe(basin: Basin, safe: Share) -> dict[str, Any]:
+    """What converges without crossing a limit."""
+    interval = safe.interval(basin.loop.n, basin.confidence)
+    return {
+        "fraction": safe.fraction,
+        "interval": _ends(interval),
+        "volume": safe.fraction * basin.loop.domain_volume,
+        "volume_interval": _ends(interval.scaled(basin.loop.domain_volume)),
+        "by_replicate": dict(zip(("converged", "samples"), safe.by_replicate, strict=True)),
         "strength": Strength.SIMULATED,
     }
 

@@ -24,7 +24,7 @@ Array = NDArray[np.float64]
 
 NAME = "contact level"
 RAYS_IN_THE_PLANE = 2048  # equally spaced
-RAYS = 4096
+RAYS, RAYS_ROUGH = 4096, 512
 SCAN, SCAN_TURNED = 128, 32  # points on a ray, and on one that has been turned
 BISECTIONS, BISECTIONS_FIRST = 48, 10
 KEPT = 8  # rays that are turned
@@ -54,7 +54,7 @@ def contact_level(V: LyapunovFunction) -> Bound:
     frame = _frame(V)
     if frame is None:
         return Bound(NAME, V, 0.0, Strength.ESTIMATED, "P is not positive definite")
-    directions = _directions(V.loop.n)
+    directions = unit_vectors(V.loop.n, RAYS_IN_THE_PLANE if V.loop.n == 2 else RAYS)
     ends = _cast(V, frame, directions, SCAN, BISECTIONS_FIRST)
     best = directions[np.argsort(ends.level, kind="stable")[:KEPT]]
     ends = _turn(V, frame, best, _cast(V, frame, best, SCAN, BISECTIONS))
@@ -71,6 +71,16 @@ def contact_level(V: LyapunovFunction) -> Bound:
     return Bound(NAME, V, level, Strength.ESTIMATED, note, point)
 
 
+def rough_level(V: LyapunovFunction) -> float:
+    """The contact level by rays that are not turned: above it, by little in the plane; 0 where there is none."""
+    frame = _frame(V)
+    if frame is None:
+        return 0.0
+    rays = unit_vectors(V.loop.n, RAYS_ROUGH)
+    face = _touched_face(V)
+    return float(min(_cast(V, frame, rays, SCAN, BISECTIONS_FIRST).level.min(), np.inf if face is None else face[0]))
+
+
 def _frame(V: LyapunovFunction) -> Array | None:
     """Matrix W whose columns span the rays x = centre + W u: V = |u|^2 if quadratic, else half-widths."""
     if not isinstance(V, Quadratic):
@@ -81,14 +91,14 @@ def _frame(V: LyapunovFunction) -> Array | None:
         return None
 
 
-def _directions(n: int) -> Array:
-    """Unit vectors (m, n): equally spaced in the plane, else quasi-random; always the same."""
+def unit_vectors(n: int, count: int) -> Array:
+    """Unit vectors (count, n): equally spaced in the plane, else quasi-random; always the same; two on a line."""
     if n == 1:
         return np.array([[1.0], [-1.0]])
     if n == 2:
-        angle = 2 * np.pi * np.arange(RAYS_IN_THE_PLANE) / RAYS_IN_THE_PLANE
+        angle = 2 * np.pi * np.arange(count) / count
         return np.stack([np.cos(angle), np.sin(angle)], axis=1)
-    sample = qmc.Sobol(n, scramble=True, rng=np.random.default_rng(7)).random(RAYS)
+    sample = qmc.Sobol(n, scramble=True, rng=np.random.default_rng(7)).random(2 ** (count - 1).bit_length())[:count]
     return _unit(ndtri(np.clip(sample, 1e-12, 1 - 1e-12)))
 
 

@@ -24,7 +24,7 @@ from roa.loop.model import Loop
 Array = NDArray[np.float64]
 
 RAYS, MARCH = 2048, 128  # rays from the equilibrium, and points on each, that size up the set of a formula
-MARGINS = (1.02, 1.1, 1.3, 1.7)  # sizes of the boxes that are tried about it
+MARGINS = (1.0005, 1.02, 1.1, 1.3, 1.7)  # sizes of the boxes that are tried about it
 INSET = 1e-9  # half-widths; how far inside the domain a box ends that would reach its faces
 FACE_BOXES = 20_000  # most boxes for V > c on one face
 
@@ -97,6 +97,8 @@ class LevelChart:
 
 def level_chart(V: LyapunovFunction, level: float) -> LevelChart | str:
     """Coordinates for {V <= level}, a float, or the reason why there are none."""
+    if isinstance(V, FormulaV) and V.from_equilibrium:
+        return "V is a formula in distances from the equilibrium"
     root = enclose_equilibrium(V.loop, V.centre)
     centre = IntervalArray.exact(V.centre) if root is None else root.x
     if isinstance(V, Quadratic):

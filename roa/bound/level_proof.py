@@ -53,6 +53,15 @@ class LevelProof:
     reason: str = ""
 
 
+@dataclass(frozen=True)
+class Side:
+    """One end of a limit: `name` must stay below `end` where sign is 1, above it where sign is -1."""
+
+    name: str
+    end: Decimal
+    sign: int
+
+
 class LevelProver:
     """Proofs about the levels of one V.
 
@@ -68,8 +77,6 @@ class LevelProver:
     def prove(self, level: Level, budget: int) -> LevelProof:
         """Try to prove a level, given exactly, with at most `budget` boxes; equal arguments give equal answers."""
         c = enclose_number(level)[1]
-        if self._V.loop.hold is not None:
-            return _undecided("V̇ says nothing of a loop with a hold, whose commands lag behind")
         if not self.is_ready:
             return _undecided("the equilibrium could not be enclosed, or V not be proved to be positive definite")
         if not 0 < c < np.inf:
@@ -88,10 +95,30 @@ class LevelProver:
         witness = None if found.witness is None else self._V.centre + self._T @ found.witness
         return LevelProof(found.answer, found.boxes, found.left, witness)
 
+    def keeps(self, side: Side, level: Level, budget: int) -> Answer:
+        """Try to prove that one end of a limit is not reached anywhere on {V <= level}."""
+        c = enclose_number(level)[1]
+        if not self.is_ready or not 0 < c < np.inf:
+            return Answer.UNDECIDED
+        reach = float(np.nextafter(np.sqrt(np.nextafter(c / self._shape, np.inf)), np.inf))
+        tape = Tape(self._n)
+        varying = {
+            name: tape.interval(enclose_number(low)[0], enclose_number(high)[1])
+            for name, (low, high) in self._V.loop.disturbances.items()
+        }
+        value, end = tape.loop(self._V.loop, self._states(tape), varying)[side.name], tape.number(side.end)
+        beyond = tape.subtract(value, end) if side.sign > 0 else tape.subtract(end, value)
+        program = tape.program([beyond, self._value(tape)])
+        cube, nowhere = np.full(self._n, reach), np.full(self._n, -1.0)
+        return negative_on_levels(program, -cube, cube, (-np.inf, c), nowhere, budget).answer
+
     @property
     def is_ready(self) -> bool:
-        """Whether the equilibrium is enclosed and V proved to be positive definite, which every proof needs."""
-        return self._root is not None and self._shape > 0
+        """Whether the equilibrium is enclosed and V proved to be positive definite, which every proof needs.
+
+        Never for a loop with a hold: its commands lag behind, and V̇ says nothing of it.
+        """
+        return self._V.loop.hold is None and self._root is not None and self._shape > 0
 
     @property
     def box_work(self) -> int:
@@ -148,7 +175,7 @@ class LevelProver:
     @cached_property
     def _program(self) -> Program:
         """Tape of V̇ and V in z."""
-        n, form = self._n, self._form
+        n = self._n
         tape = Tape(n)
         names = tape.loop(self._V.loop, self._states(tape))
         PT = self._V.enclosed_P @ self._T
@@ -160,13 +187,18 @@ class LevelProver:
             for i, tree in enumerate(self._V.loop.dynamics)
         ]
         decrease = tape.multiply(tape.number(2), tape.total(half))
+        return tape.program([decrease, self._value(tape)])
+
+    def _value(self, tape: Tape) -> int:
+        """Row of V in z."""
+        n, form = self._n, self._form
         squares = [tape.multiply(tape.interval(form.low[i, i], form.high[i, i]), tape.multiply(i, i)) for i in range(n)]
         mixed = [
             tape.multiply(tape.interval(2 * form.low[i, j], 2 * form.high[i, j]), tape.multiply(i, j))
             for i in range(n)
             for j in range(i)
         ]
-        return tape.program([decrease, tape.total([*squares, *mixed])])
+        return tape.total([*squares, *mixed])
 
     @cached_property
     def _dynamics(self) -> Program:

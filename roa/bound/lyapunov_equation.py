@@ -37,7 +37,8 @@ def solve_sampled_lyapunov(sampled: SampledLinearisation, Q: Array) -> Array:
     """Solve M'PM - P = -TQ for a symmetric P, with M the map over one period T.
 
     The factor T makes P that of the continuous equation as T goes to zero. With a delay M maps the state and the
-    command that still acts; the weight of that command is zero, and P remains definite where it has any effect.
+    command that still acts. That command is weighed by as much as P would say of it without: then what it does
+    counts twice, and P is definite with a margin.
 
     Parameters
     ----------
@@ -49,8 +50,10 @@ def solve_sampled_lyapunov(sampled: SampledLinearisation, Q: Array) -> Array:
     float64 like the map: (n, n), or (n + m, n + m) with a delay, whose first n rows and columns are V of a state
     where the command of the equilibrium still acts, as at a start
     """
-    weight = block_diag(sampled.period * Q, np.zeros((len(sampled.map) - len(Q),) * 2))
-    P: Array = solve_discrete_lyapunov(sampled.map.T, weight)
+    n, M = len(Q), sampled.map
+    P: Array = solve_discrete_lyapunov(M.T, block_diag(sampled.period * Q, np.zeros((len(M) - n,) * 2)))
+    if len(M) > n:
+        P = solve_discrete_lyapunov(M.T, block_diag(sampled.period * Q, np.diag(np.diag(P)[n:])))
     return (P + P.T) / 2
 
 

@@ -12,6 +12,8 @@ from numpy.typing import NDArray
 from roa.bound.definite import definiteness
 from roa.bound.equilibrium_enclosure import enclose_equilibrium
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
+from roa.bound.sampled_function import SampledQuadratic
+from roa.bound.sampled_proof import SampledProver
 from roa.kernel.enclosure import enclose
 from roa.kernel.interval_arrays import IntervalArray
 from roa.kernel.tape import Tape
@@ -29,7 +31,12 @@ def member(V: LyapunovFunction, level: Decimal | Fraction | float, x: Array) -> 
 
 
 def decrease_witness(V: LyapunovFunction, x: Array) -> bool:
-    """Whether V̇ > 0 holds for certain at the float point x (n,): V is no Lyapunov function there."""
+    """Whether V̇ > 0 holds for certain at the float point x (n,): V is no Lyapunov function there.
+
+    With a hold: whether V is greater one period after a start there.
+    """
+    if V.loop.hold is not None:
+        return isinstance(V, SampledQuadratic) and SampledProver(V).increases_at(x)
     _, decrease = _value_and_decrease(V, x)
     return bool(decrease.low > 0)
 

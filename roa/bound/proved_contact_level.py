@@ -12,6 +12,8 @@ from dataclasses import replace
 from roa.bound.level_proof import LevelProof, LevelProver
 from roa.bound.level_set_proof import LevelSetProver
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
+from roa.bound.sampled_function import SampledQuadratic
+from roa.bound.sampled_proof import SampledProver
 from roa.bound.statement import Bound, Strength
 from roa.kernel.branch_and_bound import Answer
 
@@ -21,16 +23,17 @@ WORK, BOXES = 1.2e9, 200_000  # most elementary interval operations, and most bo
 FIRST_PART, PART = 0.15, 0.4  # of the budget for the first attempt; of what is left, for each later one
 LEAST = 100  # boxes without which no attempt is worth while
 
-Prover = LevelProver | LevelSetProver
+Prover = LevelProver | LevelSetProver | SampledProver
 
 
-def prove_contact_level(estimate: Bound, known: float) -> Bound:
+def prove_contact_level(estimate: Bound, known: float, boxes: int | None = None) -> Bound:
     """Return the contact level with what could be proved of it, or the estimate where that is no more than `known`.
 
     Parameters
     ----------
     estimate : Bound of strength *estimated*
     known : a level of the same V that is proved already
+    boxes : most boxes of all attempts together; by default what a few seconds can do
     """
     V, highest = estimate.V, estimate.level
     if not highest > 0:
@@ -38,7 +41,7 @@ def prove_contact_level(estimate: Bound, known: float) -> Bound:
     prover = prover_of(V)
     if not prover.is_ready:
         return estimate
-    budget = proof_budget(prover)
+    budget = proof_budget(prover) if boxes is None else boxes
     level = FIRST * highest
     first = prover.prove(level, int(FIRST_PART * budget))
     proof: LevelProof | None = first
@@ -46,12 +49,14 @@ def prove_contact_level(estimate: Bound, known: float) -> Bound:
         level, proof = _search(prover, highest, budget - first.boxes)
     if proof is None or level <= known:
         return replace(estimate, note=f"{estimate.note}; no higher level could be proved within {budget} boxes")
-    note = f"{branch_and_bound(proof)}; by floating-point search {estimate.note} at level {highest:.6g}"
+    note = f"{branch_and_bound(V, proof)}; by floating-point search {estimate.note} at level {highest:.6g}"
     return replace(estimate, level=level, strength=Strength.PROVED, note=note, level_estimated=highest)
 
 
 def prover_of(V: LyapunovFunction) -> Prover:
-    """The prover for a kind of V: that for quadratics is the quicker one."""
+    """The prover for a kind of V: that for quadratics is the quicker one, and a sampled loop has one of its own."""
+    if isinstance(V, SampledQuadratic):
+        return SampledProver(V)
     return LevelProver(V) if isinstance(V, Quadratic) else LevelSetProver(V)
 
 
@@ -60,9 +65,10 @@ def proof_budget(prover: Prover) -> int:
     return min(BOXES, int(WORK / prover.box_work))
 
 
-def branch_and_bound(proof: LevelProof) -> str:
+def branch_and_bound(V: LyapunovFunction, proof: LevelProof) -> str:
     """The argument of a proof, for notes and reasons."""
-    return f"V̇ < 0 is proved by interval branch and bound ({proof.boxes} boxes)"
+    shown = f"that V decreases over every period of {V.hold.T:g} s" if isinstance(V, SampledQuadratic) else "V̇ < 0"
+    return f"{shown} is proved by interval branch and bound ({proof.boxes} boxes)"
 
 
 def _search(prover: Prover, highest: float, left: int) -> tuple[float, LevelProof | None]:

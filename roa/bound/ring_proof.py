@@ -64,6 +64,8 @@ class RingProver:
 
     def prove(self, inner: Level, outer: Level, budget: int) -> RingProof:
         """Try to prove a ring, its levels given exactly, with at most `budget` boxes."""
+        if self._V.loop.hold is not None:
+            return _undecided("V̇ says nothing of a loop with a hold, whose commands lag behind")
         c_in, c_out = enclose_number(inner)[0], enclose_number(outer)[1]
         if not 0 < c_in <= c_out < np.inf:
             return _undecided("the levels are not positive numbers in this order")

@@ -11,6 +11,7 @@ from roa.bound.bounds import Bounds
 from roa.bound.contact_level import contact_level
 from roa.bound.definite import largest_eigenvalue, smallest_eigenvalue
 from roa.bound.equilibrium_enclosure import enclose_equilibrium
+from roa.bound.limited_level import LimitProver
 from roa.bound.lyapunov_equation import solve_lyapunov, weight_matrix
 from roa.bound.lyapunov_function import Quadratic
 from roa.bound.norm_bound import norm_bound
@@ -31,7 +32,7 @@ TIME_CONSTANTS = 5.0  # dwell in a ball, in slowest time constants
 def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: Bounds, elsewhere: Array) -> Target:
     """Choose what entering counts as convergence.
 
-    The largest proved level is taken, however small it is against the ball: entering it is convergence by
+    The largest proved ellipsoid is taken, however small it is against the ball: entering it is convergence by
     proof, and a trajectory that converges gets there in a time that grows only like the logarithm of its
     size. It is given up where the integrator's tolerance is not far below its extent, because then a point
     inside may belong to a trajectory outside.
@@ -45,12 +46,16 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
     dwell = sweep.dwell if sweep.dwell is not None else TIME_CONSTANTS * equilibrium.slowest_time_constant
     if configuration.bound.inner is not None:
         return watching(_residual_set(configuration, equilibrium, bounds, dwell), elsewhere)
-    best = bounds.largest_proved
+    best = bounds.largest_ellipsoid or bounds.largest_proved
     note = ""
     if best is None or not isinstance(best.V, Quadratic):
         note = "no level of the configured V is proved" if best is None else "the configured V is no quadratic"
         best = _bound_of_another_shape(configuration, equilibrium)
         note += "" if best is None else '; the V meant here is that of A\'P + PA = -Q with Q = "domain"'
+    if best is not None and loop.hold is not None and loop.hold.delay:
+        best, note = None, "what is proved with a delay is of the state together with the command that still acts"
+    if best is not None and loop.limits:
+        best, note = _within_limits(best, note)
     level = 0.0 if best is None else _safe_level(best)
     if best is not None and not _is_resolved(configuration, best.V, level):
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
@@ -74,8 +79,10 @@ def _residual_set(configuration: Configuration, equilibrium: Equilibrium, bounds
     loop, sweep, ring = configuration.loop, configuration.sweep, bounds.named(ULTIMATE)
     inner = float(configuration.bound.inner or 0)
     proved = ring is not None and ring.strength is Strength.PROVED and (ring.inner or np.inf) <= inner < ring.level
-    level = _safe_level(replace(ring, level=inner), exact=True) if proved and ring else 0.0
     note = "" if proved else "the inner level that is asked for is not proved"
+    if proved and ring and loop.limits and not (isinstance(ring.V, Quadratic) and LimitProver(ring.V).holds(inner)):
+        proved, note = False, "the inner level that is asked for is not proved to lie within the limits"
+    level = _safe_level(replace(ring, level=inner), exact=True) if proved and ring else 0.0
     if ring is not None and proved and not _is_resolved(configuration, ring.V, level):
         level, note = 0.0, "the inner level is proved but cannot be tested by the sweep, which takes only a quadratic V"
         if isinstance(ring.V, Quadratic):
@@ -118,6 +125,20 @@ def _bound_of_another_shape(configuration: Configuration, equilibrium: Equilibri
     contact = prove_contact_level(contact_level(V), norm.level)
     best = contact if contact.strength is Strength.PROVED else norm
     return best if best.level > 0 else None
+
+
+def _within_limits(best: Bound, note: str) -> tuple[Bound | None, str]:
+    """Lower a proved bound until its set is proved to lie within the limits, and say so."""
+    if best.V.loop.hold is not None:
+        return None, "; ".join(words for words in (note, "between samples nothing is proved about the limits") if words)
+    if not isinstance(best.V, Quadratic):
+        return best, note
+    level = LimitProver(best.V).largest(best.level)
+    if level == best.level:
+        return best, note
+    lowered = replace(best, level=level) if level > 0 else None
+    found = "no level is proved to lie within the limits" if lowered is None else "lowered until within the limits"
+    return lowered, "; ".join(words for words in (note, found) if words)
 
 
 def _safe_level(bound: Bound, exact: bool = False) -> float:

@@ -22,7 +22,7 @@ from enum import StrEnum
 import numpy as np
 from numpy.typing import NDArray
 
-from roa.kernel import enclosure, interval_functions, intervals, tape, tape_rules
+from roa.kernel import enclosure, interval_functions, intervals, table_rules, tape, tape_rules
 from roa.kernel.enclosure import Flags, Integers, interpret, switches
 from roa.kernel.intervals import add, down, multiply, undefined, up
 from roa.kernel.machine_code import compiled, inner
@@ -300,4 +300,4 @@ def _side(over: Array, radius: Array) -> int:
     return steepest
 
 
-_search = compiled(_search_boxes, uses=(intervals, interval_functions, tape, tape_rules, enclosure))
+_search = compiled(_search_boxes, uses=(intervals, interval_functions, table_rules, tape, tape_rules, enclosure))

@@ -12,11 +12,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from roa.kernel import interval_functions, intervals, tape, tape_rules
+from roa.kernel import interval_functions, intervals, table_rules, tape, tape_rules
 from roa.kernel.interval_arrays import IntervalArray
 from roa.kernel.interval_functions import arc_tangent_jumps, arc_tangent_of_two
 from roa.kernel.intervals import Interval, add, hull, maximum, minimum, multiply, undefined
 from roa.kernel.machine_code import compiled, inner
+from roa.kernel.table_rules import piecewise
 from roa.kernel.tape import Op, Program
 from roa.kernel.tape_rules import one_operand, two_arguments_of_angle
 
@@ -28,6 +29,7 @@ VARIABLE, CONSTANT = int(Op.VARIABLE), int(Op.CONSTANT)
 ADD, SUBTRACT, NEGATE, MULTIPLY = int(Op.ADD), int(Op.SUBTRACT), int(Op.NEGATE), int(Op.MULTIPLY)
 ATAN2, MIN, MAX, ABS = int(Op.ATAN2), int(Op.MIN), int(Op.MAX), int(Op.ABS)
 WHERE_NEGATIVE, WHERE_NOT_POSITIVE = int(Op.WHERE_NEGATIVE), int(Op.WHERE_NOT_POSITIVE)
+LOOKUP = int(Op.LOOKUP)
 
 
 @dataclass(frozen=True)
@@ -122,6 +124,8 @@ def interpret(
             used = slots[t, : counts[t, order]]
             if sides[t] != 0:
                 _one_side(d, t, ops[t], sides[t], used)
+            elif ops[t, 0] == LOOKUP:
+                _table(d, t, ops[t], constants, support[t], order)
             elif not _alike(d, t, ops[t], support.shape[1], used):
                 _smooth(d, t, ops[t], constants[t], support[t], order)
             if undefined(d[t, 0, 0], d[t, 0, 1]):
@@ -233,6 +237,15 @@ def _smooth(d: Array, t: int, operation: Integers, constant: Array, support: Fla
 
 
 @inner
+def _table(d: Array, t: int, operation: Integers, constants: Array, support: Flags, order: int) -> None:
+    """Look a row up in a table."""
+    a, first, pieces = operation[1], operation[2], operation[3]
+    f = piecewise(d[a, 0, 0], d[a, 0, 1], constants, first, pieces, constants[t, 0] == 1.0)
+    d[t, 0, 0], d[t, 0, 1] = f[0], f[1]
+    _chain_one(d, t, a, (f[2], f[3]), (f[4], f[5]), support, order)
+
+
+@inner
 def _chain_one(d: Array, t: int, a: int, first: Interval, second: Interval, support: Flags, order: int) -> None:
     """Derivatives of row t = f(row a) from f' and f''."""
     n = support.shape[0]
@@ -297,4 +310,4 @@ def _curved(low: float, high: float, second: Interval, d: Array, a: int, i: int,
     return add(low, high, term[0], term[1])
 
 
-_interpret = compiled(_interpret_boxes, uses=(intervals, interval_functions, tape, tape_rules))
+_interpret = compiled(_interpret_boxes, uses=(intervals, interval_functions, table_rules, tape, tape_rules))

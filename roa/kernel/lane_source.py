@@ -19,20 +19,22 @@ from pathlib import Path
 
 import jinja2
 
-from roa.kernel import vector_math
+from roa.kernel import table_source, vector_math
+from roa.kernel.elimination import Elimination
+from roa.kernel.jacobian_code import JacobianCode
 from roa.kernel.outcomes import Outcome, Reason
-from roa.kernel.straight_line import commands, right_hand_side
-from roa.kernel.tableau import Tableau
+from roa.kernel.straight_line import StraightLine, commands, right_hand_side
+from roa.kernel.tableau import Method, RosenbrockTableau
 from roa.kernel.target import Target
-from roa.loop.expression import Expression
+from roa.loop.expression import Expression, Name
 from roa.loop.model import Loop
 
 # 8 lanes do not vectorise, 16 give 0.89-0.96 of the speed of 32, and 64-128 no more than 1.03 of it.
 LANES = 32
 
 SIGNATURE = (
-    "void(f8[:,::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[:,::1], f8, f8[:,::1], f8, f8, "
-    "f8, f8, f8, i8, u1[::1], f8[::1], f8[:,::1], f8[:,::1], i4[::1], u1[::1])"
+    "void(f8[:,::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[::1], f8[:,::1], f8[:,::1], f8, f8[:,::1], f8, "
+    "f8, f8, f8, f8, i8, u1[::1], f8[::1], f8[:,::1], f8[:,::1], i4[::1], u1[::1])"
 )
 
 
@@ -44,7 +46,7 @@ class LaneSource:
     constants: list[Expression]
 
 
-def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
+def lane_source(loop: Loop, tableau: Method, target: Target) -> LaneSource:
     """Write the module for a loop, a method and a kind of target set.
 
     Numbers that can change without changing the structure (parameters, level, tolerances, boxes)
@@ -52,13 +54,16 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
     """
     code, derivatives = right_hand_side(loop)
     command, command_values = commands(loop, code)
+    jacobian = _Jacobian(loop, code) if isinstance(tableau, RosenbrockTableau) else None
     states = range(loop.n)
     level = target.kind == "level"
     # 1 is the target itself, where it is a ball; 2, 3, … are the other equilibria.
     balls = ([] if level else [1]) + [2 + k for k in range(len(target.elsewhere))]
     hold = _hold(loop, command_values)
+    lines = list(code.lines)
+    limits = [code.variable(Name(name)) for name in loop.limits]
     numbers = "".join(f", c{i}" for i in range(len(code.constants)))
-    rows = _buffer_rows(states, bool(balls), hold)
+    rows = _buffer_rows(states, bool(balls), bool(limits), hold)
     text = _template().render(
         outcome=Outcome,
         reason=Reason,
@@ -70,8 +75,13 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         rows=rows,
         n=loop.n,
         states=states,
-        lines=code.lines,
+        lines=lines,
+        limits=limits,
+        limit_lines=code.lines,
+        limit_ends="".join(f", low{i}, high{i}" for i in range(len(limits))),
+        hermite=_hermite,
         derivatives=derivatives,
+        refusals=_refusals(loop, code),
         n_constants=len(code.constants),
         hold=hold,
         command_lines=command.lines,
@@ -81,9 +91,17 @@ def lane_source(loop: Loop, tableau: Tableau, target: Target) -> LaneSource:
         args=lambda prefix: ", ".join(f"{prefix}{j}" for j in states),
         cell=partial(_cell, rows),
         combination=_combination,
+        jacobian=jacobian,
         distance=lambda ball, x: " + ".join(f"(({x}{j} - at{ball}_{j}) * inverse{j}) ** 2" for j in states),
     )
-    return LaneSource(vector_math.source(code.functions) + "\n\n" + text, code.constants)
+    parts = [vector_math.source(code.functions), table_source.source(code.tables), text]
+    return LaneSource("\n\n".join(part for part in parts if part), code.constants)
+
+
+def _refusals(loop: Loop, code: StraightLine) -> list[str]:
+    """Write, for each table that ends with its points, the condition that it is left; of variables of the code."""
+    used = [(use.table, code.variable(use.argument)) for use in loop.refusals]
+    return [table_source.outside(table, variable) for table, variable in used]
 
 
 @cache
@@ -132,12 +150,14 @@ def _hold(loop: Loop, values: list[str]) -> _HoldCode:
     return _HoldCode(values, "none" if delay == 0 else "full" if delay == period else "part")
 
 
-def _buffer_rows(states: range, balls: bool, hold: _HoldCode) -> dict[str, int]:
+def _buffer_rows(states: range, balls: bool, limits: bool, hold: _HoldCode) -> dict[str, int]:
     """Name the rows of the lanes' buffer."""
     names = ["t", "h", "steps", *(f"{row}{j}" for row in ("x", "k", "peak") for j in states)]
     if balls:
         names += ["ball", "since", "entry", "entry_steps"]
         names += [f"{row}{j}" for row in ("entry_x", "entry_peak") for j in states]
+    if limits:
+        names += ["over"]
     return {name: row for row, name in enumerate([*names, *hold.rows])}
 
 
@@ -145,6 +165,32 @@ def _cell(rows: dict[str, int], name: str, lane: str = "l") -> str:
     return f"B[{lane} + {rows[name] * LANES}]"
 
 
-def _combination(weights: tuple[float, ...], state: int) -> str:
+class _Jacobian:
+    """What the template needs to know of the Jacobian and of the solutions by it."""
+
+    def __init__(self, loop: Loop, code: StraightLine) -> None:
+        slopes = JacobianCode(loop, code)
+        self.lines, self.entries = slopes.code.lines, slopes.entries
+        self.elimination = Elimination(
+            [
+                [f"e{i}_{j}" if i == j or entry else None for j, entry in enumerate(row)]
+                for i, row in enumerate(self.entries)
+            ]
+        )
+
+    def solution(self, stage: int) -> list[str]:
+        """Assignments that replace the right-hand side of a stage by the stage."""
+        return self.elimination.solution([f"u{stage}_{j}" for j in range(len(self.entries))])
+
+
+def _combination(weights: tuple[float, ...], state: int, stages: str = "k") -> str:
     """Write the weighted sum of one state's slopes over the stages."""
-    return " + ".join(f"{weight!r} * k{stage}_{state}" for stage, weight in enumerate(weights) if weight != 0.0)
+    return " + ".join(f"{weight!r} * {stages}{stage}_{state}" for stage, weight in enumerate(weights) if weight != 0.0)
+
+
+def _hermite(part: float, state: int) -> str:
+    """Write a state inside the step, on the cubic through the states and slopes of its ends."""
+    rest = 1.0 - part
+    old, new = rest * rest * (1.0 + 2.0 * part), part * part * (3.0 - 2.0 * part)
+    slope_old, slope_new = rest * rest * part, -part * part * rest
+    return f"{old} * x{state} + {new} * y{state} + h * ({slope_old} * k0_{state} + {slope_new} * f{state})"

@@ -66,6 +66,7 @@ class Lanes:
             np.ascontiguousarray(target.half_widths),
             loop.centre,
             loop.half_widths * integration.escape,
+            np.array([[float(low), float(high)] for low, high in loop.limits.values()]).reshape(-1, 2),
             np.zeros((n, n)) if target.P is None else np.ascontiguousarray(target.P),
             target.level,
             np.ascontiguousarray(target.elsewhere, dtype=np.float64).reshape(-1, n),

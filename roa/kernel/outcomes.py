@@ -49,6 +49,7 @@ class Reason(IntEnum):
     STEP_UNDERFLOW = 2
     NOT_FINITE = 3
     BLOW_UP = 4
+    OUTSIDE_TABLE = 5
 
     @property
     def word(self) -> str:
@@ -67,4 +68,5 @@ _REASONS = {
     Reason.STEP_UNDERFLOW: "the step size fell below what the clock can resolve",
     Reason.NOT_FINITE: "the dynamics gave no finite number at the state reached",
     Reason.BLOW_UP: "left the domain at a speed that no step size can follow",
+    Reason.OUTSIDE_TABLE: "left a look-up table that is refused beyond its ends",
 }

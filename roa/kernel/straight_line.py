@@ -10,7 +10,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from decimal import Decimal
 
-from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power, children
+from roa.loop.expression import Binary, Call, Compare, Expression, Lookup, Name, Negate, Number, Power, children
+from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop
 
 
@@ -22,6 +23,7 @@ class StraightLine:
     lines : list of str, Python assignments in order
     constants : list of trees over parameters and numbers; the code calls them c0, c1, …
     functions : set of str, the names from `vector_math` that the lines call
+    tables : look-up tables in the order in which the lines call them lookup0, lookup1, … or slope0, slope1, …
 
     Parameters
     ----------
@@ -33,11 +35,16 @@ class StraightLine:
         self.lines: list[str] = []
         self.constants: list[Expression] = []
         self.functions: set[str] = set()
+        self.tables: list[LookupTable] = []
         self._signals: Mapping[str, Expression] = loop.signals
         self._parameters = frozenset(loop.parameters)
         self._variables: dict[Expression, str] = {Name(s): f"x{i}" for i, s in enumerate(loop.states)}
         self._variables |= given or {}
         self._constant: dict[Expression, bool] = dict.fromkeys(given or {}, False)
+
+    def share_with(self, other: StraightLine) -> None:
+        """Use the constants, functions and tables of another code of the same module, and add to them."""
+        self.constants, self.functions, self.tables = other.constants, other.functions, other.tables
 
     def variable(self, tree: Expression) -> str:
         """Return the variable that holds the tree's value, appending the lines that compute it."""
@@ -50,11 +57,12 @@ class StraightLine:
         elif isinstance(tree, Name):
             name = self.variable(self._signals[tree.name])
         else:
-            name = self._assign(self._operation(tree))
+            name = self.assign(self._operation(tree))
         self._variables[tree] = name
         return name
 
-    def _assign(self, text: str) -> str:
+    def assign(self, text: str) -> str:
+        """Append an assignment and return its variable."""
         name = f"v{len(self.lines)}"
         self.lines.append(f"{name} = {text}")
         return name
@@ -85,6 +93,10 @@ class StraightLine:
                 return f"{self.variable(left)} {op} {self.variable(right)}"
             case Call(function, arguments):
                 return self._call(function, [self.variable(a) for a in arguments])
+            case Lookup(table, argument, slope):
+                if table not in self.tables:
+                    self.tables.append(table)
+                return f"{'slope' if slope else 'lookup'}{self.tables.index(table)}({self.variable(argument)})"
         raise AssertionError(f"no such node: {tree!r}")
 
     def _power(self, base: str, exponent: Decimal) -> str:
@@ -100,7 +112,7 @@ class StraightLine:
 
     def _clip(self, x: str, low: str, high: str) -> str:
         # min(max(x, lo), hi): the upper bound wins where lo > hi.
-        return _smaller(self._assign(_larger(x, low)), high)
+        return _smaller(self.assign(_larger(x, low)), high)
 
     def _call(self, function: str, a: list[str]) -> str:
         # The selects are ordered so that a NaN in any argument is handed on, never replaced by a bound.
@@ -116,7 +128,7 @@ class StraightLine:
             case "clip":
                 return self._clip(*a)
             case "deadzone":
-                return f"{a[0]} - {self._assign(self._clip(a[0], self._assign(f'-{a[1]}'), a[1]))}"
+                return f"{a[0]} - {self.assign(self._clip(a[0], self.assign(f'-{a[1]}'), a[1]))}"
             case "where":
                 return f"{a[1]} if {a[0]} else {a[2]}"
             case "sqrt":
@@ -148,15 +160,20 @@ def _integer_power(base: str, exponent: int) -> str:
     return square if exponent % 2 == 0 else f"{square} * {base}"
 
 
+def held_variables(loop: Loop) -> dict[Expression, str]:
+    """Return the variables of the signals that are held: the i-th is ui."""
+    held = loop.hold.signals if loop.hold else ()
+    return {Name(name): f"u{i}" for i, name in enumerate(held)}
+
+
 def right_hand_side(loop: Loop) -> tuple[StraightLine, list[str]]:
     """Return the code of f and the variables that hold the n derivatives; a held signal i is ui."""
-    held = loop.hold.signals if loop.hold else ()
-    code = StraightLine(loop, {Name(name): f"u{i}" for i, name in enumerate(held)})
+    code = StraightLine(loop, held_variables(loop))
     return code, [code.variable(tree) for tree in loop.dynamics]
 
 
 def commands(loop: Loop, code: StraightLine) -> tuple[StraightLine, list[str]]:
     """Return the code of the held signals at a sample and their variables; constants are added to those of `code`."""
     own = StraightLine(loop)
-    own.constants, own.functions = code.constants, code.functions
+    own.share_with(code)
     return own, [own.variable(Name(name)) for name in (loop.hold.signals if loop.hold else ())]

@@ -47,3 +47,47 @@ class Tableau:
         """The power of the step size that the error estimate falls with."""
         orders = [order + 1 for order in self.embedded_orders]
         return orders[0] if len(orders) == 1 else 2 * orders[0] - orders[1]
+
+
+@dataclass(frozen=True)
+class RosenbrockTableau:
+    """A Rosenbrock method with the exact Jacobian J, in the form that needs no product with J.
+
+    With M = 1 - hγJ, the stages solve M u_i = γ (h f(x + Σ a_ij u_j) + Σ c_ij u_j); the new state is x + Σ m_j u_j and
+    the error Σ e_j u_j (Hairer, Wanner, Solving Ordinary Differential Equations II, 1996, IV.7).
+
+    Attributes
+    ----------
+    name, source, order, embedded_orders : as of a `Tableau`, with one embedded order
+    gamma : γ
+    a, c : s rows, row i with i coefficients
+    m, e : s weights each
+    """
+
+    name: str
+    source: str
+    order: int
+    embedded_orders: tuple[int]
+    gamma: float
+    a: tuple[tuple[float, ...], ...]
+    c: tuple[tuple[float, ...], ...]
+    m: tuple[float, ...]
+    e: tuple[float, ...]
+
+    @property
+    def step(self) -> str:
+        """The part of the lane loop that attempts a step of this kind of method."""
+        return "rosenbrock_step.py.jinja"
+
+    @property
+    def stages(self) -> int:
+        """Number of evaluations of f a step and one, as of a `Tableau`: the first is shared with the step before."""
+        return len(self.m) + 1
+
+    @property
+    def error_order(self) -> int:
+        """The power of the step size that the error estimate falls with."""
+        return self.embedded_orders[0] + 1
+
+
+Method = Tableau | RosenbrockTableau

@@ -16,7 +16,8 @@ from math import inf, nextafter
 import numpy as np
 from numpy.typing import NDArray
 
-from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power
+from roa.loop.expression import Binary, Call, Compare, Expression, Lookup, Name, Negate, Number, Power
+from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop
 
 
@@ -52,6 +53,7 @@ class Op(IntEnum):
     MAX = 26
     WHERE_NEGATIVE = 27  # the second operand where the first is < 0, else the third
     WHERE_NOT_POSITIVE = 28  # the second operand where the first is <= 0, else the third
+    LOOKUP = 29  # the second is the first row of the table, the third its number of pieces
 
 
 @dataclass(frozen=True)
@@ -61,7 +63,7 @@ class Program:
     Attributes
     ----------
     ops : int64 (t, 4): operation and up to three operands (earlier rows; for POWER the second is the exponent)
-    constants : float64 (t, 2): enclosure of a CONSTANT or of the exponent of a REAL_POWER
+    constants : float64 (t, 2): enclosure of a CONSTANT or of the exponent of a REAL_POWER; one for a LOOKUP with kinks
     support : bool (t, n): the variables that each operation depends on
     slots : int64 (t, 1 + n + n(n+1)/2): the numbers of each row's jet that may differ from zero, ascending.
         A jet is the value (slot 0), the n first derivatives and the lower triangle of the second, row by row
@@ -104,6 +106,7 @@ class Tape:
         self._n = variables
         self._numbers: dict[Fraction, int] = {}
         self._rows: dict[Operation, int] = {}
+        self._tables: dict[LookupTable, int] = {}
         for i in range(variables):
             self._row(Op.VARIABLE, i)
 
@@ -179,6 +182,10 @@ class Tape:
             case Call("where", (Compare(op, left, right), first, second)):
                 difference = self.subtract(self.expression(left, names), self.expression(right, names))
                 return self._where(op, difference, self.expression(first, names), self.expression(second, names))
+            case Lookup(table, argument, slope):
+                if slope:
+                    raise AssertionError("the slope of a table is for the kernel alone")
+                return self._lookup(table, self.expression(argument, names))
             case Call(function, arguments):
                 return self.call(function, [self.expression(argument, names) for argument in arguments])
         raise AssertionError(tree)
@@ -218,6 +225,27 @@ class Tape:
             counts=np.cumsum(np.stack([used[:, 0], support.sum(axis=1), second.sum(axis=1)], axis=1), axis=1),
             outputs=chosen,
         )
+
+    def _lookup(self, table: LookupTable, row: int) -> int:
+        first, kinked = self._table(table), 1.0 if table.kind == "linear" else 0.0
+        return self._row(Op.LOOKUP, row, first, len(table.pieces), kinked, kinked)
+
+    def _table(self, table: LookupTable) -> int:
+        """First row of a table, in the order that `table_rules` reads; its rows stand for no other numbers."""
+        if table not in self._tables:
+            self._tables[table] = len(self._rows)
+            low, high = (table.x[0], table.x[-1]) if table.refuses else (Decimal("-inf"), Decimal("inf"))
+            for piece in table.pieces:
+                edge = low if piece.edge is None else piece.edge
+                for number in (edge, piece.origin, *piece.coefficients):
+                    self._own_constant(number)
+            self._own_constant(high)
+        return self._tables[table]
+
+    def _own_constant(self, number: Decimal | Fraction) -> None:
+        infinite = isinstance(number, Decimal) and number.is_infinite()
+        low, high = (float(number), float(number)) if infinite else enclose_number(number)
+        self._row(Op.CONSTANT, -1 - len(self._rows), low=low, high=high)
 
     def _row(self, op: Op, a: int = 0, b: int = 0, c: int = 0, low: float = 0.0, high: float = 0.0) -> int:
         return self._rows.setdefault((int(op), a, b, c, low, high), len(self._rows))

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from decimal import Decimal
 from typing import Annotated, Any
 
@@ -11,11 +11,13 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, mod
 from roa.loop.expression import Expression
 from roa.loop.formula_text import decimal_text, to_text
 from roa.loop.hold import Hold
+from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop
-from roa.loop.values import Matrix, number, real, symmetric_matrix, whole, word
+from roa.loop.values import Matrix, kind, number, real, symmetric_matrix, whole, word
 
 LONGEST_PER_HORIZON = 16
 MOST_SAMPLES = 2**40
+SEARCHES = {"quadratic": 6, "polynomial": 4, "no_return": 4}  # and most states with which each is done unasked
 LARGEST_SEED = 2**63 - 1  # the store keeps it as a signed integer of 64 bits
 
 
@@ -28,6 +30,12 @@ def _weights(value: Any) -> str | Matrix:
 _Positive = Annotated[float, BeforeValidator(real("greater than 0", lambda x: x > 0))]
 _AtLeastOne = Annotated[float, BeforeValidator(real("at least 1", lambda x: x >= 1))]
 _Share = Annotated[float, BeforeValidator(real("between 0 and 1", lambda x: 0 < x < 1))]
+
+
+def _searches(value: Any) -> tuple[str, ...]:
+    if not isinstance(value, list):
+        raise ValueError(f"must be a list of words, such as {list(SEARCHES)}, or [] for nothing; {kind(value)} found")
+    return tuple(dict.fromkeys(word(*SEARCHES)(entry) for entry in value))
 
 
 def _exact_positive(value: Any) -> Decimal:
@@ -60,6 +68,9 @@ class BoundTable(_Table):
     level : the claim {V <= level}, or None where nothing is claimed
     inner : asks for a residual set: trajectories are to end in {V <= inner}, not at the equilibrium; None where they
         are to converge
+    search : what is searched for beyond the configured V; None for what the number of states affords
+    degree : of the best polynomial and of the no-return set, even; None where the search chooses
+    boxes : most boxes of the proof of one bound; None for what a few seconds can do
     """
 
     Q: Annotated[str | Matrix, BeforeValidator(_weights)] | None = None
@@ -68,6 +79,15 @@ class BoundTable(_Table):
     V_text: str | None = None
     level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
     inner: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    search: Annotated[tuple[str, ...], BeforeValidator(_searches)] | None = None
+    degree: (
+        Annotated[int, BeforeValidator(whole("an even number from 2 to 12", lambda n: n in (2, 4, 6, 8, 10, 12)))]
+        | None
+    ) = None
+    boxes: (
+        Annotated[int, BeforeValidator(whole("a whole number from 1 to 1000000000", lambda n: 1 <= n <= 1_000_000_000))]
+        | None
+    ) = None
 
     @model_validator(mode="before")
     @classmethod
@@ -93,6 +113,7 @@ class SweepTable(_Table):
     seed : of the scrambling
     horizon, longest : s; a trajectory unresolved at the horizon is followed further, up to `longest`
     escape : size of the escape box in domain sizes
+    store : "all", or "outcomes" for outcome and time alone
     method : name of an integration method, or "auto"
     rtol, atol : tolerances of one step, relative and in state units
     ball_radius : of a target ball, in half-widths of the domain
@@ -111,6 +132,7 @@ class SweepTable(_Table):
     horizon: _Positive = 60.0
     longest: _Positive = 60.0 * LONGEST_PER_HORIZON
     escape: _AtLeastOne = 10.0
+    store: Annotated[str, BeforeValidator(word("all", "outcomes"))] = "all"
     method: Annotated[str, BeforeValidator(word())] = "auto"
     rtol: Annotated[
         float,
@@ -178,7 +200,7 @@ class Configuration:
     Attributes
     ----------
     source : name of the file, for messages
-    text : as read
+    text : as read, with the texts of the files that it names
     loop, bound, sweep, verdict : its tables, checked, with defaults filled in
     """
 
@@ -188,6 +210,17 @@ class Configuration:
     bound: BoundTable
     sweep: SweepTable
     verdict: VerdictTable
+
+    @property
+    def searches(self) -> tuple[str, ...]:
+        """What is searched for: as the file says, or else what the number of states affords."""
+        if self.bound.search is not None:
+            return self.bound.search
+        return tuple(name for name, states in SEARCHES.items() if self.loop.n <= states)
+
+    def quick(self) -> Configuration:
+        """The same without any search for better bounds."""
+        return replace(self, bound=self.bound.model_copy(update={"search": ()}))
 
     def resolved(self) -> dict[str, Any]:
         """Return all that changes results as plain values, the same for every spelling of one study.
@@ -200,10 +233,14 @@ class Configuration:
             "states": [[name, unit] for name, unit in zip(loop.states, loop.units, strict=True)],
             "parameters": {name: decimal_text(loop.parameters[name].value) for name in sorted(loop.parameters)},
             "signals": [[name, to_text(tree)] for name, tree in loop.signals.items()],
+            "tables": {name: _table(loop.tables[name]) for name in sorted(loop.tables)},
             "dynamics": [to_text(tree) for tree in loop.dynamics],
             "equilibrium": [decimal_text(value) for value in loop.guess],
             **_resolved_hold(loop.hold),
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "limits": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.limits.items())
+            },
             "disturbance": {
                 name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
             },
@@ -213,10 +250,18 @@ class Configuration:
                 "V": _plain(bound.V),
                 "level": _plain(bound.level),
                 "inner": _plain(bound.inner),
+                "search": list(self.searches),
+                "degree": bound.degree,
+                "boxes": bound.boxes,
             },
             "sweep": self.sweep.model_dump(),
             "verdict": self.verdict.model_dump(),
         }
+
+
+def _table(table: LookupTable) -> dict[str, Any]:
+    points = {"x": [decimal_text(value) for value in table.x], "y": [decimal_text(value) for value in table.y]}
+    return {**points, "kind": table.kind, "beyond": table.beyond}
 
 
 def _resolved_hold(hold: Hold | None) -> dict[str, Any]:

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from decimal import Decimal
 
-from roa.loop.expression import Binary, Call, Expression, Name, Negate, Number, Power
+from roa.loop.expression import Binary, Call, Expression, Lookup, Name, Negate, Number, Power
 
 ZERO, ONE, TWO = Number(Decimal(0)), Number(Decimal(1)), Number(Decimal(2))
 
@@ -54,6 +54,8 @@ def substituted(tree: Expression, values: Mapping[str, Expression]) -> Expressio
             return Power(substituted(base, values), exponent)
         case Call(function, arguments):
             return Call(function, tuple(substituted(argument, values) for argument in arguments))
+        case Lookup(table, argument, slope):
+            return Lookup(table, substituted(argument, values), slope)
         case Number():
             return tree
     return type(tree)(tree.op, substituted(tree.left, values), substituted(tree.right, values))
@@ -101,13 +103,13 @@ def _of_call(function: str, arguments: tuple[Expression, ...], slopes: list[Expr
         above = total(product(x, slopes[0]), negated(product(y, slopes[1])))
         return Binary("/", above, total(Power(x, Decimal(2)), Power(y, Decimal(2))))
     (x,), (slope,) = (arguments, slopes) if len(arguments) == 1 else ((arguments[0],), (slopes[0],))
-    outer = _slope_of(function, x)
+    outer = slope_of(function, x)
     if outer is None:
         raise NotSmooth
     return product(outer, slope)
 
 
-def _slope_of(function: str, x: Expression) -> Expression | None:
+def slope_of(function: str, x: Expression) -> Expression | None:
     """Derivative of a function of one argument; None where it has kinks."""
     square = Power(x, Decimal(2))
     match function:

@@ -89,6 +89,19 @@ def require_stable(equilibrium: Equilibrium, loop: Loop, source: str) -> None:
         )
 
 
+def require_within_limits(equilibrium: Equilibrium, loop: Loop, source: str) -> None:
+    """Raise `UserError` with every limit that does not hold the equilibrium strictly inside."""
+    values = loop.values_of(equilibrium.x)
+    faults = [
+        f"{source}: [limits] {name} = [{low}, {high}]: excludes the equilibrium {_point(loop, equilibrium.x)}, where "
+        f"{name} = {float(values[name]):.6g}, which must lie strictly inside; widen the limit"
+        for name, (low, high) in loop.limits.items()
+        if not float(low) < float(values[name]) < float(high)
+    ]
+    if faults:
+        raise UserError(faults)
+
+
 def require_given_V(configuration: Configuration, equilibrium: Equilibrium) -> None:
     """Raise `UserError` where a residual set is asked for about an equilibrium that gives no V by itself."""
     table = configuration.bound

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power
+from roa.loop.expression import Binary, Call, Compare, Expression, Lookup, Name, Negate, Number, Power
 
 Array = NDArray[np.float64]
 
@@ -66,5 +66,7 @@ def _value(node: Expression, values: Mapping[str, Array]) -> Any:
             return np.power(_value(base, values), float(exponent))
         case Compare(op, left, right):
             return _COMPARISONS[op](_value(left, values), _value(right, values))
+        case Lookup(table, argument, slope):
+            return (table.slope if slope else table.value)(_value(argument, values))
         case Call(function, arguments):
             return _FUNCTIONS[function](*(_value(argument, values) for argument in arguments))

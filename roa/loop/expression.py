@@ -10,6 +10,8 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from decimal import Decimal
 
+from roa.loop.lookup_table import LookupTable
+
 # Functions of the formula language with the number of arguments that each takes.
 # `min` and `max` take two or more; the tree holds them as nested pairs.
 FUNCTIONS: dict[str, int] = {
@@ -78,7 +80,16 @@ class Call:
     arguments: tuple[Expression, ...]
 
 
-Expression = Number | Name | Negate | Binary | Power | Compare | Call
+@dataclass(frozen=True)
+class Lookup:
+    """The curve of a look-up table at the argument, or its slope there (which no formula can ask for itself)."""
+
+    table: LookupTable
+    argument: Expression
+    slope: bool = False
+
+
+Expression = Number | Name | Negate | Binary | Power | Compare | Call | Lookup
 
 
 def children(node: Expression) -> tuple[Expression, ...]:
@@ -90,6 +101,8 @@ def children(node: Expression) -> tuple[Expression, ...]:
             return (left, right)
         case Power(base, _):
             return (base,)
+        case Lookup(_, argument):
+            return (argument,)
         case Call(_, arguments):
             return arguments
     return ()

@@ -12,9 +12,10 @@ from collections.abc import Collection, Mapping
 from dataclasses import dataclass, field
 from decimal import Decimal, InvalidOperation
 
-from roa.loop.expression import FUNCTIONS, Binary, Call, Compare, Expression, Name, Negate, Number, Power
+from roa.loop.expression import FUNCTIONS, Binary, Call, Compare, Expression, Lookup, Name, Negate, Number, Power
 from roa.loop.formula_syntax import ACCEPTED, FormulaError, FormulaFault, syntax_tree
-from roa.loop.wording import hint, shortened
+from roa.loop.lookup_table import LookupTable
+from roa.loop.wording import hint, listed, shortened
 
 LARGEST_EXPONENT = 16
 LARGEST_NUMBER = Decimal("1e300")  # products of a few such numbers still have a float
@@ -46,11 +47,13 @@ class Vocabulary:
     names : states, parameters and signals that may be used
     constants : exact value of each parameter, for exponents
     refused : further known names, each with the sentence that says why not here
+    tables : look-up tables by name, for the first argument of lookup
     """
 
     names: Collection[str]
     constants: Mapping[str, Decimal] = field(default_factory=dict)
     refused: Mapping[str, str] = field(default_factory=dict)
+    tables: Mapping[str, LookupTable] = field(default_factory=dict)
 
 
 def parse(text: str, vocabulary: Vocabulary) -> Expression:
@@ -127,6 +130,8 @@ class _Reader:
             return self.fault(node, vocabulary.refused[identifier])
         if identifier in FUNCTIONS or identifier == "lookup":
             return self.fault(node, f"{identifier} is a function and needs its arguments in brackets")
+        if identifier in vocabulary.tables:
+            return self.fault(node, f'"{identifier}" is a look-up table; write lookup({identifier}, …)')
         if identifier == "pi":
             return self.fault(node, 'unknown name "pi"; write 3.141592653589793 or make it a parameter')
         return self.fault(node, f'unknown name "{shortened(identifier, 60)}"{hint(identifier, vocabulary.names)}')
@@ -172,6 +177,8 @@ class _Reader:
         if not isinstance(node.func, ast.Name):
             self.fault(node.func, f'"{shortened(self.source(node.func))}" is not a function; a product needs *')
         function = node.func.id if isinstance(node.func, ast.Name) else ""
+        if function == "lookup":
+            return self.lookup(node)
         arguments = tuple(
             self.comparison(argument) if function == "where" and i == 0 else self.expression(argument)
             for i, argument in enumerate(node.args)
@@ -185,11 +192,23 @@ class _Reader:
         return self.counted(node, function, arguments)
 
     def unknown_function(self, node: ast.expr, function: str) -> Expression:
-        if function == "lookup":
-            return self.fault(node, "lookup is not yet supported by this version; write a formula in its place")
         if function in self.vocabulary.names or function in self.vocabulary.refused:
             return self.fault(node, f'"{function}" is not a function; a product needs *')
-        return self.fault(node, f'unknown function "{shortened(function, 60)}"{hint(function, FUNCTIONS)}')
+        return self.fault(node, f'unknown function "{shortened(function, 60)}"{hint(function, (*FUNCTIONS, "lookup"))}')
+
+    def lookup(self, node: ast.Call) -> Expression:
+        table = node.args[0] if node.args else None
+        trees = [self.expression(argument) for argument in node.args[1:]]
+        if node.keywords:
+            return self.fault(node.keywords[0], "arguments have no names in formulas")
+        if len(trees) != 1 or not isinstance(table, ast.Name):
+            return self.fault(node, "lookup takes the name of a table and one argument: lookup(table, x)")
+        known = self.vocabulary.tables
+        if table.id not in known:
+            tables = f"tables are {listed(known)}" if known else "the configuration has no table [tables.…]"
+            named = f'no look-up table is called "{shortened(table.id, 60)}"'
+            return self.fault(table, f"{named}; {tables}{hint(table.id, known)}")
+        return Lookup(known[table.id], trees[0])
 
     def counted(self, node: ast.expr, function: str, arguments: tuple[Expression, ...]) -> Expression:
         expected, found = FUNCTIONS[function], len(arguments)

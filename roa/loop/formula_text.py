@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from decimal import Context, Decimal
 
-from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power
+from roa.loop.expression import Binary, Call, Compare, Expression, Lookup, Name, Negate, Number, Power
 
 _COMPARISON, _SUM, _PRODUCT, _SIGN, _POWER, _ATOM = range(6)
 _PRECEDENCE = {"+": _SUM, "-": _SUM, "*": _PRODUCT, "/": _PRODUCT}
@@ -41,6 +41,9 @@ def _written(node: Expression) -> tuple[str, int]:
             return f"{_bracketed(base, _ATOM)}**{decimal_text(exponent)}", _POWER
         case Compare(op, left, right):
             return f"{_bracketed(left, _SUM)} {op} {_bracketed(right, _SUM)}", _COMPARISON
+        case Lookup(table, argument, slope):
+            # The slope has a name that no formula can write.
+            return f"{'slope of ' if slope else ''}lookup({table.name}, {to_text(argument)})", _ATOM
         case Call(function, arguments):
             return f"{function}({', '.join(to_text(argument) for argument in arguments)})", _ATOM
 

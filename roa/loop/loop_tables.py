@@ -15,6 +15,7 @@ from roa.loop.faults import Faults
 from roa.loop.formula import Vocabulary, parse
 from roa.loop.formula_syntax import FormulaError
 from roa.loop.hold import Hold, read_hold
+from roa.loop.lookup_table import LookupTable
 from roa.loop.model import Loop, Parameter
 from roa.loop.values import kind, number, pair
 from roa.loop.wording import hint, listed, quoted
@@ -24,8 +25,10 @@ LONGEST_NAME = 64
 LONGEST_UNIT = 40
 
 
-def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) -> Loop | None:
-    """Build the loop from its tables, or record what is wrong and return None.
+def read_loop(
+    title: str, tables: Mapping[str, dict[str, Any]], lookups: Mapping[str, LookupTable], faults: Faults
+) -> Loop | None:
+    """Build the loop from its tables, or record what is wrong and return None; `lookups` are its look-up tables.
 
     A name that is faulty where it is defined still counts as known elsewhere: one slip, one fault.
     """
@@ -33,7 +36,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
     for required in ("states", "dynamics", "domain"):
         if required not in tables:
             faults.add(required, "", "the table is missing")
-    reader = _LoopTables(tables, faults)
+    reader = _LoopTables(tables, lookups, faults)
     reader.check_names()
     units = reader.units()
     parameters, disturbances = read_disturbances(tables.get("disturbance", {}), reader.parameters(), faults)
@@ -45,6 +48,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
     hold = reader.hold(signals, dynamics)
     guess = reader.guess()
     domain = reader.domain(guess)
+    limits = reader.limits()
     if len(faults.found) > before:
         return None
     states = tuple(units)
@@ -57,6 +61,8 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
         dynamics=tuple(dynamics[name] for name in states),
         domain=tuple(domain[name] for name in states),
         guess=tuple(guess.get(name, Decimal(0)) for name in states),
+        limits=limits,
+        tables=lookups,
         hold=hold,
         disturbances=disturbances,
     )
@@ -65,6 +71,7 @@ def read_loop(title: str, tables: Mapping[str, dict[str, Any]], faults: Faults) 
 @dataclass(frozen=True)
 class _LoopTables:
     tables: Mapping[str, dict[str, Any]]
+    lookups: Mapping[str, LookupTable]
     faults: Faults
 
     @property
@@ -76,7 +83,7 @@ class _LoopTables:
 
     def check_names(self) -> None:
         owner: dict[str, str] = {}
-        for table in ("states", "parameters", "signals", "disturbance"):
+        for table in ("states", "parameters", "signals", "disturbance", "tables"):
             for name in self.table(table):
                 if table == "disturbance" and owner.get(name) == "parameters":
                     continue  # a parameter that varies; its value there is the nominal one
@@ -130,7 +137,7 @@ class _LoopTables:
         above = [*self.states, *parameters]
         for name, text in self.table("signals").items():
             refused = {later: _too_early(name, later) for later in self.table("signals")}  # unless it stands above
-            tree = self._formula("signals", name, text, Vocabulary(above, known, refused))
+            tree = self._formula("signals", name, text, Vocabulary(above, known, refused, self.lookups))
             if tree is not None:
                 trees[name] = tree
             above.append(name)
@@ -138,7 +145,7 @@ class _LoopTables:
 
     def dynamics(self, parameters: Sequence[str], known: Mapping[str, Decimal]) -> dict[str, Expression]:
         trees: dict[str, Expression] = {}
-        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], known)
+        vocabulary = Vocabulary([*self.states, *parameters, *self.table("signals")], known, tables=self.lookups)
         for name, text in self._of_states("dynamics", "its time derivative", complete=True).items():
             tree = self._formula("dynamics", name, text, vocabulary)
             if tree is not None:
@@ -178,6 +185,21 @@ class _LoopTables:
             if not low <= start <= high:
                 sentence = f"the guess {name} = {start} of [equilibrium] lies outside; move the guess or the domain"
                 self.faults.add("domain", name, sentence, value)
+        return pairs
+
+    def limits(self) -> dict[str, tuple[Decimal, Decimal]]:
+        known = [*self.states, *self.table("signals")]
+        pairs: dict[str, tuple[Decimal, Decimal]] = {}
+        for name, value in self.table("limits").items():
+            if name not in known:
+                found = "a parameter" if name in self.table("parameters") else "no state or signal"
+                sentence = f"is {found}; limits are set on {listed(known)}{hint(name, known)}"
+                self.faults.add("limits", name, sentence)
+                continue
+            try:
+                pairs[name] = pair(value)
+            except ValueError as error:
+                self.faults.add("limits", name, str(error), value)
         return pairs
 
     def _of_states(self, table: str, what: str, complete: bool) -> dict[str, Any]:

@@ -11,8 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.loop.evaluate import evaluate
-from roa.loop.expression import Expression
+from roa.loop.expression import Expression, Lookup, walk
 from roa.loop.hold import Hold
+from roa.loop.lookup_table import LookupTable
 from roa.loop.symbolic import Partials
 
 Array = NDArray[np.float64]
@@ -39,6 +40,8 @@ class Loop:
     dynamics : tuple of n trees, the time derivative of each state, in state units per second
     domain : n pairs (low, high), exact decimals, state units
     guess : n exact decimals, where Newton starts from
+    limits : mapping from state or signal to (low, high), exact decimals: values that must never be left
+    tables : mapping from name to look-up table; the trees hold the same objects
     hold : the digital part, or None; f below is then the loop with every signal taken as continuous, which has the
         same equilibria and nothing else in common with the sampled one (`roa.loop.sampled`)
     disturbances : names among the parameters that vary with time anywhere in an interval (low, high); the value of the
@@ -53,6 +56,8 @@ class Loop:
     dynamics: tuple[Expression, ...]
     domain: tuple[tuple[Decimal, Decimal], ...]
     guess: tuple[Decimal, ...]
+    limits: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
+    tables: Mapping[str, LookupTable] = field(default_factory=dict)
     hold: Hold | None = None
     disturbances: Mapping[str, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
@@ -81,12 +86,15 @@ class Loop:
         """Volume of the domain, product of the state units."""
         return float(np.prod(self.box[:, 1] - self.box[:, 0]))
 
-    def values_of(self, x: Array) -> dict[str, Array]:
-        """Return every name's value at the points x, float64 (m, n): states, parameters, signals."""
+    def values_of(self, x: Array, held: Mapping[str, float] | None = None) -> dict[str, Array]:
+        """Return every name's value at the points x, float64 (m, n): states, parameters, signals.
+
+        Signals in `held` have the values that a controller gave them, whatever the state is now.
+        """
         values: dict[str, Array] = {name: np.asarray(float(p.value)) for name, p in self.parameters.items()}
         values.update({name: x[..., i] for i, name in enumerate(self.states)})
         for name, tree in self.signals.items():
-            values[name] = evaluate(tree, values)
+            values[name] = np.asarray(held[name]) if held and name in held else evaluate(tree, values)
         return values
 
     def rhs(self, x: Array) -> Array:
@@ -96,6 +104,31 @@ class Loop:
         """
         values = self.values_of(x)
         return np.stack([np.broadcast_to(evaluate(tree, values), x.shape[:-1]) for tree in self.dynamics], axis=-1)
+
+    def within_limits(self, x: Array, held: Mapping[str, float] | None = None) -> NDArray[np.bool_]:
+        """Whether all limited values are within their limits at the points x, float64 (..., n) -> (...).
+
+        False of a NaN: a value that nobody knows is not within its limits.
+        """
+        values = self.values_of(x, held)
+        inside = np.ones(x.shape[:-1], dtype=bool)
+        for name, (low, high) in self.limits.items():
+            inside &= (values[name] >= float(low)) & (values[name] <= float(high))
+        return inside
+
+    @cached_property
+    def refusals(self) -> tuple[Lookup, ...]:
+        """The uses of tables that end with their points, each once, in the order in which they are worked out."""
+        used = (part for tree in (*self.signals.values(), *self.dynamics) for part in walk(tree))
+        return tuple(dict.fromkeys(part for part in used if isinstance(part, Lookup) and part.table.refuses))
+
+    def leaves_tables(self, x: Array) -> NDArray[np.bool_]:
+        """Whether some table that ends with its points is left at the points x, float64 (..., n) -> bool (...)."""
+        values = self.values_of(x)
+        left = np.zeros(x.shape[:-1], dtype=bool)
+        for use in self.refusals:
+            left = left | use.table.leaves(evaluate(use.argument, values))
+        return left
 
     @cached_property
     def _partials(self) -> Partials:

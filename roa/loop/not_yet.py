@@ -5,23 +5,16 @@ They are refused by name: a table that is ignored in silence would give a wrong 
 
 from __future__ import annotations
 
-TABLES = {
-    "limits": "limits on states and signals",
-    "tables": "look-up tables",
-}
+TABLES: dict[str, str] = {}
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
     ("bound", "ball"): "a claim in the form of a ball",
     ("bound", "scale"): "the scale of a claimed ball",
-    ("bound", "search"): "the search for better bounds",
     ("sweep", "stop_outside"): "stopping outside by proof",
 }
 
-VALUES = {
-    ("sweep", "store", "outcomes"): 'use "all"',
-    ("sweep", "method", "rodas4"): 'use "tsitouras5" or "auto"',
-}
+VALUES: dict[tuple[str, str, str], str] = {}
 
 
 def table(name: str) -> str:

@@ -21,16 +21,17 @@ from roa.loop.formula_syntax import FormulaError
 from roa.loop.hold import check_with_hold
 from roa.loop.loop_tables import read_loop
 from roa.loop.model import Loop
+from roa.loop.read_tables import Files, read_tables, with_files
 from roa.loop.values import kind
 from roa.loop.wording import hint, listed, shortened
 
 LARGEST_FILE = 200_000  # bytes
 TABLES = (
-    "states", "parameters", "signals", "dynamics", "equilibrium", "domain", "hold", "disturbance", "bound", "sweep",
-    "verdict",
+    "states", "parameters", "signals", "tables", "dynamics", "equilibrium", "domain", "limits", "hold", "disturbance",
+    "bound", "sweep", "verdict", "files",
 )  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
-BOUND_KEYS = ("Q", "P", "V", "level", "inner")
+BOUND_KEYS = ("Q", "P", "V", "level", "inner", "search", "degree", "boxes")
 
 TableT = TypeVar("TableT", bound=BaseModel)
 
@@ -53,17 +54,19 @@ def read(path: Path) -> Configuration:
         raise UserError(f"{path}: not a text file in UTF-8 (byte {error.start})") from None
     except OSError as error:
         raise UserError(f"{path}: cannot be read ({error.strerror})") from None
-    return read_text(text, str(path))
+    return read_text(text, str(path), path.parent)
 
 
-def read_text(text: str, source: str) -> Configuration:
-    """Read a configuration from its text; `source` names it in faults. Raises as `read`."""
+def read_text(text: str, source: str, folder: Path | None = None) -> Configuration:
+    """Read a configuration from its text; `source` names it in faults, CSV files lie in `folder`. Raises as `read`."""
     if len(text) > LARGEST_FILE or len(text.encode()) > LARGEST_FILE:
         raise UserError(_too_large(source, len(text.encode())))
     faults = Faults(source)
     tables = _tables(_toml(text, source), faults)
     title = _title(tables.pop("title", UNTITLED), faults)
-    loop = read_loop(title, tables, faults)
+    stored = _files(tables.get("files", {}), faults)
+    lookups, texts = read_tables(tables.get("tables", {}), Files(stored, folder), faults)
+    loop = read_loop(title, tables, lookups, faults)
     bound = _bound_table(tables.get("bound", {}), tables, loop, faults)
     sweep = _sweep_table(tables.get("sweep", {}), faults)
     if loop and loop.hold:
@@ -75,11 +78,14 @@ def read_text(text: str, source: str) -> Configuration:
     assert bound is not None
     assert sweep is not None
     assert verdict is not None
+    text = with_files(text, texts)
+    if len(text.encode()) > LARGEST_FILE:
+        raise UserError(_too_large(source, len(text.encode()), " with its tables"))
     return Configuration(source, text, loop, bound, sweep, verdict)
 
 
-def _too_large(source: str, size: int) -> str:
-    return f"{source}: the file has {size} bytes, at most {LARGEST_FILE} are accepted"
+def _too_large(source: str, size: int, what: str = "") -> str:
+    return f"{source}: the file{what} has {size} bytes, at most {LARGEST_FILE} are accepted"
 
 
 def _toml(text: str, source: str) -> dict[str, Any]:
@@ -125,6 +131,14 @@ def _title(title: Any, faults: Faults) -> str:
     return title
 
 
+def _files(content: Mapping[str, Any], faults: Faults) -> dict[str, str]:
+    """Return the texts of files that the configuration itself holds."""
+    for name, text in content.items():
+        if not isinstance(text, str):
+            faults.add("files", name, f"must be the text of a file, {kind(text)} found", text)
+    return {name: text for name, text in content.items() if isinstance(text, str)}
+
+
 def _checked(
     name: str, table: type[TableT], content: Mapping[str, Any], accepted: Iterable[str], faults: Faults
 ) -> TableT | None:
@@ -149,15 +163,12 @@ def _checked(
 
 def _sweep_table(content: dict[str, Any], faults: Faults) -> SweepTable | None:
     early = False
-    for key in ("store", "design", "method"):
+    for key in ("design", "method"):
         value = content.get(key)
         if isinstance(value, str) and ("sweep", key, value) in not_yet.VALUES:
             faults.add("sweep", key, not_yet.value("sweep", key, value), value)
             early = True
-    if content.get("store", "all") not in ("all", "outcomes"):
-        faults.add("sweep", "store", 'must be "all"', content["store"])
-    rest = {key: value for key, value in content.items() if key != "store"}
-    table = _checked("sweep", SweepTable, rest, SweepTable.model_fields, faults)
+    table = _checked("sweep", SweepTable, content, SweepTable.model_fields, faults)
     return None if early else table
 
 
@@ -171,8 +182,8 @@ def _bound_table(
     table = _checked("bound", BoundTable, rest, BOUND_KEYS, faults)
     if "V" in content:
         tree = _lyapunov_formula(content["V"], tables, loop, faults)
-        levels = {"level": table.level, "inner": table.inner} if table else {}
-        table = BoundTable(V=tree, V_text=content["V"], **levels) if table and tree else None
+        formula = {"Q": None, "P": None, "V": tree, "V_text": content["V"]}
+        table = table.model_copy(update=formula) if table and tree else None
     if table and loop:
         _check_matrices(table, loop.n, faults)
     return table
@@ -191,8 +202,9 @@ def _lyapunov_formula(text: Any, tables: Mapping[str, Any], loop: Loop | None, f
     }
     signals |= {name: f'"{name}" varies with time; V is a formula in states and constants' for name in varying}
     constants = {name: loop.parameters[name].value for name in parameters} if loop else {}
+    lookups = loop.tables if loop else {}
     try:
-        return parse(text, Vocabulary([*states, *parameters], constants, signals))
+        return parse(text, Vocabulary([*states, *parameters], constants, signals, lookups))
     except FormulaError as error:
         faults.add_formula("bound", "V", text, error)
         return None

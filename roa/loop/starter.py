@@ -51,6 +51,7 @@ Q = "identity"              # from A'P + PA = -Q; or "domain", or a matrix [[2, 
 # V = "depth**2 + depth*speed + speed**2"   # or a formula in states and parameters, zero at the equilibrium
 # level = 0.05              # the claim that `roa validate` judges: {V <= level} lies in the basin
 # inner = 0.001             # or only: whatever starts in {V <= level} ends in {V <= inner} (dead zone, disturbance)
+# search = ["quadratic"]    # what else is derived: quadratic, polynomial, no_return; unasked, as the states afford
 
 [sweep]                     # the simulation
 design  = "sobol"           # or "grid"; "rays" (star-shaped basins) and "boundary" (any) need fewer starts
@@ -61,6 +62,7 @@ seed    = 1
 horizon = 60.0              # s; by then a trajectory should be decided
 longest = 960.0             # s; one that is not is followed up to here
 escape  = 10.0              # size of the escape box in domain sizes: a trajectory that leaves it has escaped
+store   = "all"             # or "outcomes": outcome and time alone, 9 bytes a start
 method  = "auto"
 rtol    = 1e-6              # tolerance of one step, relative
 atol    = 1e-9              # and absolute, in the units of the states

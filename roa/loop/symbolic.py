@@ -20,7 +20,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.loop.evaluate import evaluate
-from roa.loop.expression import Binary, Call, Compare, Expression, Name, Negate, Number, Power, names_in
+from roa.loop.expression import Binary, Call, Compare, Expression, Lookup, Name, Negate, Number, Power, names_in
 
 Array = NDArray[np.float64]
 Slopes = dict[int, Any]  # index of a state -> derivative with respect to it, where it is not zero throughout
@@ -139,10 +139,12 @@ class Partials:
                 return Call("where", (self._flatten(condition), Name(self._named(first)), Name(self._named(second))))
             case Call(function, arguments):
                 return Call(function, tuple(Name(self._named(argument)) for argument in arguments))
+            case Lookup(table, argument):
+                return Lookup(table, Name(self._named(argument)))
 
     def _inner(self, node: Expression) -> Expression:
         """Keep sums, products and quotients in place; name what is a step of its own."""
-        return Name(self._named(node)) if isinstance(node, Power | Call) else self._flatten(node)
+        return Name(self._named(node)) if isinstance(node, Power | Call | Lookup) else self._flatten(node)
 
 
 def _slopes(step: _Step, known: Mapping[str, Array], slopes: Mapping[str, Slopes]) -> Slopes:
@@ -172,6 +174,9 @@ def _selected(tree: Expression, known: Mapping[str, Array], slopes: Mapping[str,
 
 def _differentiate(tree: Expression, parents: tuple[str, ...]) -> Callable[[Mapping[str, Array]], list[Any]]:
     """Return the partial derivatives of one step with respect to its parents, as a function of the known values."""
+    if isinstance(tree, Lookup):
+        of_table = Lookup(tree.table, tree.argument, slope=True)
+        return lambda known: [evaluate(of_table, known) for _ in parents]
     import sympy  # 0.3 s, and needed only where derivatives are
 
     names = sorted(names_in(tree))
@@ -198,8 +203,8 @@ def _to_sympy(node: Expression, symbols: Mapping[str, Any]) -> Any:
             return _to_sympy(base, symbols) ** _rational(exponent)
         case Call(function, arguments):
             return getattr(sympy, function)(*(_to_sympy(argument, symbols) for argument in arguments))
-        case Compare():
-            raise AssertionError("a comparison stands in `where` alone, which is selected, not differentiated")
+        case Compare() | Lookup():
+            raise AssertionError("a step of its own, which sympy does not see")
 
 
 def _rational(value: Decimal) -> Any:

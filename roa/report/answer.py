@@ -70,7 +70,9 @@ def _basin_sentence(verdict: Verdict) -> str:
     if basin.get("refusal"):
         return str(basin["refusal"])
     share = share_with_interval(basin["fraction"], tuple(basin["interval"]), basin["confidence"], "simulated")
-    return f"The simulated basin fills {share} of the domain."
+    safe = basin.get("safe")
+    within = "" if not safe else f", {percent(safe['fraction'], 2)} without crossing a limit on the way (simulated)"
+    return f"The simulated basin fills {share} of the domain{within}."
 
 
 def _bounds_sentence(verdict: Verdict) -> str:

@@ -96,7 +96,7 @@ class Evidence:
     @property
     def limits(self) -> Mapping[str, tuple[float, float]]:
         """Limits by the name of the state or signal."""
-        return {}
+        return {name: (float(low), float(high)) for name, (low, high) in self.loop.limits.items()}
 
     def limit_distances(self, state: int) -> list[float]:
         """Distances from the equilibrium to the limits on one state, state units."""

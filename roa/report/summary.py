@@ -7,7 +7,7 @@ from textwrap import wrap
 
 from roa.report.answer import Verdict, answer, next_steps
 from roa.report.tables import bound_rows, outcome_rows
-from roa.report.wording import number, percent
+from roa.report.wording import number, percent, share_with_interval
 
 WIDTH = 80
 
@@ -58,6 +58,17 @@ def _outcomes(verdict: Verdict) -> str:
         return ""
     lines = [f"{'Outcomes':<22}{'starts':>14}{'share':>12}"]
     lines += [f"  {row.word:<20}{row.count:>14}{row.share:>12}   simulated" for row in rows]
+    if safe := verdict["basin"].get("safe"):
+        share = share_with_interval(
+            safe["fraction"], tuple(safe["interval"]), verdict["basin"]["confidence"], "simulated"
+        )
+        lines += wrap(
+            f"Safe, converged within the limits: {share} of the domain, volume {number(safe['volume'])} "
+            f"{verdict['basin']['volume_unit']} (simulated).",
+            WIDTH,
+            initial_indent="  ",
+            subsequent_indent="  ",
+        )
     return "\n".join(lines)
 
 

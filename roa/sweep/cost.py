@@ -9,6 +9,7 @@ import numpy as np
 
 from roa.kernel.lanes import Lanes
 from roa.kernel.outcomes import Outcome
+from roa.sweep.kept import row_bytes
 from roa.sweep.plan import Plan
 from roa.sweep.rounds import Course, Round
 
@@ -62,7 +63,7 @@ def forecast(plan: Plan, lanes: Lanes, jobs: int | None) -> Cost:
         rates.append((time.perf_counter() - begun) / count)
         steps.append(float(trajectories.steps.mean()))
         outcomes.append(np.bincount(trajectories.outcome, minlength=len(Outcome)))
-    disk = 2 * plan.samples * (8 * (3 * plan.configuration.loop.n + 1) + 6)
+    disk = 2 * plan.samples * row_bytes(plan.configuration.sweep.store, plan.configuration.loop.n)
     least, most = (
         rate * plan.samples / workers + OVERHEAD_SECONDS_PER_BYTE * disk for rate in (min(rates), max(rates))
     )

@@ -17,6 +17,10 @@ from roa.sweep.designs import Answers
 from roa.sweep.header import Header
 from roa.sweep.run_folder import RunFolder
 from roa.sweep.samples import Samples, Stretch
+from roa.sweep.tally import Tally
+
+# Merged samples that are counted at once.
+AT_ONCE = 2**22
 
 
 @dataclass(frozen=True)
@@ -29,12 +33,14 @@ class Finished:
     header : Header, of the sweep as it shall be
     merged : Samples of `sweep.h5`, perhaps of a smaller sweep that is being extended; None where there is none
     separate : blocks in files of their own, each found whole
+    tally : of the outcomes of all of them
     """
 
     folder: RunFolder
     header: Header
     merged: Samples | None
     separate: frozenset[Block]
+    tally: Tally
 
     @property
     def merged_count(self) -> int:
@@ -58,13 +64,23 @@ class Finished:
         MachineError
             The store was damaged since it was looked through.
         """
-        if block.stop <= self.merged_count and self.merged is not None:
-            return self.merged.read(block.first, block.count)
+        return store.as_rows(self.columns(block), self.header, block.first)
+
+    def columns(self, block: Block) -> store.Columns:
+        """Return the columns of a finished block as they are stored.
+
+        Raises
+        ------
+        MachineError
+            The store was damaged since it was looked through.
+        """
+        if block.stop <= self.merged_count:
+            return store.read_merged(self.folder.sweep, self.header, block.first, block.count)
         path = self.folder.blocks / block.file_name
-        rows = store.read_block(path, block, self.header.fingerprint)
-        if isinstance(rows, str):
-            raise MachineError(f"{path}: {rows}; `{self.folder.resume_command}` computes it again")
-        return rows
+        columns = store.read_block(path, block, self.header)
+        if isinstance(columns, str):
+            raise MachineError(f"{path}: {columns}; `{self.folder.resume_command}` computes it again")
+        return columns
 
     def answers(self, blocks: Iterable[Block]) -> Answers:
         """Return of the starts of finished blocks whether they lie in the basin, bool (m,)."""
@@ -82,17 +98,23 @@ def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) 
     merged = _merged(folder, header)
     wanted = {block.file_name: block for block in _blocks(folder, header)}
     separate = set()
+    tally = Tally(header.replicates)
+    for first in range(0, merged.n if merged else 0, AT_ONCE):
+        count = min(AT_ONCE, merged.n - first if merged else 0)
+        tally.add(first, store.read_merged(folder.sweep, header, first, count, ("outcome",))["outcome"])
     for path in sorted(folder.blocks.glob("*")):
         block = wanted.get(path.name)
         if block is None:
             say(f"{path}: is no block of this sweep; ignored")
             continue
-        rows = store.read_block(path, block, header.fingerprint)
-        if isinstance(rows, str):
-            say(f"{path}: {rows}; it counts as not done")
+        columns = store.read_block(path, block, header)
+        if isinstance(columns, str):
+            say(f"{path}: {columns}; it counts as not done")
         else:
             separate.add(block)
-    return Finished(folder, header, merged, frozenset(separate))
+            skip = min(max((merged.n if merged else 0) - block.first, 0), block.count)
+            tally.add(block.first + skip, columns["outcome"][skip:])
+    return Finished(folder, header, merged, frozenset(separate), tally)
 
 
 def _blocks(folder: RunFolder, header: Header) -> Iterator[Block]:

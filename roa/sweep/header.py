@@ -35,6 +35,7 @@ class Header:
     roa_version, layout, created, platform : where the data come from
     fingerprint, fingerprint_parts : what changes results
     seed, design, interval, replicates, block_size, samples : how starts are drawn and how many there shall be
+    store : "all", or "outcomes" for outcome and time alone
     asked : samples asked for; a sweep in rounds may have ended with fewer, and then `sweep.h5` says fewer in `samples`
     target : what entering the target set means, in words and numbers
     states, units : length n
@@ -57,6 +58,7 @@ class Header:
     replicates: int
     block_size: int
     samples: int
+    store: str
     asked: int
     created: str
     platform: str
@@ -87,6 +89,7 @@ class Header:
             replicates=plan.replicates,
             block_size=plan.block_size,
             samples=plan.samples,
+            store=configuration.sweep.store,
             asked=plan.configuration.sweep.samples,
             created=datetime.now(UTC).isoformat(timespec="seconds"),
             platform=platform.platform(),

@@ -8,25 +8,26 @@ from __future__ import annotations
 
 import shutil
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager
 from dataclasses import replace
 
 import numpy as np
 
 from roa.errors import Interrupted, MachineError, UserError
 from roa.kernel.lanes import compile_lanes
-from roa.kernel.trajectories import Trajectories
 from roa.sweep import store
 from roa.sweep.block import Block
 from roa.sweep.crew import Crew
 from roa.sweep.finished import Finished, look_through
 from roa.sweep.header import Header
+from roa.sweep.kept import row_bytes
 from roa.sweep.means import Means
 from roa.sweep.plan import Plan
 from roa.sweep.progress import Both, Log, Progress
 from roa.sweep.rounds import Course, Drawn
 from roa.sweep.run_folder import RunFolder, write_atomically
 from roa.sweep.simulation import Simulation
+from roa.sweep.standing import Standing
 from roa.sweep.stop import StopRequest, stop_on_signals
 
 NO_ANSWERS = np.empty(0, np.bool_)
@@ -58,16 +59,23 @@ def launch(plan: Plan, folder: RunFolder, means: Means | None = None, progress: 
     """
     means = means or Means()
     progress = Both(progress or Progress(), Log(folder.log))
-    with stop_on_signals(means.deadline) as stop, _one_sentence(folder), folder.locked():
+    with ExitStack() as stack:
+        stop = stack.enter_context(stop_on_signals(means.deadline))
+        stack.enter_context(_one_sentence(folder))
+        stack.enter_context(folder.locked())
         header = _begin(plan, folder)
         finished = look_through(folder, header, progress.say)
+        standing = Standing(folder.status, finished.tally, plan.samples, means.command)
+        stack.enter_context(standing)
+        progress = Both(progress, standing)
         course = Course(plan)
-        work = _Work(plan, folder, means, stop, progress)
+        work = _Work(plan, finished, means, stop, progress)
         now = course.first()
         while now is not None:
             missing = [block for block in now.blocks if not finished.holds(block)]
             if missing:
                 if not work.sweep(now.drawn, missing, finished.merged_count):
+                    standing.ends("stopped")
                     return False
                 finished = replace(finished, separate=finished.separate | set(missing))
             now = course.after(finished.answers(now.blocks) if course.needs_answers else NO_ANSWERS)
@@ -75,11 +83,14 @@ def launch(plan: Plan, folder: RunFolder, means: Means | None = None, progress: 
         count = course.blocks[-1].stop
         if not finished.is_merged:
             progress.say(f"merging {count:,} samples")
-            store.write_samples(folder.sweep, replace(header, samples=count), _all_rows(finished, course.blocks, stop))
+            standing.enters("merging")
+            columns = _all_columns(finished, course.blocks, stop)
+            store.write_samples(folder.sweep, replace(header, samples=count), columns)
             progress.say(f"{folder.sweep} is written")
         _remove_blocks(folder, course.blocks)
         if stop.signalled:
             raise _interrupted(folder)
+        standing.ends("done")
     return True
 
 
@@ -111,7 +122,7 @@ def _begin(plan: Plan, folder: RunFolder) -> Header:
 
 def _require_space(plan: Plan, folder: RunFolder, starts: int) -> None:
     """Refuse to begin what the disk cannot hold: the missing starts in blocks, and all of the samples merged."""
-    row = 8 * (3 * plan.configuration.loop.n + 1) + 6
+    row = row_bytes(plan.configuration.sweep.store, plan.configuration.loop.n)
     needed = row * (starts + plan.samples)
     free = shutil.disk_usage(folder.path).free
     if needed > free:
@@ -124,8 +135,9 @@ def _require_space(plan: Plan, folder: RunFolder, starts: int) -> None:
 class _Work:
     """Runs blocks and stores each as it finishes; what all rounds share is made at the first."""
 
-    def __init__(self, plan: Plan, folder: RunFolder, means: Means, stop: StopRequest, progress: Progress) -> None:
-        self._plan, self._folder, self._means, self._stop, self._progress = plan, folder, means, stop, progress
+    def __init__(self, plan: Plan, finished: Finished, means: Means, stop: StopRequest, progress: Progress) -> None:
+        self._plan, self._means, self._stop, self._progress = plan, means, stop, progress
+        self._folder, self._tally = finished.folder, finished.tally
         self._simulation: Simulation | None = None
 
     def sweep(self, drawn: Drawn, missing: list[Block], merged: int) -> bool:
@@ -136,8 +148,9 @@ class _Work:
         left = set(missing)
         try:
             for block, rows in crew.run(simulation, missing, self._stop, self._progress.say):
-                content = store.encode_block(block, self._plan.fingerprint, rows)
+                content = store.encode_block(block, self._plan.fingerprint, rows, self._plan.configuration.sweep.store)
                 write_atomically(folder.blocks / block.file_name, content)
+                self._tally.add(block.first, rows.outcome)
                 self._progress.add(rows.outcome)
                 left.remove(block)
         finally:
@@ -178,11 +191,11 @@ class _Work:
         self._simulation = None
 
 
-def _all_rows(finished: Finished, blocks: list[Block], stop: StopRequest) -> Iterator[tuple[Block, Trajectories]]:
+def _all_columns(finished: Finished, blocks: list[Block], stop: StopRequest) -> Iterator[tuple[Block, store.Columns]]:
     for block in blocks:
         if stop.signalled:
             raise _interrupted(finished.folder)
-        yield block, finished.rows(block)
+        yield block, finished.columns(block)
 
 
 def _remove_blocks(folder: RunFolder, blocks: list[Block]) -> None:

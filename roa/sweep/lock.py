@@ -2,7 +2,7 @@
 
 The lock is the kernel's own (`flock`), so it ends with its owner, however that ended; a list of process numbers, which
 are used again, was rejected. What the lock file says (host and process) is for people, and for file systems
-that do not carry the lock from one host to another: what another host wrote is believed.
+that do not carry the lock from one host to another: there its owner shows that it lives by touching the file.
 """
 
 from __future__ import annotations
@@ -11,11 +11,17 @@ import fcntl
 import json
 import os
 import socket
-from collections.abc import Iterator
-from contextlib import contextmanager
+import tempfile
+import threading
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager, suppress
 from pathlib import Path
+from typing import Any
 
 from roa.errors import UserError
+
+# How often an owner touches the file, and after what silence another host may take the lock, s.
+HEARTBEAT, SILENCE = 60.0, 900.0
 
 
 @contextmanager
@@ -28,11 +34,63 @@ def locked(path: Path) -> Iterator[None]:
         Another process holds it, or another host may hold it.
     """
     handle = _take(path)
+    ended = threading.Event()
+    heart = threading.Thread(target=_beat, args=(path, ended), daemon=True)
+    heart.start()
     try:
         yield
     finally:
+        ended.set()
+        heart.join()
         path.unlink(missing_ok=True)
         os.close(handle)
+
+
+def owner(path: Path) -> dict[str, Any] | None:
+    """Return the host, pid and start of the process that a lock file names; None where there is no such file."""
+    try:
+        return _read(path.read_bytes()) or None
+    except OSError:
+        return None
+
+
+def lives(found: Mapping[str, Any]) -> bool | None:
+    """Whether the process lives that a lock file names; None where it is on another host, which nobody can see."""
+    if found.get("host") != socket.gethostname():
+        return None
+    pid = found.get("pid")
+    if not isinstance(pid, int):
+        return False
+    try:
+        os.kill(pid, 0)
+    except ProcessLookupError:
+        return False
+    except PermissionError:  # somebody else's
+        pass
+    return not _is_zombie(pid) and found.get("started") in (None, started(pid))
+
+
+def started(pid: int) -> int | None:
+    """Return when a process began, in ticks since the machine did; None where the system does not say.
+
+    With the number of the process it names a process for good: numbers are used again.
+    """
+    fields = _stat(pid)
+    return int(fields[19]) if len(fields) > 19 else None
+
+
+def _is_zombie(pid: int) -> bool:
+    """Whether a process has ended and only waits for its parent to take notice."""
+    return _stat(pid)[:1] == ["Z"]
+
+
+def _stat(pid: int) -> list[str]:
+    """Return what the system says of a process, from its state on; nothing where it says nothing."""
+    try:
+        # The name of the program, in parentheses, may hold anything; what counts stands behind it.
+        return Path(f"/proc/{pid}/stat").read_text().rpartition(")")[2].split()
+    except OSError:
+        return []
 
 
 def _take(path: Path) -> int:
@@ -45,13 +103,14 @@ def _take(path: Path) -> int:
                 os.close(handle)
                 continue
             _refuse_other_host(path, handle)
+            us = {"host": socket.gethostname(), "pid": os.getpid(), "started": started(os.getpid())}
             os.ftruncate(handle, 0)
-            os.pwrite(handle, json.dumps({"host": socket.gethostname(), "pid": os.getpid()}).encode(), 0)
+            os.pwrite(handle, json.dumps(us).encode(), 0)
         except BlockingIOError:
-            owner = _owner(handle)
+            found = _read(os.pread(handle, 4096, 0))
             os.close(handle)
             raise UserError(
-                f"{path.parent}: process {owner.get('pid', 'unknown')} on host {owner.get('host', 'unknown')} is "
+                f"{path.parent}: process {found.get('pid', 'unknown')} on host {found.get('host', 'unknown')} is "
                 "writing to this run; wait until it ends, or give another folder"
             ) from None
         except BaseException:
@@ -68,18 +127,34 @@ def _is_still(path: Path, handle: int) -> bool:
 
 
 def _refuse_other_host(path: Path, handle: int) -> None:
-    owner = _owner(handle)
-    if owner and owner.get("host") != socket.gethostname():
+    found = _read(os.pread(handle, 4096, 0))
+    if not found or found.get("host") == socket.gethostname():
+        return
+    silent = _silence(path)
+    if silent < SILENCE:
         raise UserError(
-            f"{path.parent}: process {owner.get('pid', 'unknown')} on host {owner.get('host', 'unknown')} holds this "
-            f"run, and from here nobody can see whether it still lives; if it does not, remove {path} and try again"
+            f"{path.parent}: process {found.get('pid', 'unknown')} on host {found.get('host', 'unknown')} holds this "
+            f"run and gave its last sign of life {silent:.0f} s ago; wait until it ends, or, if it is dead, try again "
+            f"after {SILENCE - silent:.0f} s"
         )
 
 
-def _owner(handle: int) -> dict[str, object]:
+def _silence(path: Path) -> float:
+    """Return the age of the last sign of life, s, by the clock of the file system alone: no two hosts have the same."""
+    with tempfile.NamedTemporaryFile(dir=path.parent, prefix=".now.", suffix=".aside") as now:
+        return os.fstat(now.fileno()).st_mtime - path.stat().st_mtime
+
+
+def _beat(path: Path, ended: threading.Event) -> None:
+    while not ended.wait(HEARTBEAT):
+        with suppress(OSError):
+            os.utime(path)
+
+
+def _read(content: bytes) -> dict[str, Any]:
     """Return what the file says of its owner; nothing where it was not written to its end."""
     try:
-        owner = json.loads(os.pread(handle, 4096, 0))
+        found = json.loads(content)
     except ValueError:
         return {}
-    return owner if isinstance(owner, dict) else {}
+    return found if isinstance(found, dict) else {}

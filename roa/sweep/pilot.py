@@ -1,7 +1,7 @@
-"""A few trajectories before the sweep: where else the loop comes to rest.
+"""A few trajectories before the sweep: where else the loop comes to rest, and how much work a start is.
 
 The pilot is a function of the configuration alone, never of the machine's speed, because what it finds (the other
-equilibria) decides stored results.
+equilibria, the size of a block) decides what is stored.
 """
 
 from __future__ import annotations
@@ -37,9 +37,11 @@ class Pilot:
     ----------
     elsewhere : float64 (k, n), other stable equilibria: in the domain by Newton from the starts, in the escape
         box by Newton from where unresolved trajectories linger
+    steps : mean of accepted steps a start
     """
 
     elsewhere: Array
+    steps: float
 
 
 def run_pilot(loop: Loop, equilibrium: Equilibrium, target: Target, integration: Integration) -> Pilot:
@@ -50,7 +52,7 @@ def run_pilot(loop: Loop, equilibrium: Equilibrium, target: Target, integration:
     inside = other_equilibria(loop, equilibrium, starts)
     reached = other_equilibria(_on_escape_box(loop, integration.escape), equilibrium, lingering)
     outside = reached[(np.abs(reached - loop.centre) > loop.half_widths).any(axis=1)]
-    return Pilot(np.concatenate([inside, outside])[:MOST_WATCHED])
+    return Pilot(np.concatenate([inside, outside])[:MOST_WATCHED], float(trajectories.steps.mean()))
 
 
 def _on_escape_box(loop: Loop, escape: float) -> Loop:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
@@ -15,13 +16,19 @@ from roa.loop.configuration import LARGEST_SEED, MOST_SAMPLES, Configuration, Sw
 from roa.loop.equilibrium import Equilibrium
 from roa.sweep import designs, fingerprint
 from roa.sweep.designs import Answers, Design, RoundDesign
+from roa.sweep.kept import row_bytes
 
 if TYPE_CHECKING:
     from roa.bound.bounds import Bounds
 
-# Starts of a block. Fewer cost time where lanes run empty at the end of a block (1.1 % at 4096, 0.3 % here); more
-# would be lost by a crash and delay a request to stop.
-BLOCK_SIZE = 16384
+# A block is work for about a second on a heavy loop, which is what a crash may cost: so many accepted steps. Of a
+# quick loop it has at most so many starts, worth their file and its syncing, and never so few that lanes run empty
+# for much of the time.
+BLOCK_STEPS, MOST_STARTS, FEWEST_STARTS = 2**24, 2**17, 2**8
+# What a block may take on the disk, bytes.
+MOST_BYTES = 64e6
+# Starts at the first look of a sweep with a goal; later looks are powers of two times that, and blocks not larger.
+FIRST_LOOK = 2**14
 # Of a design that refines in rounds: the rounds are small, and should still keep all workers busy.
 ROUND_BLOCK_SIZE = 4096
 # Independent replicates of a random design: enough for a spread between them that deserves a confidence interval.
@@ -74,6 +81,18 @@ def integration_of(table: SweepTable) -> Integration:
     )
 
 
+def fitting_block_size(steps: float, n: int) -> int:
+    """Return the starts of a block: a power of two, so that the last digits of `steps` have no say.
+
+    Parameters
+    ----------
+    steps : mean of accepted steps a start
+    n : number of states
+    """
+    most = min(BLOCK_STEPS / max(steps, 1.0), MOST_BYTES / row_bytes("all", n), MOST_STARTS)
+    return max(int(2 ** math.floor(math.log2(most))), FEWEST_STARTS)
+
+
 def make_plan(
     configuration: Configuration,
     equilibrium: Equilibrium,
@@ -82,8 +101,11 @@ def make_plan(
     samples: int | None = None,
     seed: int | None = None,
     block_size: int | None = None,
+    steps: float = 0.0,
 ) -> Plan:
     """Put a plan together; `samples` and `seed` take the place of the configuration's where they are given.
+
+    A new run has the block size that fits `steps`, the mean of a start in the pilot; a stored run keeps its own.
 
     Raises
     ------
@@ -100,7 +122,14 @@ def make_plan(
     configuration = replace(configuration, sweep=table)
     box = configuration.loop.box
     design = designs.make(table.design, box, table.seed, REPLICATES, table.samples, equilibrium.x)
-    block_size = block_size or (ROUND_BLOCK_SIZE if design.in_rounds else BLOCK_SIZE)
+    if design.in_rounds and table.store == "outcomes":
+        raise UserError(
+            f'{configuration.source}: [sweep] store = "outcomes": a start of design = "{table.design}" does not follow '
+            'from its index alone; use store = "all"'
+        )
+    fitting = fitting_block_size(steps, configuration.loop.n)
+    largest = ROUND_BLOCK_SIZE if design.in_rounds else FIRST_LOOK if table.goal is not None else fitting
+    block_size = block_size or min(largest, fitting)
     integration = integration_of(table)
     parts = {
         **fingerprint.configuration_parts(configuration.resolved()),

@@ -5,7 +5,6 @@ All kinds share one interface, so that who reports never asks whether anybody li
 
 from __future__ import annotations
 
-import resource
 import sys
 import time
 from collections.abc import Callable
@@ -18,6 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roa.kernel.outcomes import Outcome
+from roa.sweep.memory import peak_memory
 
 if TYPE_CHECKING:
     from rich.progress import Progress as RichBar
@@ -78,7 +78,7 @@ class Pace:
         new = ", ".join(f"{outcome.word} {self._new[outcome]:,}" for outcome in Outcome if self._new[outcome])
         if new:
             parts.append(f"new: {new}")
-        parts.append(f"peak memory {_peak_memory():.2f} GB")
+        parts.append(f"peak memory {peak_memory() / 1e9:.2f} GB")
         return "; ".join(parts)
 
 
@@ -214,9 +214,3 @@ def on_standard_error(quiet: bool) -> Progress:
     if quiet:
         return Progress()
     return Bar() if sys.stderr.isatty() else Lines(sys.stderr)
-
-
-def _peak_memory() -> float:
-    """Return the largest memory that this process has had, GB (10^9 bytes)."""
-    peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
-    return peak / 1e9 if sys.platform == "darwin" else peak * 1024 / 1e9

@@ -70,6 +70,7 @@ class RunFolder:
     blocks : folder of finished blocks, while the sweep is under way
     sweep : the merged data
     verdict, report, figures, log : what the later rooms write
+    status, lock : how far the sweep is, and who writes here
     """
 
     def __init__(self, path: Path) -> None:
@@ -82,6 +83,8 @@ class RunFolder:
         self.report = path / "report.html"
         self.figures = path / "figures"
         self.log = path / "run.log"
+        self.status = path / "status.json"
+        self.lock = path / "lock"
         self._locked = False
 
     @classmethod
@@ -147,7 +150,7 @@ class RunFolder:
         with ExitStack() as holding:
             try:
                 self.path.mkdir(parents=True, exist_ok=True)
-                holding.enter_context(lock.locked(self.path / "lock"))
+                holding.enter_context(lock.locked(self.lock))
                 self._clear()
             except OSError as error:
                 raise MachineError(f"{self.path}: cannot be written ({error.strerror or error})") from error

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import fields
 from pathlib import Path
@@ -24,8 +24,10 @@ from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.trajectories import Trajectories
 from roa.sweep.block import Block
 from roa.sweep.header import Header
+from roa.sweep.kept import KEPT
 from roa.sweep.run_folder import written_aside
 from roa.sweep.samples import Samples, Stretch
+from roa.sweep.starts import starts_of
 
 # Growth of a file in memory, bytes: about one block of a loop with two states.
 MEMORY_STEP = 2**20
@@ -41,6 +43,8 @@ COLUMNS: dict[str, tuple[str | None, str]] = {
     "steps": ("1", "accepted steps of the integrator up to that time"),
     "reason": ("1", "why the trajectory failed, or blow_up where it escaped by blowing up"),
 }
+Columns = Mapping[str, NDArray[Any]]
+
 ENUMS = {
     "outcome": h5py.enum_dtype({outcome.word: outcome.value for outcome in Outcome}, basetype="u1"),
     "reason": h5py.enum_dtype({reason.word: reason.value for reason in Reason}, basetype="u1"),
@@ -53,9 +57,9 @@ ATTRIBUTES = [
 ]
 
 
-def encode_block(block: Block, fingerprint: str, rows: Trajectories) -> bytes:
+def encode_block(block: Block, fingerprint: str, rows: Trajectories, kept: str = "all") -> bytes:
     """Return the content of a block's file: one dataset of records, since each dataset costs half a millisecond."""
-    records = _records(rows)
+    records = _records(rows, KEPT[kept])
     with h5py.File("in memory", "w", driver="core", backing_store=False, block_size=MEMORY_STEP) as file:
         file.create_dataset("rows", data=records)
         file.attrs["fingerprint"] = fingerprint
@@ -67,11 +71,11 @@ def encode_block(block: Block, fingerprint: str, rows: Trajectories) -> bytes:
     return image
 
 
-def read_block(path: Path, block: Block, fingerprint: str) -> Trajectories | str:
-    """Return a block's rows, or in words why its file cannot be used."""
+def read_block(path: Path, block: Block, header: Header) -> Columns | str:
+    """Return a block's columns as they are stored, or in words why its file cannot be used."""
     try:
         with h5py.File(path, "r", locking="best-effort") as file:
-            if file.attrs["fingerprint"] != fingerprint:
+            if file.attrs["fingerprint"] != header.fingerprint:
                 return "belongs to another run (its fingerprint differs)"
             first, count = int(file.attrs["first"]), int(file.attrs["count"])
             if (first, count) != (block.first, block.count):
@@ -79,7 +83,7 @@ def read_block(path: Path, block: Block, fingerprint: str) -> Trajectories | str
             records = file["rows"][()]
             if file.attrs["checksum"] != _checksum(block, records):
                 return "is damaged (its checksum is wrong)"
-            return Trajectories(**{name: np.ascontiguousarray(records[name]) for name in COLUMNS})
+            return {name: np.ascontiguousarray(records[name]) for name in KEPT[header.store]}
     except (OSError, RuntimeError, KeyError, ValueError, TypeError) as error:
         return f"is damaged ({_first_line(error)})"
 
@@ -94,8 +98,8 @@ def block_of(path: Path) -> Block | None:
     return block if block.file_name == path.name else None
 
 
-def write_samples(path: Path, header: Header, blocks: Iterable[tuple[Block, Trajectories]]) -> None:
-    """Write `sweep.h5` from the rows of all blocks in their order; one block is in memory at a time.
+def write_samples(path: Path, header: Header, blocks: Iterable[tuple[Block, Columns]]) -> None:
+    """Write `sweep.h5` from the columns of all blocks in their order; one block is in memory at a time.
 
     Raises
     ------
@@ -105,11 +109,11 @@ def write_samples(path: Path, header: Header, blocks: Iterable[tuple[Block, Traj
     with written_aside(path) as aside:
         with _machine_errors(path, "written"), h5py.File(aside, "w") as file:
             _write_header(file, header)
-            columns = _create_columns(file["samples"], header)
-            for block, rows in blocks:
-                for name, column in columns.items():
-                    column[block.first : block.stop] = getattr(rows, name)
-        _read_back(aside, path)
+            datasets = _create_columns(file["samples"], header)
+            for block, columns in blocks:
+                for name, dataset in datasets.items():
+                    dataset[block.first : block.stop] = columns[name]
+        _read_back(aside, path, KEPT[header.store])
 
 
 def open_samples(path: Path) -> Samples:
@@ -123,7 +127,7 @@ def open_samples(path: Path) -> Samples:
     header = read_header(path)
 
     def read(offset: int, count: int) -> Trajectories:
-        return _read_merged(path, offset, count)
+        return as_rows(read_merged(path, header, offset, count), header, offset)
 
     return Samples(header, [Stretch(0, header.samples, read)])
 
@@ -178,7 +182,8 @@ def _create_columns(group: h5py.Group, header: Header) -> dict[str, h5py.Dataset
     """
     columns = {}
     rows = min(header.block_size, header.samples)
-    for name, (unit, description) in COLUMNS.items():
+    for name in KEPT[header.store]:
+        unit, description = COLUMNS[name]
         width = () if unit else (len(header.states),)
         columns[name] = group.create_dataset(
             name,
@@ -196,29 +201,49 @@ def _describe(dataset: h5py.Dataset, unit: str | list[str], description: str) ->
     dataset.attrs["description"] = description
 
 
-def _read_merged(path: Path, first: int, count: int) -> Trajectories:
+def read_merged(path: Path, header: Header, first: int, count: int, names: Sequence[str] = ()) -> Columns:
+    """Return columns of samples first, …, first + count - 1 as they are stored in `sweep.h5`: `names`, or all.
+
+    Raises
+    ------
+    MachineError
+        The file is absent or damaged.
+    """
     with _machine_errors(path, "read"), h5py.File(path, "r", locking="best-effort") as file:
-        return _read_rows(file["samples"], first, count)
-
-
-def _read_rows(group: h5py.Group, first: int, count: int) -> Trajectories:
-    rows = {name: group[name][first : first + count] for name in COLUMNS}
+        columns = {name: file["samples"][name][first : first + count] for name in names or KEPT[header.store]}
     # The enumerations come with their names in the dtype; later rooms compute with plain bytes.
-    return Trajectories(**{name: rows[name].view(np.uint8) if name in ENUMS else rows[name] for name in COLUMNS})
+    return {name: column.view(np.uint8) if name in ENUMS else column for name, column in columns.items()}
 
 
-def _read_back(aside: Path, path: Path) -> None:
+def as_rows(columns: Columns, header: Header, first: int) -> Trajectories:
+    """Return stored columns as trajectories.
+
+    Starts that are not stored are made again; what else is not is NaN, -1 step, and no reason.
+    """
+    m, n = len(columns["outcome"]), len(header.states)
+    nothing = np.broadcast_to(np.nan, (m, n))
+    missing: dict[str, Callable[[], NDArray[Any]]] = {
+        "initial": lambda: starts_of(header)(first, m),
+        "final": lambda: nothing,
+        "peak": lambda: nothing,
+        "steps": lambda: np.broadcast_to(np.int32(-1), (m,)),
+        "reason": lambda: np.zeros(m, np.uint8),
+    }
+    return Trajectories(**columns, **{name: make() for name, make in missing.items() if name not in columns})
+
+
+def _read_back(aside: Path, path: Path, names: Sequence[str]) -> None:
     """Read everything once, so that HDF5 compares every chunk with its checksum."""
     with _machine_errors(path, "read back, mistrust the disk"), h5py.File(aside, "r") as file:
-        for name in COLUMNS:
+        for name in names:
             column = file["samples"][name]
             for first in range(0, len(column), READ_BACK_ROWS):
                 column[first : first + READ_BACK_ROWS]
 
 
-def _records(rows: Trajectories) -> NDArray[np.void]:
-    """Return the rows as records, (m,)."""
-    columns = {name: getattr(rows, name) for name in COLUMNS}
+def _records(rows: Trajectories, names: Sequence[str]) -> NDArray[np.void]:
+    """Return these columns of the rows as records, (m,)."""
+    columns = {name: getattr(rows, name) for name in names}
     kinds = [(name, column.dtype, column.shape[1:]) for name, column in columns.items()]
     records = np.empty(len(rows), kinds)
     for name, column in columns.items():
@@ -229,7 +254,7 @@ def _records(rows: Trajectories) -> NDArray[np.void]:
 def _checksum(block: Block, records: NDArray[np.void]) -> str:
     """Return SHA-256 over the block's place and every byte of its records, hexadecimal."""
     digest = hashlib.sha256(f"{block.first} {block.count}".encode())
-    digest.update(records.tobytes())
+    digest.update(records.view(np.uint8).data)
     return digest.hexdigest()
 
 

@@ -88,7 +88,9 @@ def test_unresolved_on_a_cycle_is_named():
     inside = (starts**2).sum(axis=1) < 1
     outcomes = np.where(inside, Outcome.CONVERGED, Outcome.UNRESOLVED)
     final = np.where(inside[:, None], 0.0, 2 * starts / np.linalg.norm(starts, axis=1, keepdims=True))
-    found = attractors(swept(loop, outcomes, final, starts), loop, equilibrium, target, replace(INTEGRATION, horizon=12.0), 0.99)
+    found = attractors(
+        swept(loop, outcomes, final, starts), loop, equilibrium, target, replace(INTEGRATION, horizon=12.0), 0.99
+    )
     (cycle,) = [one for one in found if one.kind == "cycle"]
     assert cycle.name == "unresolved: periodic, period 6.283 s"
     assert cycle.count == int((~inside).sum())

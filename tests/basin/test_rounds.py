@@ -203,15 +203,15 @@ class TestEnough:
         from sweep import small
 
         from roa.basin.goal import goal_samples, number_of_looks, stopping
-        from roa.sweep.plan import BLOCK_SIZE
+        from roa.sweep.plan import FIRST_LOOK
         from roa.sweep.store import open_samples
 
-        plan = small.make(2**19, sweep="horizon = 10.0\ngoal = { width = 0.004 }", block_size=BLOCK_SIZE)
+        plan = small.make(2**19, sweep="horizon = 10.0\ngoal = { width = 0.004 }", block_size=FIRST_LOOK)
         most = goal_samples(plan.configuration)
         assert most == 2**20
         assert number_of_looks(plan.configuration.sweep, most) == 7
         samples = open_samples(small.sweep(tmp_path, plan=stopping(plan)).sweep)
-        assert samples.n in [BLOCK_SIZE << k for k in range(4)]  # Sobol' points need far fewer than independent ones
+        assert samples.n in [FIRST_LOOK << k for k in range(4)]  # Sobol' points need far fewer than independent ones
         hits = samples.read(0, samples.n).in_basin
         counts = [int(hits[r::16].sum()) for r in range(16)]
         found = replicate_interval(counts, [samples.n // 16] * 16, 1 - 0.01 / 6)

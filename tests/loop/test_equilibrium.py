@@ -7,8 +7,16 @@ import numpy as np
 import pytest
 from scipy.linalg import solve_continuous_are
 
+import gallery
 from roa.errors import UserError
-from roa.loop.equilibrium import check_V, eigenvalue_text, find_equilibrium, other_equilibria, require_stable
+from roa.loop.equilibrium import (
+    check_V,
+    eigenvalue_text,
+    find_equilibrium,
+    other_equilibria,
+    require_stable,
+    require_within_limits,
+)
 from roa.loop.read import read, read_text
 
 CONFIGS = Path(__file__).parents[2] / "configs"
@@ -35,6 +43,18 @@ def refused(*args, **kwargs):
     (sentence,) = caught.value.faults
     assert sentence.startswith("a.toml: [")
     return sentence
+
+
+def test_limits_that_exclude_the_equilibrium_are_named_all_at_once():
+    given = gallery.cubic(signals={"twice": "2*x"}, limits={"x": (0.1, 0.6), "twice": (-1.0, 0.0)})
+    with pytest.raises(UserError) as raised:
+        require_within_limits(find_equilibrium(given.loop, "a.toml"), given.loop, "a.toml")
+    first, second = raised.value.faults
+    assert first == (
+        "a.toml: [limits] x = [0.1, 0.6]: excludes the equilibrium (x = 0 1), where x = 0, which must lie strictly "
+        "inside; widen the limit"
+    )
+    assert "[limits] twice = [-1.0, 0.0]: excludes" in second
 
 
 def test_mast():

@@ -106,7 +106,7 @@ def test_a_formula_may_span_lines_and_columns_count_on():
         ("sin(*tilt)", 5, "star"),
         ("sin", 1, "needs its arguments in brackets"),
         ("sni(tilt)", 1, 'unknown function "sni" (did you mean "sin"?)'),
-        ("lookup(drag, tilt)", 1, "lookup is not yet supported by this version"),
+        ("lookup(drag, tilt)", 8, 'no look-up table is called "drag"'),
         ("mass(tilt)", 1, 'a product needs *'),
         ("2(tilt)", 1, "a product needs *"),
         ("2tilt", 1, "a product needs *"),

@@ -89,6 +89,25 @@ def test_the_starter_is_sound_and_names_every_key_that_is_accepted():
             read_text(text if line[2] not in "PV" else text.replace('Q = "identity"', ""), "new.toml")
 
 
+def test_the_searches_that_are_asked_for():
+    bound = read_text(
+        with_table('[bound]\nsearch = ["quadratic", "no_return"]\ndegree = 6\nboxes = 5000'), "a.toml"
+    ).bound
+    assert (bound.search, bound.degree, bound.boxes) == (("quadratic", "no_return"), 6, 5000)
+    assert read_text(with_table("[bound]\nsearch = []"), "a.toml").bound.search == ()
+    assert read_text(LOOP, "a.toml").searches == ("quadratic", "polynomial", "no_return")
+
+
+@pytest.mark.parametrize("degree", ["3", "0", "14", "-2", "4.5"])
+def test_a_degree_that_is_refused(degree):
+    assert "an even number from 2 to 12" in only_fault_of(with_table(f"[bound]\ndegree = {degree}"))
+
+
+@pytest.mark.parametrize("search", ['["cubic"]', '"quadratic"'])
+def test_a_search_that_is_refused(search):
+    assert "quadratic" in only_fault_of(with_table(f"[bound]\nsearch = {search}"))
+
+
 def test_defaults():
     configuration = read_text(LOOP, "a.toml")
     sweep, verdict = configuration.sweep, configuration.verdict
@@ -183,7 +202,7 @@ def test_a_matrix_a_level_and_a_formula_for_V():
         (with_table("[sweep]\nball_radius = 0.51"), "must be greater than 0 and at most 0.5"),
         (with_table("[sweep]\ndwell = -2"), "[sweep] dwell = -2: must be greater than 0"),
         (with_table("[sweep]\ndesign = 3"), "[sweep] design = 3: must be text, a number found"),
-        (with_table('[sweep]\nstore = "some"'), '[sweep] store = "some": must be "all"'),
+        (with_table('[sweep]\nstore = "some"'), '[sweep] store = "some": must be one of all, outcomes'),
         (with_table('[verdict]\naccept = "simulated"'), "must be one of proved, supported"),
         (with_table("[verdict]\nconfidence = 0.5"), "must be between 0.5 and 1"),
         (with_table("[verdict]\nconfidence = 99"), "must be between 0.5 and 1"),
@@ -203,6 +222,10 @@ def test_a_matrix_a_level_and_a_formula_for_V():
         (with_table("[bound]\nV_text = 0"), "[bound] V_text: unknown key"),
         (with_table('[bound]\nV = "tilt**2 + torque"'), 'column 11: "torque" is a signal; V is a formula in'),
         (with_table("[bound]\nV = 3"), "[bound] V = 3: must be a formula in quotes, a number found"),
+        (with_table("[limits]\ntilt = [1, 1]"), "[limits] tilt = [1, 1]: must be a pair [low, high] with low below"),
+        (with_table("[limits]\ntilt = 1"), "[limits] tilt = 1: must be a pair [low, high], a number found"),
+        (with_table("[limits]\ndamping = [1, 3]"), "[limits] damping: is a parameter; limits are set on tilt, rate"),
+        (with_table("[limits]\ntilr = [-1, 1]"), '[limits] tilr: is no state or signal; limits are set on tilt, rate'),
         ("x = [1", "a.toml: not valid TOML: "),
         ("x = 1\nx = 2\n", "(at line 2, column"),
         ("x = " + "[" * 3000, "nested too deep"),
@@ -217,17 +240,12 @@ def test_one_fault_one_line(text, words):
 @pytest.mark.parametrize(
     ("text", "words"),
     [
-        (with_table("[limits]\ntilt = [-1, 1]"), "[limits]: not yet supported by this version"),
-        (with_table('[tables.drag]\ncsv = "drag.csv"'), "[tables]: not yet supported by this version"),
         (with_change("damping = 2", "damping = { value = 2, spread = [1, 3] }"), "spread is not yet supported"),
         (with_change("[dynamics]", '[dynamics]\npython = "plant.py:rhs"'), "[dynamics] python: not yet supported"),
-        (with_change('"stiffness*tilt"', '"lookup(drag, tilt)*tilt"'), "lookup is not yet supported by this version"),
         *((with_table(f"[bound]\n{key} = 1"), f"[bound] {key}: not yet supported by this version")
-          for key in ("ball", "scale", "search")),
+          for key in ("ball", "scale")),
         *((with_table(f"[sweep]\n{key} = 1"), f"[sweep] {key}: not yet supported by this version")
           for key in ("stop_outside",)),
-        (with_table('[sweep]\nstore = "outcomes"'), '"outcomes" is not yet supported by this version; use "all"'),
-        (with_table('[sweep]\nmethod = "rodas4"'), '"rodas4" is not yet supported by this version; use "tsit'),
     ],
 )  # fmt: skip
 def test_not_yet_is_refused_by_name(text, words):

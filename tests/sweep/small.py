@@ -57,12 +57,12 @@ class ClosedForm:
         )
 
 
-def sweep(path, samples=200, block_size=SIZE, jobs=1, lanes=None, plan=None, deadline=None):
+def sweep(path, samples=200, block_size=SIZE, jobs=1, lanes=None, plan=None, deadline=None, **asked):
     """Launch in this process; also the work of child processes that are to be killed."""
     compile_lanes, launching.compile_lanes = launching.compile_lanes, lambda *_: lanes or ClosedForm()
     try:
         folder = RunFolder(path)
-        launching.launch(plan or make(samples, block_size), folder, Means(jobs, deadline=deadline))
+        launching.launch(plan or make(samples, block_size, **asked), folder, Means(jobs, deadline=deadline))
     finally:
         launching.compile_lanes = compile_lanes
     return folder
@@ -71,7 +71,7 @@ def sweep(path, samples=200, block_size=SIZE, jobs=1, lanes=None, plan=None, dea
 def datasets(path):
     """Every dataset of a merged file, as bytes."""
     with h5py.File(path, "r") as file:
-        found = {f"samples/{name}": file["samples"][name][()].tobytes() for name in DATASETS}
+        found = {f"samples/{name}": column[()].tobytes() for name, column in file["samples"].items()}
         return found | {f"bound/{name}": file["bound"][name][()].tobytes() for name in file["bound"]}
 
 

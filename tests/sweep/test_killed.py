@@ -52,7 +52,13 @@ def undisturbed(tmp_path_factory):
 def require_whole(path, undisturbed):
     folder = small.sweep(path, LATER)
     assert small.datasets(folder.sweep) == undisturbed
-    assert sorted(entry.name for entry in path.iterdir()) == ["config.toml", "plan.json", "run.log", "sweep.h5"]
+    assert sorted(entry.name for entry in path.iterdir()) == [
+        "config.toml",
+        "plan.json",
+        "run.log",
+        "status.json",
+        "sweep.h5",
+    ]
     return folder
 
 

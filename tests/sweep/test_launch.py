@@ -158,18 +158,24 @@ class TestStop:
         assert small.datasets(folder.sweep) == small.datasets(small.sweep(tmp_path / "whole", 640).sweep)
 
     def test_during_the_merge(self, tmp_path, monkeypatch):
-        rows = launching.Finished.rows
+        columns = launching.Finished.columns
 
         def interrupted(finished, block):
             if block.index == 1:
                 os.kill(os.getpid(), signal.SIGTERM)
-            return rows(finished, block)
+            return columns(finished, block)
 
         with monkeypatch.context() as patch:
-            patch.setattr(launching.Finished, "rows", interrupted)
+            patch.setattr(launching.Finished, "columns", interrupted)
             with pytest.raises(Interrupted):
                 small.sweep(tmp_path)
-        assert sorted(entry.name for entry in tmp_path.iterdir()) == ["blocks", "config.toml", "plan.json", "run.log"]
+        assert sorted(entry.name for entry in tmp_path.iterdir()) == [
+            "blocks",
+            "config.toml",
+            "plan.json",
+            "run.log",
+            "status.json",
+        ]
         watched = Watched()
         small.sweep(tmp_path, lanes=watched)
         assert watched.calls == []
@@ -280,15 +286,15 @@ def test_counts_reach_the_progress(tmp_path, monkeypatch):
 def test_memory_holds_a_few_blocks(tmp_path, monkeypatch):
     # The merge asks for a block only when the one before is written.
     given, alive = [], []
-    rows = launching.Finished.rows
+    columns = launching.Finished.columns
 
     def tracked(finished, block):
         alive.append(sum(reference() is not None for reference in given))
-        found = rows(finished, block)
-        given.append(weakref.ref(found))
+        found = columns(finished, block)
+        given.append(weakref.ref(found["time"]))
         return found
 
-    monkeypatch.setattr(launching.Finished, "rows", tracked)
+    monkeypatch.setattr(launching.Finished, "columns", tracked)
     small.sweep(tmp_path, 640)
     assert len(given) == 10
     assert max(alive) == 1

@@ -9,7 +9,8 @@ import time
 import pytest
 
 from roa.errors import UserError
-from roa.sweep.lock import locked
+from roa.sweep.lock import SILENCE, lives, locked
+from roa.sweep.lock import owner as owner_of
 
 
 def hold(path, held):
@@ -32,7 +33,9 @@ def owner(tmp_path, spawner):
 
 def test_is_gone_afterwards(tmp_path):
     with locked(tmp_path / "lock"):
-        assert json.loads((tmp_path / "lock").read_text()) == {"host": socket.gethostname(), "pid": os.getpid()}
+        found = owner_of(tmp_path / "lock")
+        assert (found["host"], found["pid"]) == (socket.gethostname(), os.getpid())
+        assert lives(found)
     assert list(tmp_path.iterdir()) == []
 
 
@@ -73,8 +76,40 @@ def test_half_written_lock_of_a_dead_owner(tmp_path):
         pass
 
 
-def test_other_host_is_believed_and_the_cure_named(tmp_path):
+def test_other_host_is_believed_while_it_gives_signs_of_life(tmp_path):
     (tmp_path / "lock").write_text(json.dumps({"host": "elsewhere", "pid": 12}))
-    with pytest.raises(UserError, match=r"process 12 on host elsewhere.*remove .*lock"), locked(tmp_path / "lock"):
+    refused = r"process 12 on host elsewhere holds this run and gave its last sign of life \d+ s ago"
+    with pytest.raises(UserError, match=refused), locked(tmp_path / "lock"):
         pass
-    assert (tmp_path / "lock").exists()
+    assert [path.name for path in tmp_path.iterdir()] == ["lock"]
+    assert lives(owner_of(tmp_path / "lock")) is None
+
+
+def test_other_host_that_fell_silent_holds_nothing(tmp_path):
+    path = tmp_path / "lock"
+    path.write_text(json.dumps({"host": "elsewhere", "pid": 12}))
+    os.utime(path, (0, path.stat().st_mtime - SILENCE - 5))
+    with locked(path):
+        assert owner_of(path)["pid"] == os.getpid()
+
+
+def test_owner_gives_signs_of_life(tmp_path, monkeypatch):
+    monkeypatch.setattr("roa.sweep.lock.HEARTBEAT", 0.01)
+    path = tmp_path / "lock"
+    with locked(path):
+        os.utime(path, (0, 0))
+        for _ in range(500):
+            if path.stat().st_mtime > 0:
+                break
+            time.sleep(0.01)
+        assert path.stat().st_mtime > 0
+
+
+def test_dead_owner(tmp_path, owner):
+    found = owner_of(tmp_path / "lock")
+    assert lives(found)
+    assert not lives(found | {"started": 1})  # its number is used again
+    os.kill(owner.pid, signal.SIGKILL)
+    owner.join()
+    assert not lives(found)
+    assert not lives({"host": socket.gethostname(), "pid": "12"})

@@ -3,8 +3,11 @@
 import threading
 
 import numpy as np
+import pytest
 from sweep import small
 
+from roa.sweep.kept import row_bytes
+from roa.sweep.plan import fitting_block_size
 from roa.sweep.portions import CALL, FIRST, Portions, side_by_side
 
 STARTS = np.random.default_rng(5).uniform(-1.2, 1.2, (5000, 2))
@@ -73,3 +76,13 @@ def test_side_by_side_keeps_the_order():
 
     assert same(side_by_side(run, 2)(STARTS), small.ClosedForm().run(STARTS))
     assert len(side_by_side(small.ClosedForm().run, 3)(STARTS[:1])) == 1
+
+
+# 2**24 steps: on a heavy loop about a second; at most 2**17 starts, and 64 MB.
+@pytest.mark.parametrize(
+    ("steps", "n", "starts"),
+    [(0, 2, 2**17), (128, 2, 2**17), (129, 2, 2**16), (2000, 4, 2**13), (2e5, 2, 2**8), (1, 40, 2**16)],
+)
+def test_size_of_a_block(steps, n, starts):
+    assert fitting_block_size(steps, n) == starts
+    assert starts * row_bytes("all", n) <= 64e6

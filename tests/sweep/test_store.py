@@ -9,11 +9,12 @@ import pytest
 from sweep import small
 
 import roa.sweep.store as store
-from roa.errors import MachineError
+from roa.errors import MachineError, UserError
 from roa.kernel.outcomes import Outcome, Reason
 from roa.sweep.block import Block, blocks_of
 from roa.sweep.finished import look_through, open_partial
 from roa.sweep.header import Header
+from roa.sweep.kept import row_bytes
 from roa.sweep.run_folder import RunFolder, write_atomically
 
 STATES = ["x0", "x1"]
@@ -214,6 +215,50 @@ class TestBlocks:
         assert "it counts as not done" in under_way.log.read_text()
 
 
+OUTCOMES = 'horizon = 10.0\nstore = "outcomes"'
+
+
+@pytest.fixture(scope="module")
+def short(tmp_path_factory):
+    return small.sweep(tmp_path_factory.mktemp("short") / "run", sweep=OUTCOMES)
+
+
+class TestOutcomesAlone:
+    def test_what_is_kept_is_the_same(self, short, run):
+        kept, every = small.datasets(short.sweep), small.datasets(run.sweep)
+        assert {name for name in kept if name.startswith("samples/")} == {"samples/outcome", "samples/time"}
+        assert kept == {name: every[name] for name in kept}
+
+    def test_starts_are_made_again_and_the_rest_is_no_number(self, short, plan):
+        samples = store.open_samples(short.sweep)
+        found = samples.read(70, 60)
+        assert np.array_equal(found.initial, plan.design.points(70, 60))
+        assert np.array_equal(found.time, small.ClosedForm().run(plan.design.points(70, 60)).time)
+        assert np.isnan(found.final).all()
+        assert np.isnan(found.peak).all()
+        assert (found.steps == -1).all()
+        assert samples.attributes["store"] == "outcomes"
+
+    def test_grid(self, tmp_path):
+        plan = small.make(100, sweep='design = "grid"\nstore = "outcomes"')
+        samples = store.open_samples(small.sweep(tmp_path, plan=plan).sweep)
+        assert np.array_equal(samples.read(0, 100).initial, plan.design.points(0, 100))
+
+    def test_blocks_and_extension(self, short, tmp_path, plan):
+        small.sweep(tmp_path, 130, sweep=OUTCOMES)
+        folder = small.sweep(tmp_path, 200, sweep=OUTCOMES)
+        assert small.datasets(folder.sweep) == small.datasets(short.sweep)
+
+    def test_what_is_kept_belongs_to_the_fingerprint(self, tmp_path):
+        small.sweep(tmp_path, 200)
+        with pytest.raises(UserError, match=r'sweep.store: "all" -> "outcomes"'):
+            small.sweep(tmp_path, 200, sweep=OUTCOMES)
+
+    def test_row_is_nine_bytes(self):
+        # 1 for the outcome, 8 for the time; all of a start with two states: three states of 16, 8 + 1 + 4 + 1.
+        assert (row_bytes("outcomes", 2), row_bytes("all", 2)) == (9, 62)
+
+
 class TestPartial:
     def test_longest_complete_prefix(self, under_way, plan):
         (under_way.blocks / "block-000000002.h5").unlink()
@@ -249,17 +294,18 @@ def test_merge_that_reads_back_wrong_keeps_the_old_file(tmp_path, plan, monkeypa
     path.write_text("old")
     read_back = store._read_back
 
-    def damaged(aside, path):
+    def damaged(aside, path, names):
         with h5py.File(aside) as file:
             place = file["samples/peak"].id.get_chunk_info(0).byte_offset
         content = bytearray(aside.read_bytes())
         content[place] ^= 1
         aside.write_bytes(content)
-        read_back(aside, path)
+        read_back(aside, path, names)
 
     monkeypatch.setattr(store, "_read_back", damaged)
     rows = small.ClosedForm().run(plan.design.points(0, 200))
+    columns = {name: getattr(rows, name) for name in small.DATASETS}
     with pytest.raises(MachineError, match=r"sweep\.h5: cannot be read back, mistrust the disk"):
-        store.write_samples(path, Header.of(plan), [(Block(0, 0, 200), rows)])
+        store.write_samples(path, Header.of(plan), [(Block(0, 0, 200), columns)])
     assert path.read_text() == "old"
     assert list(tmp_path.iterdir()) == [path]

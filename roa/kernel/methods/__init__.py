@@ -6,7 +6,7 @@ import importlib
 import pkgutil
 
 from roa.errors import UserError
-from roa.kernel.tableau import Tableau
+from roa.kernel.tableau import Method
 from roa.loop.wording import hint
 
 # What `method = "auto"` stands for: at the usual tolerances, and where the loop has clips, the quickest.
@@ -18,7 +18,7 @@ def available() -> list[str]:
     return sorted(module.name for module in pkgutil.iter_modules(__path__))
 
 
-def load(name: str) -> Tableau:
+def load(name: str) -> Method:
     """Return the tableau called `name`; "auto" picks one.
 
     Raises
@@ -32,5 +32,5 @@ def load(name: str) -> Tableau:
             f'[sweep] method = "{name}": no such integration method; available: auto, {", ".join(available())}'
             + hint(chosen, available())
         )
-    tableau: Tableau = importlib.import_module(f"{__name__}.{chosen}").TABLEAU
+    tableau: Method = importlib.import_module(f"{__name__}.{chosen}").TABLEAU
     return tableau
