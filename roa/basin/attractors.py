@@ -27,6 +27,8 @@ Array = NDArray[np.float64]
 FOLLOWED, HORIZONS = 3, 4.0
 # Two cycles are one where their periods agree so well, relative.
 SAME_PERIOD = 0.01
+# Coordinates of an unstable equilibrium that are smaller are zero to Newton, in half-widths.
+NEWTON = 1e-12
 # Starts of the search for equilibria that attract nothing; of no sweep: a seed of their own.
 STARTS, SEED = 1024, 2**61 - 5
 
@@ -133,6 +135,14 @@ def _that_attract_nothing(loop: Loop, equilibrium: Equilibrium) -> tuple[Attract
     others = [one for one in equilibria_beside(loop, equilibrium, starts) if one.stability != "stable"]
     others.sort(key=lambda one: tuple(one.x))
     return tuple(
-        Attractor(f"an equilibrium that is {one.stability}", "equilibrium", one.x, one.stability, 0, 0.0, None)
+        Attractor(
+            f"an equilibrium that is {one.stability}",
+            "equilibrium",
+            np.where(np.abs(one.x) < NEWTON * loop.half_widths, 0.0, one.x),
+            one.stability,
+            0,
+            0.0,
+            None,
+        )
         for one in others
     )
