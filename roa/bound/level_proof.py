@@ -7,6 +7,7 @@ of a square root of P; it is taken as exact, whatever it is, so nothing of its m
 Near zero V and V̇ vanish together, and no box would ever tell them apart. There f(x* + Tz) = J̃ z with every row of J̃
 in the hull of that row's (Clarke's) gradients on the way from x*, so V̇ = z'(MJ̃ + J̃'M')z with M = T'P; where
 that interval matrix is negative definite over a cube, the cube is done. The rest is `branch_and_bound`.
+Cubic loops of many states are first tried direction by direction (`radial_proof`).
 """
 
 from __future__ import annotations
@@ -22,6 +23,7 @@ from numpy.typing import NDArray
 from roa.bound.definite import largest_eigenvalue, smallest_eigenvalue
 from roa.bound.equilibrium_enclosure import EquilibriumEnclosure, enclose_equilibrium
 from roa.bound.lyapunov_function import Quadratic
+from roa.bound.radial_proof import Radial, radial
 from roa.kernel.branch_and_bound import Answer, negative_on_levels
 from roa.kernel.enclosure import enclose
 from roa.kernel.interval_arrays import IntervalArray
@@ -31,6 +33,7 @@ Array = NDArray[np.float64]
 Level = Decimal | Fraction | float
 
 HALVINGS, REFINEMENTS = 45, 6  # of the cube about the equilibrium
+RADIAL = 3  # states from which on the radius is eliminated, where that can be done
 
 
 @dataclass(frozen=True)
@@ -84,16 +87,24 @@ class LevelProver:
         reach = float(np.nextafter(np.sqrt(np.nextafter(c / self._shape, np.inf)), np.inf))  # |z| <= reach on {V <= c}
         if not self._is_inside(reach):
             return _undecided("the level set is not proved to lie inside the domain")
+        boxes = 0
+        if self._radial is not None:
+            by_direction = self._radial.prove(c, budget // 2)
+            boxes = by_direction.boxes
+            if by_direction.answer is Answer.PROVED:
+                return LevelProof(Answer.PROVED, boxes, 0.0)
         cell = self._cell(reach)
         if cell == 0:
             return _undecided("V̇ < 0 could not be proved next to the equilibrium")
         cube = np.full(self._n, reach)
-        found = negative_on_levels(self._program, -cube, cube, (0.0, c), np.full(self._n, cell), budget)
+        left = max(budget - boxes, 0)
+        found = negative_on_levels(self._program, -cube, cube, (0.0, c), np.full(self._n, cell), left)
+        boxes += found.boxes
         if found.answer is Answer.UNDECIDED:
-            reason = f"the budget of {budget} boxes was used up" if found.boxes >= budget else "boxes became too small"
-            return LevelProof(found.answer, found.boxes, found.left, reason=reason)
+            reason = f"the budget of {budget} boxes was used up" if boxes >= budget else "boxes became too small"
+            return LevelProof(found.answer, boxes, found.left, reason=reason)
         witness = None if found.witness is None else self._V.centre + self._T @ found.witness
-        return LevelProof(found.answer, found.boxes, found.left, witness)
+        return LevelProof(found.answer, boxes, found.left, witness)
 
     def keeps(self, side: Side, level: Level, budget: int) -> Answer:
         """Try to prove that one end of a limit is not reached anywhere on {V <= level}."""
@@ -129,6 +140,14 @@ class LevelProver:
     @cached_property
     def _root(self) -> EquilibriumEnclosure | None:
         return enclose_equilibrium(self._V.loop, self._V.centre)
+
+    @cached_property
+    def _radial(self) -> Radial | None:
+        """V̇ along every direction, where the loop is cubic, rests at a float exactly, and has states enough to gain."""
+        root = self._root
+        if self._n < RADIAL or root is None or np.any(root.x.low != root.x.high):
+            return None
+        return radial(self._V, root.x.low, self._T)
 
     @cached_property
     def _T(self) -> Array:

@@ -219,10 +219,14 @@ def test_derived_contact_level_says_what_is_proved_and_what_is_estimated():
 
 
 def test_what_cannot_be_proved_at_the_top_is_proved_further_down():
-    """A ball: the attempts near the top run out of boxes."""
+    """A ball, with functions in place of the numbers: the attempts near the top run out of boxes."""
     given = configuration(
         ["x", "y", "z"],
-        ["y - (1 - x**2 - y**2 - z**2)*x", "-x - (1 - x**2 - y**2 - z**2)*y", "-(1 - x**2 - y**2 - z**2)*z"],
+        [
+            "y - (cos(0) - x**2 - y**2 - z**2)*x",
+            "-x - (cos(0) - x**2 - y**2 - z**2)*y",
+            "-(cos(0) - x**2 - y**2 - z**2)*z",
+        ],
         [(-1.2, 1.2)] * 3,
         bound="P = [[1, 0, 0], [0, 1, 0], [0, 0, 1]]",
     )
