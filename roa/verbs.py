@@ -340,6 +340,7 @@ def _samples_of(folder: RunFolder) -> Samples:
 def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int | None, figures: bool) -> Result:
     """Judge what the folder holds; write verdict, figures and report."""
     from roa.basin.provenance import provenance
+    from roa.basin.sensitivity import sensitivity
     from roa.basin.verdict import conclude, exit_code
     from roa.report.draw import draw_figures
     from roa.report.html import write_report
@@ -354,6 +355,7 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
         target=prepared.target,
         samples=samples,
         claim=claim,
+        sensitive=sensitivity(samples, prepared.simulate_tighter, prepared.configuration.verdict.confidence),
     )
     _write_verdict(folder, verdict)
     if figures:

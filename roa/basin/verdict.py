@@ -15,6 +15,7 @@ from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
 from roa.basin.ladder import bracket, ladder
 from roa.basin.levels import Levels, by_level
+from roa.basin.sensitivity import Sensitivity
 from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
@@ -46,6 +47,7 @@ def conclude(
     target: Target | None = None,
     samples: Samples | None = None,
     claim: Claim | None = None,
+    sensitive: Sensitivity | None = None,
 ) -> dict[str, Any]:
     """Measure what the samples say, put it beside bounds and claim, and return the verdict.
 
@@ -59,6 +61,7 @@ def conclude(
     target : what entering meant, where something was simulated
     samples : of the sweep, if there was one
     claim : judged, if one was
+    sensitive : how many outcomes hang on the tolerance, where that was tried
     """
     confidence = configuration.verdict.confidence
     basin = levels = None
@@ -94,6 +97,7 @@ def conclude(
         "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
+        "sensitivity": None if sensitive is None else _sensitivity(sensitive),
         "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
@@ -101,6 +105,17 @@ def conclude(
     verdict["ladder"] = ladder(verdict["bounds"], verdict["basin"])
     plain: dict[str, Any] = _plain(verdict)
     return plain
+
+
+def _sensitivity(sensitive: Sensitivity) -> dict[str, Any]:
+    return {
+        "tried": sensitive.tried,
+        "changed": sensitive.changed,
+        "changes": sensitive.changes,
+        "first": sensitive.first,
+        "share_upper": sensitive.upper,
+        "strength": Strength.SIMULATED,
+    }
 
 
 def _claim(claim: Claim) -> dict[str, Any]:

@@ -79,6 +79,14 @@ def _outcomes(verdict: Verdict) -> str:
         return ""
     lines = [f"{'Outcomes':<22}{'starts':>14}{'share':>12}"]
     lines += [f"  {row.word:<20}{row.count:>14}{row.share:>12}   simulated" for row in rows]
+    if tried := verdict.get("sensitivity"):
+        lines += wrap(
+            f"Step-sensitive: of the first {tried['tried']:,} starts a tolerance ten times tighter changes the outcome "
+            f"of {tried['changed']:,} (simulated).",
+            WIDTH,
+            initial_indent="  ",
+            subsequent_indent="  ",
+        )
     if safe := verdict["basin"].get("safe"):
         share = share_with_interval(
             safe["fraction"], tuple(safe["interval"]), verdict["basin"]["confidence"], "simulated"
