@@ -105,12 +105,16 @@ def resume(
     command: str = "roa.resume",
 ) -> Result:  # fmt: skip
     """Carry on a sweep that stopped, or extend one that is done, then conclude it as `run` does."""
+    from roa.sweep.finished import is_done
     from roa.sweep.means import Means
 
     means = Means.granted(jobs, hours, executor, command)
     with resumable_by(f"roa resume {shlex.quote(str(run))}"):
+        was_done = is_done(_existing(run), samples)
         prepared, folder = _stored(run, samples, progress, jobs=jobs)
-        return _launched(prepared, folder, means, progress, figures=True)
+        result = _launched(prepared, folder, means, progress, figures=True)
+    note = "the sweep was done already and is left as it is; concluded again from what is stored"
+    return replace(result, note=note) if was_done else result
 
 
 def status(run: str | Path) -> Result:

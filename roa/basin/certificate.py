@@ -22,10 +22,11 @@ def certificate(configuration: Configuration, bounds: Bounds, claim: Claim | Non
     """The certificate of the claim, where V̇ < 0 is proved for it, else of the largest proved bound.
 
     None where neither is about a quadratic V: what rests on an invariance argument or a formula is not written yet,
-    nor what is proved of a loop with a hold.
+    nor what is proved of a loop with a hold, limits or look-up tables.
     """
     table = configuration.bound
-    if configuration.loop.hold is not None:
+    loop = configuration.loop
+    if loop.hold is not None or loop.tables or loop.limits:
         return None
     if claim is not None and claim.result is Result.PROVED:
         assert table.level is not None
