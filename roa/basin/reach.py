@@ -76,7 +76,11 @@ def _refuting(outcomes: NDArray[np.uint8]) -> tuple[str, ...]:
     count = int(np.isin(outcomes, [int(outcome) for outcome in REFUTING]).sum())
     if not count:
         return ()
-    starts = "a timed start inside the claimed set does" if count == 1 else f"{count} timed starts inside it do"
+    starts = (
+        "a timed start inside the claimed set does"
+        if count == 1
+        else f"{count} or more timed starts inside the claimed set do"
+    )
     return (f"{starts} not come back, and one that is confirmed refutes it; a smaller level is needed (simulated)",)
 
 
@@ -89,7 +93,7 @@ def _too_many_failures(reach: Reach, fraction: float, confidence: float) -> tupl
         return ()
     return (
         f"of {reach.inside:,} timed starts inside the claimed set {reach.failing:,} did not converge, at least "
-        f"{100 * least:.3g} % of the set; [verdict] fraction = {fraction:g} allows {100 * (1 - fraction):.3g} %: "
+        f"{100 * least:.3g} % of the set; [verdict] fraction = {fraction:.9g} allows {100 * (1 - fraction):.3g} %: "
         "a smaller level, a longer horizon or a smaller fraction is needed (estimated)",
     )
 

@@ -82,7 +82,7 @@ def _claim(plan: Plan, reach: Reach | None) -> list[str]:
     return [
         "",
         f"Claim        supported: {reach.draws:,} independent draws, none of which may fail",
-        f"             ([verdict] fraction = {verdict.fraction:g}, confidence = {verdict.confidence:g})",
+        f"             ([verdict] fraction = {verdict.fraction:.9g}, confidence = {verdict.confidence:g})",
         *(line for obstacle in reach.obstacles for line in _wrapped(f"out of reach: {obstacle}")),
     ]
 
