@@ -141,7 +141,7 @@ def judge(
     V = ball_function(bounds.V, configuration.bound.scale) if ball else bounds.V
     case = _Case(configuration, ClaimedSet(V, _at_most(level)), target, integration, run, seed, level)
     if ball and not configuration.loop.disturbances:
-        return _leaves_the_domain(case) or _proved_ball(case, bounds) or _by_simulation(case)
+        return _leaves_the_domain(case) or _crosses_a_limit(case) or _proved_ball(case, bounds) or _by_simulation(case)
     if configuration.bound.inner is not None or configuration.loop.disturbances:
         return (
             _not_positive_definite(case)
@@ -178,18 +178,18 @@ class _Case:
     def witness(self) -> Array | None:
         """A point of the set with V̇ > 0, if one was found.
 
-        With a hold: a start after which V is greater one period later. Not looked for where a ring is claimed.
+        With a hold: a start after which V is greater one period later. Not looked for where a ring is claimed, nor
+        for a ball with a hold.
         """
-        if self.configuration.bound.inner is not None:
+        table = self.configuration.bound
+        if table.inner is not None or (table.ball is not None and self.configuration.loop.hold is not None):
             return None
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
 
     @cached_property
     def limits(self) -> LimitsOfSet:
         """What is known of the limits on the set."""
-        level = self.configuration.bound.level
-        assert level is not None
-        return limits_of(self.claimed, level, self.stream(LIMITS_STREAM))
+        return limits_of(self.claimed, self.level, self.stream(LIMITS_STREAM))
 
     @property
     def decrease(self) -> Decrease:
@@ -309,18 +309,19 @@ def _proved_ball(case: _Case, bounds: Bounds) -> Claim | None:
     """Prove a claimed ball by a proved set that holds it, or by V = the squared distance itself."""
     V = case.claimed.V
     assert isinstance(V, Quadratic)
-    for bound in bounds.stated:
-        proved = bound.strength is Strength.PROVED and bound.inner is None and isinstance(bound.V, Quadratic)
+    loop = case.configuration.loop
+    for bound in bounds.stated if not loop.limits else ():  # the set may cross a limit that the ball does not
+        proved = bound.strength is Strength.PROVED and bound.inner is None
         if proved and isinstance(bound.V, Quadratic) and holds_ellipsoid(bound.V, bound.level, V, case.level):
             reason = f"The ball lies in the set of the {bound.name}, V <= {bound.level:.6g}, whose proof holds for it: "
             return case.judged(Result.PROVED, Decrease.PROVED, f"{reason}{bound.note or 'V̇ < 0 there'}.")
-    if case.configuration.loop.hold is not None or case.witness is not None:
+    if loop.hold is not None or case.witness is not None or not case.limits.kept:
         return None
     prover = prover_of(V)
     proof = prover.prove(case.level, proof_budget(prover)) if prover.is_ready else None
     if proof is None or proof.answer is not Answer.PROVED:
         return None
-    reason = f"With the squared distance from the equilibrium as V, {branch_and_bound(proof)} on the whole ball."
+    reason = f"With the squared distance from the equilibrium as V, {branch_and_bound(V, proof)} on the whole ball."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
 
 

@@ -238,6 +238,9 @@ class Configuration:
             "equilibrium": [decimal_text(value) for value in loop.guess],
             **_resolved_hold(loop.hold),
             "domain": [[decimal_text(low), decimal_text(high)] for low, high in loop.domain],
+            "limits": {
+                name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.limits.items())
+            },
             "disturbance": {
                 name: [decimal_text(low), decimal_text(high)] for name, (low, high) in sorted(loop.disturbances.items())
             },
