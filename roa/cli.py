@@ -23,9 +23,6 @@ if TYPE_CHECKING:
 WATCH = 5.0
 USAGE_ERROR, MACHINE_FAILED, INTERRUPTED = 2, 4, 130
 
-# Part of the contract, refused by name until it is there.
-NOT_YET = ("--cluster",)
-
 EXIT_CODES = """\
 exit codes
   0    done; for a claim: proved, or supported where the configuration accepts that
@@ -48,11 +45,9 @@ class _Parser(argparse.ArgumentParser):
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run the command line and return its exit code."""
     given = sys.argv[1:] if arguments is None else list(arguments)
-    for word in given:
-        what = word.partition("=")[0]
-        if what in NOT_YET and (what.startswith("-") or what == given[0]):
-            print(f"roa: {what}: not yet supported by this version; leave it out", file=sys.stderr)
-            return USAGE_ERROR
+    if any(word.partition("=")[0] == "--cluster" for word in given):
+        print("roa: --cluster: not yet supported by this version; leave it out", file=sys.stderr)
+        return USAGE_ERROR
     options = vars(_parser().parse_args(given))
     if options.get("watch") and options["json"]:
         print(
@@ -210,8 +205,8 @@ _OPTIONS: dict[str, dict[str, Any]] = {
     },
     "--executor": {
         "metavar": "NAME",
-        "choices": ("serial", "threads", "processes", "cluster"),
-        "help": "how blocks are spread: serial, threads, processes, cluster (default: threads)",
+        "choices": ("serial", "threads", "processes"),
+        "help": "how blocks are spread: serial, threads, processes (default: threads)",
     },
     "--samples": {
         "metavar": "N",

@@ -94,6 +94,20 @@ class Preparation:
         return derive_bounds(self.configuration, self.equilibrium, self.progress.say)
 
     @cached_property
+    def all_bounds(self) -> Bounds:
+        """The bounds, with those that are searched for by means of simulation."""
+        from dataclasses import replace
+
+        from roa.bound.searched_bounds import search_bounds
+        from roa.kernel.lanes import compile_lanes
+
+        if not self.configuration.searches or self.configuration.loop.hold is not None:
+            return self.bounds
+        within = replace(self.integration, escape=1.0)
+        lanes = compile_lanes(self.configuration.loop, self.target, within)
+        return search_bounds(self.configuration, self.equilibrium, self.bounds, lanes.run, self.progress.say)
+
+    @cached_property
     def pilot(self) -> Pilot:
         """A few trajectories that show where else the loop comes to rest."""
         from roa.kernel.lanes import are_compiled
@@ -169,15 +183,20 @@ class Preparation:
 
     def evidence(self, verdict: Mapping[str, Any], samples: Samples) -> Evidence:
         """What the figures of a run are drawn from."""
+        from roa.report.evidence import Evidence
+
+        return Evidence(self.configuration, verdict, samples, self.simulate, self.simulate_tighter)
+
+    @cached_property
+    def simulate_tighter(self) -> Callable[[NDArray[np.float64]], Trajectories]:
+        """What turns starts into outcomes at tolerances ten times tighter; the code is the same."""
         from dataclasses import replace
 
         from roa.kernel.lanes import compile_lanes
-        from roa.report.evidence import Evidence
 
         loose = self.integration
         tight = replace(loose, rtol=loose.rtol / 10, atol=loose.atol / 10)
-        tighter = compile_lanes(self.configuration.loop, self.target, tight)
-        return Evidence(self.configuration, verdict, samples, self.simulate, self._on_all_jobs(tighter))
+        return self._on_all_jobs(compile_lanes(self.configuration.loop, self.target, tight))
 
     def claim(self) -> Claim | None:
         """Judge the claimed level, where there is one."""

@@ -77,37 +77,37 @@ def check(
 
 def run(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
-    seed: int | None = None, hours: float | None = None, cluster: str | None = None, executor: str | None = None,
+    seed: int | None = None, hours: float | None = None, executor: str | None = None,
     quick: bool = False, progress: Progress | None = None, command: str = "roa.run",
 ) -> Result:  # fmt: skip
     """Do the whole job: bound, sweep, comparison, figures, report, verdict."""
     from roa.sweep.means import Means
 
-    means = Means.granted(jobs, hours, cluster, executor, command)
+    means = Means.granted(jobs, hours, executor, command)
     return _swept(config, out, samples, seed, means, quick, progress, figures=True)
 
 
 def sweep(
     config: str | Path, out: str | Path | None = None, jobs: int | None = None, samples: int | None = None,
-    seed: int | None = None, hours: float | None = None, cluster: str | None = None, executor: str | None = None,
+    seed: int | None = None, hours: float | None = None, executor: str | None = None,
     quick: bool = False, progress: Progress | None = None, command: str = "roa.sweep",
 ) -> Result:  # fmt: skip
     """Do the simulation alone, with its counts and the bounds that it took its target set from."""
     from roa.sweep.means import Means
 
-    means = Means.granted(jobs, hours, cluster, executor, command)
+    means = Means.granted(jobs, hours, executor, command)
     return _swept(config, out, samples, seed, means, quick, progress, figures=False)
 
 
 def resume(
     run: str | Path, samples: int | None = None, jobs: int | None = None, hours: float | None = None,
-    cluster: str | None = None, executor: str | None = None, progress: Progress | None = None,
+    executor: str | None = None, progress: Progress | None = None,
     command: str = "roa.resume",
 ) -> Result:  # fmt: skip
     """Carry on a sweep that stopped, or extend one that is done, then conclude it as `run` does."""
     from roa.sweep.means import Means
 
-    means = Means.granted(jobs, hours, cluster, executor, command)
+    means = Means.granted(jobs, hours, executor, command)
     with resumable_by(f"roa resume {shlex.quote(str(run))}"):
         prepared, folder = _stored(run, samples, progress, jobs=jobs)
         return _launched(prepared, folder, means, progress, figures=True)
@@ -138,7 +138,7 @@ def bound(
     folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress, jobs, quick)
     verdict = conclude(
-        prepared.configuration, prepared.equilibrium, prepared.bounds, provenance(command, prepared.seed, jobs=jobs)
+        prepared.configuration, prepared.equilibrium, prepared.all_bounds, provenance(command, prepared.seed, jobs=jobs)
     )
     return _written(prepared.configuration, verdict, folder, 0)
 
@@ -337,6 +337,7 @@ def _samples_of(folder: RunFolder) -> Samples:
 def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int | None, figures: bool) -> Result:
     """Judge what the folder holds; write verdict, figures and report."""
     from roa.basin.provenance import provenance
+    from roa.basin.sensitivity import sensitivity
     from roa.basin.verdict import conclude, exit_code
     from roa.report.draw import draw_figures
     from roa.report.html import write_report
@@ -346,11 +347,12 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
     verdict = conclude(
         prepared.configuration,
         prepared.equilibrium,
-        prepared.bounds,
+        prepared.all_bounds if figures else prepared.bounds,
         provenance(command, prepared.seed, samples.n, jobs, plan.fingerprint),
         target=prepared.target,
         samples=samples,
         claim=claim,
+        sensitive=sensitivity(samples, prepared.simulate_tighter, prepared.configuration.verdict.confidence),
     )
     _write_verdict(folder, verdict)
     if figures:

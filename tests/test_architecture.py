@@ -24,9 +24,9 @@ OWNERS = {
     "llvmlite": ("roa/kernel/",),
     "sympy": ("roa/loop/",),
     "h5py": ("roa/sweep/store.py",),
-    "joblib": ("roa/sweep/executors/threads.py",),
-    "dask": ("roa/sweep/executors/dask.py",),
-    "distributed": ("roa/sweep/executors/dask.py",),
+    "joblib": ("roa/sweep/executors/threads.py", "roa/sweep/executors/processes.py"),
+    "dask": ("roa/sweep/executors/cluster.py",),
+    "distributed": ("roa/sweep/executors/cluster.py",),
     "rich": ("roa/sweep/progress.py", "roa/report/"),
     "matplotlib": ("roa/report/",),
 }

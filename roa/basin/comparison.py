@@ -64,7 +64,7 @@ def compare(bounds: Sequence[Bound], basin: Basin, samples: Samples) -> tuple[Co
     shares = {bound.name: Share(*evenly) for bound in sampled}
     for first, starts in _spread_evenly(samples, basin.loop) if sampled else ():
         for bound in sampled:
-            shares[bound.name].add(first, bound.V.value(starts) <= bound.level)
+            shares[bound.name].add(first, bound.holds(starts))
     return tuple(_comparison(bound, shares.get(bound.name), basin) for bound in bounds)
 
 

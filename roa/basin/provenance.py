@@ -4,14 +4,9 @@ from __future__ import annotations
 
 import platform
 from datetime import UTC, datetime
-from importlib.metadata import version
-from pathlib import Path
 from typing import Any
 
-from roa import __version__
-
-# Packages whose arithmetic or file format shows in a verdict.
-PACKAGES = ("numpy", "scipy", "numba", "h5py", "sympy")
+from roa.sweep.origin import code_state, processor, versions
 
 
 def provenance(
@@ -34,19 +29,6 @@ def provenance(
         "fingerprint": fingerprint,
         "processor": processor(),
         "platform": platform.platform(),
-        "versions": {
-            "roa": __version__,
-            "python": platform.python_version(),
-            **{package: version(package) for package in PACKAGES},
-        },
+        "versions": versions(),
+        "code": code_state(),
     }
-
-
-def processor() -> str:
-    """Name of the processor: results agree bit for bit on one kind of processor."""
-    cpuinfo = Path("/proc/cpuinfo")  # the only place with the full name; platform.processor() is often empty there
-    if cpuinfo.is_file():
-        for line in cpuinfo.read_text(encoding="utf-8", errors="replace").splitlines():
-            if line.lower().startswith("model name"):
-                return line.partition(":")[2].strip()
-    return platform.processor() or platform.machine()

@@ -13,13 +13,15 @@ from roa.basin.certificate import certificate
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
 from roa.basin.intervals import Interval
+from roa.basin.ladder import bracket, ladder
 from roa.basin.levels import Levels, by_level
+from roa.basin.sensitivity import Sensitivity
 from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
 from roa.bound.lyapunov_function import Quadratic
-from roa.bound.statement import Bound, Strength
-from roa.bound.volume import volume_inside
+from roa.bound.statement import OUTER, Bound, Strength
+from roa.bound.volume import volume_of
 from roa.kernel.target import Target
 from roa.loop.configuration import Configuration
 from roa.loop.equilibrium import Equilibrium
@@ -45,6 +47,7 @@ def conclude(
     target: Target | None = None,
     samples: Samples | None = None,
     claim: Claim | None = None,
+    sensitive: Sensitivity | None = None,
 ) -> dict[str, Any]:
     """Measure what the samples say, put it beside bounds and claim, and return the verdict.
 
@@ -58,6 +61,7 @@ def conclude(
     target : what entering meant, where something was simulated
     samples : of the sweep, if there was one
     claim : judged, if one was
+    sensitive : how many outcomes hang on the tolerance, where that was tried
     """
     confidence = configuration.verdict.confidence
     basin = levels = None
@@ -72,7 +76,7 @@ def conclude(
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
     by_name = {comparison.bound.name: comparison for comparison in comparisons}
     loop = configuration.loop
-    verdict = {
+    verdict: dict[str, Any] = {
         "title": loop.title,
         "states": loop.states,
         "units": loop.units,
@@ -88,14 +92,30 @@ def conclude(
         "bounds_note": bounds.note,
         "basin": None if basin is None else _basin(basin),
         "comparison": _comparison(stated, claim, by_name),
+        "bracket": None,
+        "ladder": None,
         "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
+        "sensitivity": None if sensitive is None else _sensitivity(sensitive),
         "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
+    verdict["bracket"] = bracket(verdict["bounds"], verdict["basin"], loop.domain_volume)
+    verdict["ladder"] = ladder(verdict["bounds"], verdict["basin"])
     plain: dict[str, Any] = _plain(verdict)
     return plain
+
+
+def _sensitivity(sensitive: Sensitivity) -> dict[str, Any]:
+    return {
+        "tried": sensitive.tried,
+        "changed": sensitive.changed,
+        "changes": sensitive.changes,
+        "first": sensitive.first,
+        "share_upper": sensitive.upper,
+        "strength": Strength.SIMULATED,
+    }
 
 
 def _claim(claim: Claim) -> dict[str, Any]:
@@ -139,7 +159,7 @@ def _bound(bound: Bound, comparison: Comparison | None) -> dict[str, Any]:
         "strength": bound.strength,
         "note": bound.note,
         **_function(bound),
-        "volume": volume_inside(bound.V, bound.level) if comparison is None else comparison.volume,
+        "volume": volume_of(bound) if comparison is None else comparison.volume,
         "volume_interval": _ends(None if comparison is None else comparison.volume_interval),
         "volume_strength": Strength.ESTIMATED,
         **_ratios_flat(comparison),
@@ -201,7 +221,7 @@ def _comparison(stated: Sequence[Bound], claim: Claim | None, by_name: Mapping[s
     proved = [
         by_name[bound.name]
         for bound in stated
-        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name
+        if bound.strength is Strength.PROVED and bound.inner is None and bound.name in by_name and bound.name != OUTER
     ]
     compared = by_name.get("claim") if claim else max(proved, key=lambda one: one.volume, default=None)
     return {

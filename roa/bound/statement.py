@@ -8,7 +8,10 @@ from enum import StrEnum
 import numpy as np
 from numpy.typing import NDArray
 
-from roa.bound.lyapunov_function import LyapunovFunction
+from roa.bound.lyapunov_function import FormulaV, LyapunovFunction
+
+OUTER = "no-return set"  # the one bound that says what does not converge
+SEEN_THROUGH = 24  # points on the line from the equilibrium
 
 
 class Strength(StrEnum):
@@ -44,3 +47,18 @@ class Bound:
     contact: NDArray[np.float64] | None = None
     level_estimated: float | None = None
     inner: float | None = None
+
+    def holds(self, x: NDArray[np.float64]) -> NDArray[np.bool_]:
+        """Which of the points x, float64 (m, n), are in the set, bool (m,).
+
+        Of a formula only the part counts that the equilibrium sees along straight lines: {V <= level} may have others,
+        of which nothing is said. The no-return set is told by the level alone.
+        """
+        inside = np.asarray(self.V.value(x) <= self.level)
+        if self.name == OUTER or not isinstance(self.V, FormulaV):
+            return inside
+        centre = self.V.centre
+        for share in np.linspace(0.0, 1.0, SEEN_THROUGH + 2)[1:-1]:
+            rows = np.flatnonzero(inside)
+            inside[rows] = self.V.value(centre + share * (x[rows] - centre)) <= self.level
+        return inside

@@ -10,6 +10,7 @@ from scipy.special import ndtri
 from scipy.stats import qmc
 
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
+from roa.bound.statement import Bound
 
 Array = NDArray[np.float64]
 
@@ -40,6 +41,15 @@ def fits_domain(V: LyapunovFunction, level: float) -> bool:
         return False
     extents, box = half_extents(V.P, level), V.loop.box
     return bool(np.all((V.centre - extents >= box[:, 0]) & (V.centre + extents <= box[:, 1])))
+
+
+def volume_of(bound: Bound) -> float:
+    """Volume of a bound's set inside the domain, product of the state units."""
+    if isinstance(bound.V, Quadratic):
+        return volume_inside(bound.V, bound.level)
+    loop = bound.V.loop
+    points = qmc.scale(_sobol(loop.n), loop.box[:, 0], loop.box[:, 1])
+    return loop.domain_volume * float(np.mean(bound.holds(points))) if bound.level > 0 else 0.0
 
 
 def volume_inside(V: LyapunovFunction, level: float) -> float:

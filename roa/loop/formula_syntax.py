@@ -13,8 +13,8 @@ from dataclasses import dataclass
 
 from roa.loop.wording import shortened
 
-LONGEST = 2000  # characters
-MOST_NODES = 2000
+LONGEST = 8000  # characters
+MOST_NODES = 6000
 DEEPEST = 50  # Python's own recursion limit stays far away
 ACCEPTED = "accepted are + - * / **, brackets, numbers, names and the listed functions"
 

@@ -77,7 +77,7 @@ def _basin_sentence(verdict: Verdict) -> str:
 
 def _bounds_sentence(verdict: Verdict) -> str:
     # The unfalsified level is no bound to rely on, but what the samples leave of V.
-    bounds = [bound for bound in verdict["bounds"] if bound["name"] != "unfalsified level"]
+    bounds = [bound for bound in verdict["bounds"] if bound["name"] not in ("unfalsified level", "no-return set")]
     found = [bound for bound in bounds if bound["level"] > 0]
     if not found:
         return f"No bound above level zero was found for this V (estimated). {verdict['bounds_note']}".rstrip()

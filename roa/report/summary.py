@@ -7,7 +7,7 @@ from textwrap import wrap
 
 from roa.report.answer import Verdict, answer, next_steps
 from roa.report.tables import bound_rows, outcome_rows
-from roa.report.wording import number, share_with_interval
+from roa.report.wording import number, percent, share_with_interval
 
 WIDTH = 80
 
@@ -45,8 +45,32 @@ def _bounds(verdict: Verdict) -> str:
             lines += wrap(f"{words} ({bound['strength']})", WIDTH, initial_indent="  ", subsequent_indent="    ")
     if verdict["basin"]:
         lines.append("  Volume and radius in parts of those of the simulated basin (simulated).")
+    lines += [*_bracket(verdict), *_slack(verdict)]
     lines += wrap(verdict["bounds_note"], WIDTH, initial_indent="  ", subsequent_indent="  ")
     return "\n".join(lines)
+
+
+def _bracket(verdict: Verdict) -> list[str]:
+    found = verdict.get("bracket")
+    if not found:
+        return []
+    words = (
+        f"Bracket: proved to converge {percent(found['inside']['share'], 2)}, proved not to converge without leaving "
+        f"the domain {percent(found['outside']['share'], 2)} (volumes estimated)"
+    )
+    if found["simulated"] is not None:
+        words += (
+            f", simulated basin {percent(found['simulated'], 2)} of the domain; the gap is "
+            f"{percent(max(found['gap_inside'], 0.0), 2)} inside the simulated edge and "
+            f"{percent(max(found['gap_outside'], 0.0), 2)} outside"
+        )
+    return wrap(f"{words}.", WIDTH, initial_indent="  ", subsequent_indent="  ")
+
+
+def _slack(verdict: Verdict) -> list[str]:
+    found = verdict.get("ladder")
+    sentence = found["costs_most"] if found else ""
+    return wrap(f"{sentence} (simulated)", WIDTH, initial_indent="  ", subsequent_indent="  ") if sentence else []
 
 
 def _outcomes(verdict: Verdict) -> str:
@@ -55,6 +79,14 @@ def _outcomes(verdict: Verdict) -> str:
         return ""
     lines = [f"{'Outcomes':<22}{'starts':>14}{'share':>12}"]
     lines += [f"  {row.word:<20}{row.count:>14}{row.share:>12}   simulated" for row in rows]
+    if tried := verdict.get("sensitivity"):
+        lines += wrap(
+            f"Step-sensitive: of the first {tried['tried']:,} starts a tolerance ten times tighter changes the outcome "
+            f"of {tried['changed']:,} (simulated).",
+            WIDTH,
+            initial_indent="  ",
+            subsequent_indent="  ",
+        )
     if safe := verdict["basin"].get("safe"):
         share = share_with_interval(
             safe["fraction"], tuple(safe["interval"]), verdict["basin"]["confidence"], "simulated"

@@ -12,6 +12,9 @@ from roa.sweep.means import Means
 from roa.sweep.simulation import Simulation
 from roa.sweep.stop import StopRequest
 
+# Executors whose workers are this process.
+WITHIN = ("serial", "threads")
+
 
 class Crew:
     """Workers of one kind.
@@ -25,7 +28,7 @@ class Crew:
     def __init__(self, name: str, jobs: int) -> None:
         self._name = name
         self._jobs = jobs
-        self.words = f"{jobs} at a time" + ("" if name in ("serial", "threads") else f" on {name}")
+        self.words = f"{jobs} at a time" + ("" if name in WITHIN else f" on {name}")
         self.failed: list[str] = []
 
     @classmethod
@@ -60,7 +63,11 @@ class Crew:
         self, simulation: Simulation, blocks: list[Block], stop: StopRequest, jobs: int
     ) -> Iterator[tuple[Block, executors.Result]]:
         run = executors.load(self._name)
-        yield from run(partial(_unless, stop, simulation), _until(stop, blocks), jobs)
+        if self._name in WITHIN:
+            yield from run(partial(_unless, stop, simulation), _until(stop, blocks), jobs)
+            return
+        for block, result in run(simulation.elsewhere, _until(stop, blocks), jobs, lambda: stop.impatient):
+            yield block, simulation.received(block, result) if isinstance(result, dict) else result
 
     def _give_up(self, block: Block, error: Exception, say: Callable[[str], None]) -> None:
         self.failed.append(f"{block} failed twice ({type(error).__name__}: {error})")

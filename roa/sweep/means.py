@@ -20,14 +20,12 @@ class Means:
     ----------
     jobs : workers, >= 1; None for as many as this process may use processors
     executor : name of a file in `roa/sweep/executors/`; None where it follows from the others
-    cluster : address of a scheduler, or "local"; None for this machine alone
     deadline : of the sweep, by the monotonic clock, s; None where time does not matter
     command : as it was given, for the record
     """
 
     jobs: int | None = None
     executor: str | None = None
-    cluster: str | None = None
     deadline: float | None = None
     command: str = ""
 
@@ -36,7 +34,6 @@ class Means:
         cls,
         jobs: int | None = None,
         hours: float | None = None,
-        cluster: str | None = None,
         executor: str | None = None,
         command: str = "",
     ) -> Means:
@@ -52,14 +49,10 @@ class Means:
             faults.append(f"--jobs {jobs}: must be at least 1")
         if hours is not None and not (math.isfinite(hours) and hours > 0):
             faults.append(f"--hours {hours:g}: must be a number above 0, such as 7.5")
-        if cluster is not None and executor not in (None, "cluster"):
-            faults.append(f"--cluster {cluster}: does not go with --executor {executor}; give one of the two")
-        if executor == "cluster" and cluster is None:
-            faults.append("--executor cluster: needs --cluster ADDRESS or --cluster local")
         if faults:
             raise UserError(faults)
         deadline = None if hours is None else time.monotonic() + working_seconds(hours)
-        return cls(jobs, executor, cluster, deadline, command)
+        return cls(jobs, executor, deadline, command)
 
 
 def working_seconds(hours: float) -> float:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from typing import Any, Protocol
 
 import numpy as np
@@ -15,6 +15,7 @@ from roa.kernel.target import Target
 from roa.kernel.trajectories import Trajectories
 from roa.loop.model import Loop
 from roa.sweep.block import Block
+from roa.sweep.kept import KEPT, completed
 from roa.sweep.plan import Plan
 from roa.sweep.portions import Portions
 from roa.sweep.rounds import Drawn
@@ -44,6 +45,7 @@ class Simulation:
         self._loop: Loop = plan.configuration.loop
         self._target: Target = plan.target
         self._integration: Integration = plan.integration
+        self._kept = plan.configuration.sweep.store
         self.drawn = drawn
         self._begin(lanes)
 
@@ -57,6 +59,16 @@ class Simulation:
     def __setstate__(self, state: dict[str, Any]) -> None:
         self.__dict__.update(state)
         self._begin(None)
+
+    def elsewhere(self, block: Block) -> dict[str, NDArray[Any]]:
+        """Run a block outside this process; return what has to come back: not the starts, nor what is not kept."""
+        rows = self(block)
+        assert rows is not None
+        return {name: getattr(rows, name) for name in KEPT[self._kept] if name != "initial"}
+
+    def received(self, block: Block, columns: Mapping[str, NDArray[Any]]) -> Trajectories:
+        """Return the rows of a block from what came back."""
+        return completed(columns, lambda: self.drawn.points(block.first, block.count))
 
     def __call__(self, block: Block, given_up: Callable[[], bool] = lambda: False) -> Trajectories | None:
         """Run a block; None where `given_up` became true before its end."""

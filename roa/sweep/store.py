@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import fields
 from pathlib import Path
@@ -24,7 +24,7 @@ from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.trajectories import Trajectories
 from roa.sweep.block import Block
 from roa.sweep.header import Header
-from roa.sweep.kept import KEPT
+from roa.sweep.kept import KEPT, completed
 from roa.sweep.run_folder import written_aside
 from roa.sweep.samples import Samples, Stretch
 from roa.sweep.starts import starts_of
@@ -220,16 +220,7 @@ def as_rows(columns: Columns, header: Header, first: int) -> Trajectories:
 
     Starts that are not stored are made again; what else is not is NaN, -1 step, and no reason.
     """
-    m, n = len(columns["outcome"]), len(header.states)
-    nothing = np.broadcast_to(np.nan, (m, n))
-    missing: dict[str, Callable[[], NDArray[Any]]] = {
-        "initial": lambda: starts_of(header)(first, m),
-        "final": lambda: nothing,
-        "peak": lambda: nothing,
-        "steps": lambda: np.broadcast_to(np.int32(-1), (m,)),
-        "reason": lambda: np.zeros(m, np.uint8),
-    }
-    return Trajectories(**columns, **{name: make() for name, make in missing.items() if name not in columns})
+    return completed(columns, lambda: starts_of(header)(first, len(columns["outcome"])))
 
 
 def _read_back(aside: Path, path: Path, names: Sequence[str]) -> None:

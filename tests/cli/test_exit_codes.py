@@ -204,7 +204,8 @@ def test_wrong_input_is_one_sentence(write, tmp_path, capsys, case):
 
 WRONG_COMMANDS = [
     "status x",
-    "sweep x.toml --hours 3",
+    "sweep x.toml --hours 0",
+    "sweep x.toml --executor cluster",
     "run x.toml --cluster=a",
     "run",
     "fly",

@@ -14,7 +14,7 @@ SAMPLES = 16384
 def verdicts(tmp_path_factory):
     folder = tmp_path_factory.mktemp("runs")
     found = {}
-    for name in ("mast", "van_der_pol", "cart", "mast_digital"):
+    for name in ("mast", "van_der_pol", "cart", "mast_digital", "tracker"):
         result = verbs.run(CONFIGS / f"{name}.toml", out=folder / name, samples=SAMPLES)
         assert result.exit_code == 0
         found[name] = result.document
@@ -26,7 +26,7 @@ def bound_named(verdict, name):
 
 
 def test_every_configuration_is_covered():
-    assert {path.stem for path in CONFIGS.glob("*.toml")} == {"mast", "van_der_pol", "cart", "mast_digital"}
+    assert {path.stem for path in CONFIGS.glob("*.toml")} == {"mast", "van_der_pol", "cart", "mast_digital", "tracker"}
 
 
 def test_mast(verdicts):
@@ -83,6 +83,16 @@ def test_mast_digital(verdicts):
     assert 0.99 < contact["level"] / contact["level_estimated"] < 1
     assert contact["level"] < bound_named(verdict, "unfalsified level")["level"]
     assert "ball" in verdict["target"]
+
+
+def test_tracker(verdicts):
+    # A fixed-step Runge–Kutta simulation with scipy's PchipInterpolator on a grid of 160 by 160 cells: 0.518.
+    verdict = verdicts["tracker"]
+    assert verdict["basin"]["fraction"] == pytest.approx(0.518, abs=0.006)
+    assert verdict["basin"]["counts"]["failed"] == 0
+    contact = bound_named(verdict, "contact level")
+    assert contact["strength"] == "proved"
+    assert contact["level"] > 0.99 * contact["level_estimated"]
 
 
 @pytest.mark.parametrize("name", ["mast", "van_der_pol", "cart"])

@@ -312,6 +312,7 @@ PACKED = {
     "van_der_pol": lambda: read(CONFIGS / "van_der_pol.toml").loop,
     "mast": lambda: read(CONFIGS / "mast.toml").loop,
     "cart": lambda: read(CONFIGS / "cart.toml").loop,
+    "tracker": lambda: read(CONFIGS / "tracker.toml").loop,
     "mast_digital": lambda: read(CONFIGS / "mast_digital.toml").loop,
 }
 

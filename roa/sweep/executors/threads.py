@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import threading
 from collections import deque
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 
 import joblib
 
 from roa.sweep.block import Block
-from roa.sweep.executors import Result, Task, attempt
+from roa.sweep.executors import Result, Task, attempt, never
 
 # Blocks handed out for each worker: one at work and one waiting, so that no worker idles.
 AHEAD = 2
@@ -20,7 +20,9 @@ def cpu_count() -> int:
     return int(joblib.cpu_count())
 
 
-def run(task: Task, blocks: Iterable[Block], jobs: int) -> Iterator[tuple[Block, Result]]:
+def run(
+    task: Task, blocks: Iterable[Block], jobs: int, given_up: Callable[[], bool] = never
+) -> Iterator[tuple[Block, Result]]:
     """Yield every block with its result, as they finish."""
     # joblib hands out a new block whenever one ends, whether or not the caller keeps up: a slow disk would pile
     # results up in memory. So a block starts only when the results that wait for the caller are few.
