@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from roa.basin.claim import Claim
+    from roa.basin.findings import Findings
     from roa.bound.bounds import Bounds
     from roa.kernel.integration import Integration
     from roa.kernel.lanes import Lanes
@@ -145,17 +146,23 @@ class Preparation:
     @cached_property
     def plan(self) -> Plan:
         """The plan of the sweep."""
+        from roa.basin.goal import goal_samples, stopping
         from roa.sweep.plan import make_plan
 
-        return make_plan(
-            self.configuration,
-            self.equilibrium,
-            self.bounds,
-            self.target,
-            self._samples,
-            self._seed,
-            steps=0.0 if self._block_size else self.pilot.steps,
-            block_size=self._block_size,
+        samples, wanted = self._samples, goal_samples(self.configuration)
+        if wanted is not None and samples not in (None, wanted):
+            raise UserError(f"--samples {samples}: contradicts the goal in [sweep], which picks the number of samples")
+        return stopping(
+            make_plan(
+                self.configuration,
+                self.equilibrium,
+                self.bounds,
+                self.target,
+                samples or wanted,
+                self._seed,
+                steps=0.0 if self._block_size else self.pilot.steps,
+                block_size=self._block_size,
+            )
         )
 
     @cached_property
@@ -197,6 +204,16 @@ class Preparation:
         loose = self.integration
         tight = replace(loose, rtol=loose.rtol / 10, atol=loose.atol / 10)
         return self._on_all_jobs(compile_lanes(self.configuration.loop, self.target, tight))
+
+    def findings(self, samples: Samples) -> Findings:
+        """Look for what the sweep alone does not say: weak starts, attractors, an audit."""
+        from roa.basin.findings import look_further
+
+        self.progress.say("looking for the weakest starts, and integrating some again")
+        return look_further(
+            self.configuration, self.equilibrium, self.bounds.V, self.target, self.integration, samples,
+            self.lanes.run, self.seed,
+        )  # fmt: skip
 
     def claim(self) -> Claim | None:
         """Judge the claimed level, where there is one."""

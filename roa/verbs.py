@@ -105,12 +105,16 @@ def resume(
     command: str = "roa.resume",
 ) -> Result:  # fmt: skip
     """Carry on a sweep that stopped, or extend one that is done, then conclude it as `run` does."""
+    from roa.sweep.finished import is_done
     from roa.sweep.means import Means
 
     means = Means.granted(jobs, hours, executor, command)
     with resumable_by(f"roa resume {shlex.quote(str(run))}"):
+        was_done = is_done(_existing(run), samples)
         prepared, folder = _stored(run, samples, progress, jobs=jobs)
-        return _launched(prepared, folder, means, progress, figures=True)
+        result = _launched(prepared, folder, means, progress, figures=True)
+    note = "the sweep was done already and is left as it is; concluded again from what is stored"
+    return replace(result, note=note) if was_done else result
 
 
 def status(run: str | Path) -> Result:
@@ -173,16 +177,19 @@ def validate(
 
 
 def replay(
-    source: str | Path, index: int | None = None, start: str | None = None, jobs: int | None = None,
-    progress: Progress | None = None,
+    source: str | Path, index: int | None = None, start: str | None = None, audit: int | None = None,
+    jobs: int | None = None, progress: Progress | None = None,
 ) -> Result:  # fmt: skip
-    """Integrate one start again by an independent integrator: a stored one, or any start of a configuration.
+    """Integrate starts again by an independent integrator: a stored one or several, or any start of a configuration.
 
     Parameters
     ----------
     source : a run folder with `index`, or a configuration with `start`
     start : "state=value,…" for every state
+    audit : number of stored starts, half of them drawn at random and half near the edge of the basin
     """
+    if audit is not None:
+        return _audit(source, audit, progress, jobs)
     from roa.basin.replay import replay as replay_stored
     from roa.basin.replay import replay_start
     from roa.report.replay_text import replay_document, replay_text
@@ -201,6 +208,19 @@ def replay(
         )
     loop = prepared.configuration.loop
     return Result(replay_text(found, loop), replay_document(found, loop), 0 if found.agrees else 1)
+
+
+def _audit(run: str | Path, count: int, progress: Progress | None, jobs: int | None) -> Result:
+    from roa.basin.audit import audit
+    from roa.report.replay_text import audit_document, audit_text
+
+    prepared, folder = _stored(run, None, progress, jobs=jobs)
+    configuration = prepared.configuration
+    found = audit(
+        _samples_of(folder), configuration.loop, prepared.target, prepared.integration, count, prepared.seed,
+        configuration.verdict.confidence,
+    )  # fmt: skip
+    return Result(audit_text(found), audit_document(found), 1 if found.disagreements else 0)
 
 
 def overlay(
@@ -352,6 +372,7 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
         target=prepared.target,
         samples=samples,
         claim=claim,
+        findings=prepared.findings(samples),
         sensitive=sensitivity(samples, prepared.simulate_tighter, prepared.configuration.verdict.confidence),
     )
     _write_verdict(folder, verdict)

@@ -49,6 +49,12 @@ def _scale(value: Any) -> tuple[Decimal, ...]:
     return tuple(_exact_positive(entry) for entry in value)
 
 
+def _goal_width(value: Any) -> float:
+    if not isinstance(value, dict) or set(value) != {"width"}:
+        raise ValueError("must be { width = w }, the width of the interval of the share")
+    return real("between 0 and 1 in width", lambda x: 0 < x < 1)(value["width"])
+
+
 class _Table(BaseModel):
     """A table of the file. Unknown keys are refused before, where the nearest known one can be named."""
 
@@ -128,6 +134,8 @@ class SweepTable(_Table):
     ----------
     design : name of a sampling design
     samples : number of initial conditions
+    accuracy : of the share, at which a design that refines stops before it has had all of them
+    goal : width of the interval of the share, which picks the number of samples instead
     seed : of the scrambling
     horizon, longest : s; a trajectory unresolved at the horizon is followed further, up to `longest`
     escape : size of the escape box in domain sizes
@@ -145,6 +153,8 @@ class SweepTable(_Table):
     seed: Annotated[
         int, BeforeValidator(whole("a whole number from 0 to 2**63 - 1", lambda n: 0 <= n <= LARGEST_SEED))
     ] = 1
+    accuracy: _Share | None = None
+    goal: Annotated[float, BeforeValidator(_goal_width)] | None = None
     horizon: _Positive = 60.0
     longest: _Positive = 60.0 * LONGEST_PER_HORIZON
     escape: _AtLeastOne = 10.0
@@ -167,6 +177,22 @@ class SweepTable(_Table):
             return {"longest": LONGEST_PER_HORIZON * _exact_positive(table["horizon"]), **table}
         except (KeyError, ValueError):  # no horizon is given, or its own check will refuse it
             return table
+
+    @model_validator(mode="before")
+    @classmethod
+    def _goal_or_samples(cls, table: dict[str, Any]) -> dict[str, Any]:
+        if table.get("goal") is not None and "samples" in table:
+            raise ValueError("goal and samples contradict each other: a goal picks the number of samples; give one")
+        return table
+
+    @model_validator(mode="after")
+    def _ends_fit_the_design(self) -> SweepTable:
+        refining = self.design in ("rays", "boundary")
+        if self.accuracy is not None and not refining:
+            raise ValueError(f'accuracy is for the designs "rays" and "boundary"; for "{self.design}" give a goal')
+        if self.goal is not None and self.design != "sobol":
+            raise ValueError('goal is for the design "sobol"; for "rays" and "boundary" give an accuracy')
+        return self
 
     @model_validator(mode="after")
     def _longest_is_not_shorter(self) -> SweepTable:

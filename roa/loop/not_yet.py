@@ -9,14 +9,10 @@ TABLES: dict[str, str] = {}
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
-    ("sweep", "accuracy"): "stopping at an accuracy of the share",
-    ("sweep", "goal"): "a goal in place of a number of samples",
     ("sweep", "stop_outside"): "stopping outside by proof",
 }
 
-VALUES = {
-    ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
-}
+VALUES: dict[tuple[str, str, str], str] = {}
 
 
 def table(name: str) -> str:

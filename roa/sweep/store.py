@@ -23,7 +23,7 @@ from roa.errors import MachineError
 from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.trajectories import Trajectories
 from roa.sweep.block import Block
-from roa.sweep.header import Header
+from roa.sweep.header import Header, require_layout
 from roa.sweep.kept import KEPT, completed
 from roa.sweep.run_folder import written_aside
 from roa.sweep.samples import Samples, Stretch
@@ -137,10 +137,13 @@ def read_header(path: Path) -> Header:
 
     Raises
     ------
+    UserError
+        The file has another layout.
     MachineError
         The file is absent or damaged.
     """
     with _machine_errors(path, "read"), h5py.File(path, "r", locking="best-effort") as file:
+        require_layout(path, _plain(file.attrs["layout"]), file.attrs["roa_version"])
         P = file["bound/P"][()]
         values: dict[str, Any] = {name: _plain(file.attrs[name]) for name in ATTRIBUTES}
         return Header(

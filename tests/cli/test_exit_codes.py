@@ -49,11 +49,16 @@ def test_run_without_a_claim_is_done(write, tmp_path, capsys):
     assert "roa resume" in capsys.readouterr().err
     verdict = (tmp_path / "run" / "verdict.json").read_text(encoding="utf-8")
     assert main(["resume", out, "--quiet", "--json"]) == 0
-    again = json.loads(capsys.readouterr().out)
+    printed = capsys.readouterr()
+    assert printed.err == (
+        "roa: the sweep was done already and is left as it is; concluded again from what is stored\n"
+    )
+    again = json.loads(printed.out)
     for key in ("basin", "bounds", "comparison", "levels"):
         assert again[key] == json.loads(verdict)[key]
     assert main(["resume", out, "--samples", "8192", "--quiet", "--json"]) == 0
-    assert json.loads(capsys.readouterr().out)["basin"]["samples"] == 8192
+    printed = capsys.readouterr()
+    assert (json.loads(printed.out)["basin"]["samples"], printed.err) == (8192, "")
     assert main(["overlay", out, "--quiet"]) == 0
     assert main(["report", out]) == 0
     assert main(["replay", out, "17", "--quiet"]) == 0
@@ -204,6 +209,9 @@ def test_wrong_input_is_one_sentence(write, tmp_path, capsys, case):
 
 WRONG_COMMANDS = [
     "status x",
+    "resume x",
+    "report x",
+    "overlay x",
     "sweep x.toml --hours 0",
     "sweep x.toml --executor cluster",
     "run x.toml --cluster=a",
