@@ -66,13 +66,22 @@ def check(
     quick: bool = False, progress: Progress | None = None,
 ) -> Result:  # fmt: skip
     """Say whether a configuration is sound, where it rests, and what its sweep will cost."""
+    from roa.basin.reach import foresee
     from roa.report.soundness import soundness_document, soundness_text
     from roa.sweep.cost import forecast
+    from roa.sweep.memory import physical_memory
+    from roa.sweep.space import free_space, lacking
 
     prepared = _prepare(config, samples, seed, progress, jobs, quick)
     cost = forecast(prepared.plan, prepared.lanes, jobs)
-    text = soundness_text(prepared.plan, cost, shlex.quote(str(config)))
-    return Result(text, soundness_document(prepared.plan, cost))
+    reach = foresee(prepared.configuration, prepared.bounds, cost.timed, physical_memory())
+    plan, free = prepared.plan, free_space(Path("results"))
+    text = soundness_text(plan, cost, reach, free, shlex.quote(str(config)))
+    document = soundness_document(plan, cost, reach, free)
+    if words := lacking(plan, plan.samples, free):
+        note = f"{config}: {words} here; make room, or give --out on another disk"
+        return Result(text, document, MachineError.exit_code, note=note)
+    return Result(text, document, 3 if reach and reach.obstacles else 0)
 
 
 def run(
@@ -159,9 +168,10 @@ def validate(
     folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress, jobs, quick)
     configuration = prepared.configuration
-    if configuration.bound.level is None:
+    if configuration.bound.claimed_level is None:
         raise UserError(
-            f"{configuration.source}: [bound]: there is no claim to validate; write `level = c` for the set V <= c"
+            f"{configuration.source}: [bound]: there is no claim to validate; write `level = c` for the set V <= c, "
+            "or `ball = r` for a ball about the equilibrium"
         )
     claim = prepared.claim()
     verdict = conclude(
