@@ -46,6 +46,7 @@ def conclude(
     target: Target | None = None,
     samples: Samples | None = None,
     claim: Claim | None = None,
+    integration: Mapping[str, str] | None = None,
 ) -> dict[str, Any]:
     """Measure what the samples say, put it beside bounds and claim, and return the verdict.
 
@@ -59,6 +60,7 @@ def conclude(
     target : what entering meant, where something was simulated
     samples : of the sweep, if there was one
     claim : judged, if one was
+    integration : method and why this one, where something was simulated
     """
     confidence = configuration.verdict.confidence
     basin = levels = None
@@ -94,6 +96,7 @@ def conclude(
         "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
+        "integration": integration,
         "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
