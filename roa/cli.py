@@ -152,9 +152,17 @@ def _parser() -> argparse.ArgumentParser:
     verb("validate", "judge the claimed bound", "--out", "--seed", "--jobs", "--quick").add_argument("config", **config)
     verb("resume", "carry on a sweep that stopped, or extend one", "--samples", *means).add_argument("run", **folder)
     replay = verb("replay", "integrate one start again by an independent integrator", "--jobs")
-    replay.add_argument("source", metavar="RUN|CONFIG", help="a run with INDEX, or a configuration with --from")
+    replay.add_argument(
+        "source", metavar="RUN|CONFIG", help="a run with INDEX or --audit, or a configuration with --from"
+    )
     which = replay.add_mutually_exclusive_group(required=True)
     which.add_argument("index", metavar="INDEX", type=int, nargs="?", help="number of a stored start")
+    which.add_argument(
+        "--audit",
+        metavar="N",
+        type=_whole(1, 2**20, "from 1 to 2**20"),
+        help="so many stored starts",
+    )
     which.add_argument("--from", dest="start", metavar="STATE=VALUE,…", help="any start, every state named")
     status = verb("status", "how far a sweep is, asked from another shell")
     status.add_argument("run", **folder)

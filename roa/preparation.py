@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from roa.basin.claim import Claim
+    from roa.basin.findings import Findings
     from roa.bound.bounds import Bounds
     from roa.kernel.integration import Integration
     from roa.kernel.lanes import Lanes
@@ -160,18 +161,24 @@ class Preparation:
     @cached_property
     def plan(self) -> Plan:
         """The plan of the sweep."""
+        from roa.basin.goal import goal_samples, stopping
         from roa.sweep.plan import make_plan
 
-        return make_plan(
-            self.configuration,
-            self.equilibrium,
-            self.bounds,
-            self.target,
-            self._samples,
-            self._seed,
-            steps=0.0 if self._block_size else self.pilot.steps,
-            block_size=self._block_size,
-            choice=self.choice,
+        samples, wanted = self._samples, goal_samples(self.configuration)
+        if wanted is not None and samples not in (None, wanted):
+            raise UserError(f"--samples {samples}: contradicts the goal in [sweep], which picks the number of samples")
+        return stopping(
+            make_plan(
+                self.configuration,
+                self.equilibrium,
+                self.bounds,
+                self.target,
+                samples or wanted,
+                self._seed,
+                steps=0.0 if self._block_size else self.pilot.steps,
+                block_size=self._block_size,
+                choice=self.choice,
+            )
         )
 
     @cached_property
@@ -199,19 +206,34 @@ class Preparation:
 
     def evidence(self, verdict: Mapping[str, Any], samples: Samples) -> Evidence:
         """What the figures of a run are drawn from."""
+        from roa.report.evidence import Evidence
+
+        return Evidence(self.configuration, verdict, samples, self.simulate, self.simulate_tighter)
+
+    @cached_property
+    def simulate_tighter(self) -> Callable[[NDArray[np.float64]], Trajectories]:
+        """What turns starts into outcomes at tolerances ten times tighter; the code is the same."""
         from dataclasses import replace
 
         from roa.kernel.lanes import compile_lanes
-        from roa.report.evidence import Evidence
 
         loose = self.integration
         tight = replace(loose, rtol=loose.rtol / 10, atol=loose.atol / 10)
-        tighter = compile_lanes(self.configuration.loop, self.target, tight)
-        return Evidence(self.configuration, verdict, samples, self.simulate, self._on_all_jobs(tighter))
+        return self._on_all_jobs(compile_lanes(self.configuration.loop, self.target, tight))
+
+    def findings(self, samples: Samples) -> Findings:
+        """Look for what the sweep alone does not say: weak starts, attractors, an audit."""
+        from roa.basin.findings import look_further
+
+        self.progress.say("looking for the weakest starts, and integrating some again")
+        return look_further(
+            self.configuration, self.equilibrium, self.bounds.V, self.target, self.integration, samples,
+            self.lanes.run, self.seed,
+        )  # fmt: skip
 
     def claim(self) -> Claim | None:
         """Judge the claimed level, where there is one."""
-        if self.configuration.bound.level is None:
+        if self.configuration.bound.claimed_level is None:
             return None
         from roa.basin.claim import judge
 

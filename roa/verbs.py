@@ -66,13 +66,22 @@ def check(
     quick: bool = False, progress: Progress | None = None,
 ) -> Result:  # fmt: skip
     """Say whether a configuration is sound, where it rests, and what its sweep will cost."""
+    from roa.basin.reach import foresee
     from roa.report.soundness import soundness_document, soundness_text
     from roa.sweep.cost import forecast
+    from roa.sweep.memory import physical_memory
+    from roa.sweep.space import free_space, lacking
 
     prepared = _prepare(config, samples, seed, progress, jobs, quick)
     cost = forecast(prepared.plan, prepared.lanes, jobs)
-    text = soundness_text(prepared.plan, cost, shlex.quote(str(config)))
-    return Result(text, soundness_document(prepared.plan, cost))
+    reach = foresee(prepared.configuration, prepared.bounds, cost.timed, physical_memory())
+    plan, free = prepared.plan, free_space(Path("results"))
+    text = soundness_text(plan, cost, reach, free, shlex.quote(str(config)))
+    document = soundness_document(plan, cost, reach, free)
+    if words := lacking(plan, plan.samples, free):
+        note = f"{config}: {words} here; make room, or give --out on another disk"
+        return Result(text, document, MachineError.exit_code, note=note)
+    return Result(text, document, 3 if reach and reach.obstacles else 0)
 
 
 def run(
@@ -105,12 +114,16 @@ def resume(
     command: str = "roa.resume",
 ) -> Result:  # fmt: skip
     """Carry on a sweep that stopped, or extend one that is done, then conclude it as `run` does."""
+    from roa.sweep.finished import is_done
     from roa.sweep.means import Means
 
     means = Means.granted(jobs, hours, executor, command)
     with resumable_by(f"roa resume {shlex.quote(str(run))}"):
+        was_done = is_done(_existing(run), samples)
         prepared, folder = _stored(run, samples, progress, jobs=jobs)
-        return _launched(prepared, folder, means, progress, figures=True)
+        result = _launched(prepared, folder, means, progress, figures=True)
+    note = "the sweep was done already and is left as it is; concluded again from what is stored"
+    return replace(result, note=note) if was_done else result
 
 
 def status(run: str | Path) -> Result:
@@ -155,9 +168,10 @@ def validate(
     folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress, jobs, quick)
     configuration = prepared.configuration
-    if configuration.bound.level is None:
+    if configuration.bound.claimed_level is None:
         raise UserError(
-            f"{configuration.source}: [bound]: there is no claim to validate; write `level = c` for the set V <= c"
+            f"{configuration.source}: [bound]: there is no claim to validate; write `level = c` for the set V <= c, "
+            "or `ball = r` for a ball about the equilibrium"
         )
     claim = prepared.claim()
     verdict = conclude(
@@ -173,16 +187,19 @@ def validate(
 
 
 def replay(
-    source: str | Path, index: int | None = None, start: str | None = None, jobs: int | None = None,
-    progress: Progress | None = None,
+    source: str | Path, index: int | None = None, start: str | None = None, audit: int | None = None,
+    jobs: int | None = None, progress: Progress | None = None,
 ) -> Result:  # fmt: skip
-    """Integrate one start again by an independent integrator: a stored one, or any start of a configuration.
+    """Integrate starts again by an independent integrator: a stored one or several, or any start of a configuration.
 
     Parameters
     ----------
     source : a run folder with `index`, or a configuration with `start`
     start : "state=value,…" for every state
+    audit : number of stored starts, half of them drawn at random and half near the edge of the basin
     """
+    if audit is not None:
+        return _audit(source, audit, progress, jobs)
     from roa.basin.replay import replay as replay_stored
     from roa.basin.replay import replay_start
     from roa.report.replay_text import replay_document, replay_text
@@ -201,6 +218,19 @@ def replay(
         )
     loop = prepared.configuration.loop
     return Result(replay_text(found, loop), replay_document(found, loop), 0 if found.agrees else 1)
+
+
+def _audit(run: str | Path, count: int, progress: Progress | None, jobs: int | None) -> Result:
+    from roa.basin.audit import audit
+    from roa.report.replay_text import audit_document, audit_text
+
+    prepared, folder = _stored(run, None, progress, jobs=jobs)
+    configuration = prepared.configuration
+    found = audit(
+        _samples_of(folder), configuration.loop, prepared.target, prepared.integration, count, prepared.seed,
+        configuration.verdict.confidence,
+    )  # fmt: skip
+    return Result(audit_text(found), audit_document(found), 1 if found.disagreements else 0)
 
 
 def overlay(
@@ -341,6 +371,7 @@ def _samples_of(folder: RunFolder) -> Samples:
 def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int | None, figures: bool) -> Result:
     """Judge what the folder holds; write verdict, figures and report."""
     from roa.basin.provenance import provenance
+    from roa.basin.sensitivity import sensitivity
     from roa.basin.verdict import conclude, exit_code
     from roa.report.draw import draw_figures
     from roa.report.html import write_report
@@ -356,6 +387,8 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
         samples=samples,
         claim=claim,
         integration=plan.choice.document,
+        findings=prepared.findings(samples),
+        sensitive=sensitivity(samples, prepared.simulate_tighter, prepared.configuration.verdict.confidence),
     )
     _write_verdict(folder, verdict)
     if figures:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from roa.basin.goal import goal_of
 from roa.basin.size import Basin
 from roa.kernel.target import Target
 from roa.loop.configuration import Configuration
@@ -21,7 +22,7 @@ def cautions(
 ) -> list[str]:
     """Return the cautions of a verdict, those of every verdict first."""
     varying = _of_the_disturbances(configuration)
-    return [*ALWAYS, *varying, *_of_the_loop(equilibrium, target), *_of_the_sweep(basin)]
+    return [*ALWAYS, *varying, *_of_the_loop(equilibrium, target), *_of_the_sweep(configuration, basin)]
 
 
 def _of_the_disturbances(configuration: Configuration) -> list[str]:
@@ -53,10 +54,16 @@ def _of_the_loop(equilibrium: Equilibrium, target: Target | None) -> list[str]:
     return found
 
 
-def _of_the_sweep(basin: Basin | None) -> list[str]:
+def _of_the_sweep(configuration: Configuration, basin: Basin | None) -> list[str]:
     if basin is None:
         return []
     found = []
+    goal = goal_of(configuration.sweep, basin)
+    if goal and not goal["is_reached"]:
+        found.append(
+            f"The {goal['kind']} asked for in [sweep], {goal['wanted']:g}, is not reached"
+            + ("." if goal["reached"] is None else f": it is {goal['reached']:.3g}.")
+        )
     if basin.partial:
         found.append(f"The sweep is partial: {basin.samples} samples are what the numbers stand on.")
     open_ends = {word: basin.counts[word] for word in ("unresolved", "failed") if basin.counts[word]}

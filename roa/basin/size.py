@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -30,6 +30,7 @@ class Basin:
     reasons : by reason word, only those that occurred
     wanted : number of starts that the sweep is to have
     confidence : of the intervals, two-sided
+    looks : at how many moments the sweep might have ended, by what it showed; each interval takes them into account
     loop : Loop
     safe : share of the samples that converge without crossing a limit; None where there are no limits
     """
@@ -41,6 +42,7 @@ class Basin:
     wanted: int
     confidence: float
     loop: Loop
+    looks: int = 1
     safe: Share | None = None
 
     @property
@@ -71,11 +73,18 @@ class Basin:
     @property
     def outcome_intervals(self) -> Mapping[str, Interval]:
         """Interval of the share of each outcome that occurred."""
-        return {word: share.interval(self.loop.n, self.confidence) for word, share in self.by_outcome.items()}
+        return {
+            word: share.interval(self.loop.n, corrected(self.confidence, self.looks))
+            for word, share in self.by_outcome.items()
+        }
 
     def interval_at(self, confidence: float) -> Interval:
         """Interval of the share at another confidence."""
-        return self.share.interval(self.loop.n, confidence)
+        found = self.share.interval(self.loop.n, corrected(confidence, self.looks))
+        if self.looks == 1:
+            return found
+        method = f"{found.method}; each of {self.looks} looks fixed beforehand has its part of the doubt"
+        return replace(found, confidence=confidence, method=method)
 
     @property
     def volume(self) -> float:
@@ -88,7 +97,14 @@ class Basin:
         return self.interval.scaled(self.loop.domain_volume)
 
 
-def measure(samples: Samples, loop: Loop, confidence: float, centre: NDArray[np.float64] | None = None) -> Basin:
+def corrected(confidence: float, looks: int) -> float:
+    """The confidence of one look, so that all of them hold together at `confidence` (Bonferroni)."""
+    return 1 - (1 - confidence) / looks
+
+
+def measure(
+    samples: Samples, loop: Loop, confidence: float, centre: NDArray[np.float64] | None = None, looks: int = 1
+) -> Basin:
     """Measure the basin in one pass over the stored samples; the memory does not grow with their number.
 
     Of a design in rounds the answers are kept, one byte each. `centre` is the equilibrium, float64 (n,), state units.
@@ -109,5 +125,6 @@ def measure(samples: Samples, loop: Loop, confidence: float, centre: NDArray[np.
         wanted=samples.wanted,
         confidence=confidence,
         loop=loop,
+        looks=looks,
         safe=by_outcome[Outcome.CONVERGED] if loop.limits else None,
     )

@@ -5,10 +5,13 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from roa.basin.edge_share import EdgeShare
 from roa.basin.ray_share import RayShare
 from roa.basin.share import Share, Tally
 from roa.loop.model import Loop
 from roa.sweep import designs
+from roa.sweep.designs import Design, RoundDesign
+from roa.sweep.designs.boundary import Boundary
 from roa.sweep.designs.rays import Rays
 from roa.sweep.samples import Samples
 
@@ -23,6 +26,14 @@ def tally_of(samples: Samples, loop: Loop, centre: NDArray[np.float64]) -> Tally
     if not in_rounds(samples):
         return Share(samples.design, samples.replicates)
     stored = samples.attributes
-    design = designs.make(samples.design, loop.box, stored["seed"], stored["replicates"], stored["asked"], centre)
+    return tally_for(
+        designs.make(samples.design, loop.box, stored["seed"], stored["replicates"], stored["asked"], centre)
+    )
+
+
+def tally_for(design: Design | RoundDesign) -> RayShare | EdgeShare:
+    """Return an empty tally for a design in rounds."""
+    if isinstance(design, Boundary):
+        return EdgeShare(design)
     assert isinstance(design, Rays)
     return RayShare(design)

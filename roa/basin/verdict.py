@@ -12,9 +12,12 @@ from roa.basin.cautions import cautions
 from roa.basin.certificate import certificate
 from roa.basin.claim import Claim, Result
 from roa.basin.comparison import Comparison, Ratio, compare
+from roa.basin.findings import NOTHING_FOUND, Findings
+from roa.basin.goal import goal_of, looks_of
 from roa.basin.intervals import Interval
 from roa.basin.ladder import bracket, ladder
 from roa.basin.levels import Levels, by_level
+from roa.basin.sensitivity import Sensitivity
 from roa.basin.share import Share
 from roa.basin.size import Basin, measure
 from roa.bound.bounds import Bounds
@@ -47,6 +50,8 @@ def conclude(
     samples: Samples | None = None,
     claim: Claim | None = None,
     integration: Mapping[str, str] | None = None,
+    findings: Findings | None = None,
+    sensitive: Sensitivity | None = None,
 ) -> dict[str, Any]:
     """Measure what the samples say, put it beside bounds and claim, and return the verdict.
 
@@ -61,15 +66,19 @@ def conclude(
     samples : of the sweep, if there was one
     claim : judged, if one was
     integration : method and why this one, where something was simulated
+    findings : what was looked for beside the sweep, if it was
+    sensitive : how many outcomes hang on the tolerance, where that was tried
     """
     confidence = configuration.verdict.confidence
     basin = levels = None
     stated = list(bounds.stated)
     comparisons: Sequence[Comparison] = ()
     if samples is not None:
-        basin = measure(samples, configuration.loop, confidence, equilibrium.x)
+        looks = looks_of(configuration.sweep, samples)
+        basin = measure(samples, configuration.loop, confidence, equilibrium.x, looks)
         levels = by_level(samples, bounds.V, confidence)
-        stated += [levels.bound] if levels.bound else []
+        unfalsified = levels.bound if findings is None else findings.lower(levels.bound, bounds.V)
+        stated += [unfalsified] if unfalsified else []
     stated += bounds.searched
     if samples is not None and basin is not None:
         comparisons = compare([*stated, *([claim.bound] if claim else [])], basin, samples)
@@ -89,14 +98,16 @@ def conclude(
         "claim": None if claim is None else _claim(claim),
         "bounds": [_bound(bound, by_name.get(bound.name)) for bound in stated],
         "bounds_note": bounds.note,
-        "basin": None if basin is None else _basin(basin),
+        "basin": None if basin is None else _basin(basin) | {"goal": goal_of(configuration.sweep, basin)},
         "comparison": _comparison(stated, claim, by_name),
+        **(NOTHING_FOUND if findings is None else findings.document(configuration)),
         "bracket": None,
         "ladder": None,
         "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
         "integration": integration,
+        "sensitivity": None if sensitive is None else _sensitivity(sensitive),
         "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,
     }
@@ -104,6 +115,17 @@ def conclude(
     verdict["ladder"] = ladder(verdict["bounds"], verdict["basin"])
     plain: dict[str, Any] = _plain(verdict)
     return plain
+
+
+def _sensitivity(sensitive: Sensitivity) -> dict[str, Any]:
+    return {
+        "tried": sensitive.tried,
+        "changed": sensitive.changed,
+        "changes": sensitive.changes,
+        "first": sensitive.first,
+        "share_upper": sensitive.upper,
+        "strength": Strength.SIMULATED,
+    }
 
 
 def _claim(claim: Claim) -> dict[str, Any]:

@@ -69,6 +69,8 @@ def prove_by_invariance(V: LyapunovFunction, level: Decimal | Fraction | float) 
     loop, c = V.loop, enclose_number(level)[1]
     if loop.hold is not None or loop.disturbances:
         return _open(0, "V̇ along the loop is not all that moves it")
+    if loop.limits:
+        return _open(0, "that the set keeps within the limits is not looked at by this argument")
     root = enclose_equilibrium(loop, V.centre)
     formula = _as_formula(V, root)
     dynamics = written_out(loop)

@@ -66,6 +66,8 @@ class RingProver:
         """Try to prove a ring, its levels given exactly, with at most `budget` boxes."""
         if self._V.loop.hold is not None:
             return _undecided("V̇ says nothing of a loop with a hold, whose commands lag behind")
+        if self._V.loop.limits:
+            return _undecided("that the set keeps within the limits is not looked at for a ring")
         c_in, c_out = enclose_number(inner)[0], enclose_number(outer)[1]
         if not 0 < c_in <= c_out < np.inf:
             return _undecided("the levels are not positive numbers in this order")

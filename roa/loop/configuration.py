@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from decimal import Decimal
+from decimal import Context, Decimal
 from typing import Annotated, Any
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, model_validator
@@ -43,6 +43,18 @@ def _exact_positive(value: Any) -> Decimal:
     return number(value)
 
 
+def _scale(value: Any) -> tuple[Decimal, ...]:
+    if not isinstance(value, list):
+        raise ValueError(f"must be a list of numbers greater than 0, one for each state; {kind(value)} found")
+    return tuple(_exact_positive(entry) for entry in value)
+
+
+def _goal_width(value: Any) -> float:
+    if not isinstance(value, dict) or set(value) != {"width"}:
+        raise ValueError("must be { width = w }, the width of the interval of the share")
+    return real("between 0 and 1 in width", lambda x: 0 < x < 1)(value["width"])
+
+
 class _Table(BaseModel):
     """A table of the file. Unknown keys are refused before, where the nearest known one can be named."""
 
@@ -60,6 +72,8 @@ class BoundTable(_Table):
     P : symmetric matrix; whether it is positive definite is for the verdict to say
     V, V_text : tree and text of a formula in states and parameters
     level : the claim {V <= level}, or None where nothing is claimed
+    ball, scale : the claim that all starts within the radius `ball` of the equilibrium converge, each state's distance
+        counted in units of its `scale` (1 where there is none); None where no ball is claimed
     inner : asks for a residual set: trajectories are to end in {V <= inner}, not at the equilibrium; None where they
         are to converge
     search : what is searched for beyond the configured V; None for what the number of states affords
@@ -72,6 +86,8 @@ class BoundTable(_Table):
     V: SkipValidation[Any] = None
     V_text: str | None = None
     level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    ball: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    scale: Annotated[tuple[Decimal, ...], BeforeValidator(_scale)] | None = None
     inner: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
     search: Annotated[tuple[str, ...], BeforeValidator(_searches)] | None = None
     degree: (
@@ -88,6 +104,22 @@ class BoundTable(_Table):
     def _default_weights(cls, table: dict[str, Any]) -> dict[str, Any]:
         return table if table.keys() & {"Q", "P", "V"} else {"Q": "identity", **table}
 
+    @property
+    def claimed_level(self) -> Decimal | None:
+        """Level of the claimed set, exactly: for a ball the square of its radius; None where nothing is claimed."""
+        if self.ball is None:
+            return self.level
+        return Context(prec=2 * len(self.ball.as_tuple().digits)).multiply(self.ball, self.ball)
+
+    @model_validator(mode="after")
+    def _one_claim(self) -> BoundTable:
+        if self.ball is not None and (self.level is not None or self.inner is not None):
+            other = "level" if self.level is not None else "inner"
+            raise ValueError(f"ball and {other} are two claims; keep one of them")
+        if self.scale is not None and self.ball is None:
+            raise ValueError("scale belongs to a claimed ball; write `ball = r` beside it, or remove it")
+        return self
+
     @model_validator(mode="after")
     def _inner_is_below(self) -> BoundTable:
         if self.inner is not None and self.level is not None and not self.inner < self.level:
@@ -102,6 +134,8 @@ class SweepTable(_Table):
     ----------
     design : name of a sampling design
     samples : number of initial conditions
+    accuracy : of the share, at which a design that refines stops before it has had all of them
+    goal : width of the interval of the share, which picks the number of samples instead
     seed : of the scrambling
     horizon, longest : s; a trajectory unresolved at the horizon is followed further, up to `longest`
     escape : size of the escape box in domain sizes
@@ -119,6 +153,8 @@ class SweepTable(_Table):
     seed: Annotated[
         int, BeforeValidator(whole("a whole number from 0 to 2**63 - 1", lambda n: 0 <= n <= LARGEST_SEED))
     ] = 1
+    accuracy: _Share | None = None
+    goal: Annotated[float, BeforeValidator(_goal_width)] | None = None
     horizon: _Positive = 60.0
     longest: _Positive = 60.0 * LONGEST_PER_HORIZON
     escape: _AtLeastOne = 10.0
@@ -141,6 +177,22 @@ class SweepTable(_Table):
             return {"longest": LONGEST_PER_HORIZON * _exact_positive(table["horizon"]), **table}
         except (KeyError, ValueError):  # no horizon is given, or its own check will refuse it
             return table
+
+    @model_validator(mode="before")
+    @classmethod
+    def _goal_or_samples(cls, table: dict[str, Any]) -> dict[str, Any]:
+        if table.get("goal") is not None and "samples" in table:
+            raise ValueError("goal and samples contradict each other: a goal picks the number of samples; give one")
+        return table
+
+    @model_validator(mode="after")
+    def _ends_fit_the_design(self) -> SweepTable:
+        refining = self.design in ("rays", "boundary")
+        if self.accuracy is not None and not refining:
+            raise ValueError(f'accuracy is for the designs "rays" and "boundary"; for "{self.design}" give a goal')
+        if self.goal is not None and self.design != "sobol":
+            raise ValueError('goal is for the design "sobol"; for "rays" and "boundary" give an accuracy')
+        return self
 
     @model_validator(mode="after")
     def _longest_is_not_shorter(self) -> SweepTable:
@@ -223,6 +275,8 @@ class Configuration:
                 "P": _plain(bound.P),
                 "V": _plain(bound.V),
                 "level": _plain(bound.level),
+                "ball": _plain(bound.ball),
+                "scale": None if bound.scale is None else [decimal_text(entry) for entry in bound.scale],
                 "inner": _plain(bound.inner),
                 "search": list(self.searches),
                 "degree": bound.degree,

@@ -157,6 +157,12 @@ def other_equilibria(loop: Loop, equilibrium: Equilibrium, starts: Array) -> Arr
     -------
     float64 (k, n), each once, in lexicographic order: the same for the same starts
     """
+    others = [tuple(one.x) for one in equilibria_beside(loop, equilibrium, starts) if one.stability == "stable"]
+    return np.array(sorted(others)).reshape(-1, loop.n)
+
+
+def equilibria_beside(loop: Loop, equilibrium: Equilibrium, starts: Array) -> list[Equilibrium]:
+    """Find further equilibria inside the domain, stable or not, by Newton from many starts, float64 (m, n), at once."""
     found = equilibrium.x[None]
     with np.errstate(all="ignore"):
         ends = _newton_from_all(loop, starts)
@@ -164,8 +170,7 @@ def other_equilibria(loop: Loop, equilibrium: Equilibrium, starts: Array) -> Arr
         if _distance(loop, found, x).min() > SAME_PLACE:
             found = np.vstack([found, x])
     # Newton has seen finite slopes at each of them, so each has a linearisation.
-    others = [tuple(x) for x in found[1:] if _linearised(loop, x).stability == "stable"]
-    return np.array(sorted(others)).reshape(-1, loop.n)
+    return [_linearised(loop, x) for x in found[1:]]
 
 
 def _newton(loop: Loop, x: Array, source: str) -> Array:

@@ -9,16 +9,10 @@ TABLES: dict[str, str] = {}
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
-    ("bound", "ball"): "a claim in the form of a ball",
-    ("bound", "scale"): "the scale of a claimed ball",
-    ("sweep", "accuracy"): "stopping at an accuracy of the share",
-    ("sweep", "goal"): "a goal in place of a number of samples",
     ("sweep", "stop_outside"): "stopping outside by proof",
 }
 
-VALUES = {
-    ("sweep", "design", "boundary"): 'use "sobol" or "grid"',
-}
+VALUES: dict[tuple[str, str, str], str] = {}
 
 
 def table(name: str) -> str:

@@ -54,8 +54,10 @@ Q = "identity"              # from A'P + PA = -Q; or "domain", or a matrix [[2, 
 # search = ["quadratic"]    # what else is derived: quadratic, polynomial, no_return; unasked, as the states afford
 
 [sweep]                     # the simulation
-design  = "sobol"           # or "grid"
+design  = "sobol"           # or "grid"; "rays" (star-shaped basins) and "boundary" (any) need fewer starts
 samples = 65536
+# goal = { width = 0.002 }  # with "sobol", in place of samples: as many as this width of the interval needs
+# accuracy = 1e-3           # with "rays" and "boundary": stop at this error of the share
 seed    = 1
 horizon = 60.0              # s; by then a trajectory should be decided
 longest = 960.0             # s; one that is not is followed up to here

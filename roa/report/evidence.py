@@ -112,7 +112,7 @@ class Evidence:
     @property
     def has_field(self) -> bool:
         """Whether the state alone decides where it goes: not where a controller holds a command."""
-        return True
+        return self.loop.hold is None
 
     @property
     def first_pair(self) -> tuple[int, int]:

@@ -38,6 +38,7 @@ Array = NDArray[np.float64]
 
 FIELD_ARROWS = 17  # in each direction
 RISING_CELLS = 400
+SIGNAL_CELLS = 200
 
 
 def frame(axes: Axes, plane: Plane) -> Axes:
@@ -107,14 +108,30 @@ def draw_traces(axes: Axes, plane: Plane, traces: Sequence[Trace]) -> None:
         axes.add_line(start_mark(trace.outcome, trace.refutes, points[:1].T, above + 0.5))
 
 
-def draw_limits(axes: Axes, plane: Plane, limits: Mapping[str, tuple[float, float]]) -> None:
-    """Draw the limits on the two states that vary as lines across the plane."""
-    for name, (low, high) in limits.items():
-        for value in (low, high):
+def draw_limits(axes: Axes, plane: Plane, loop: Loop) -> None:
+    """Draw the limits on the two states that vary, and on signals where they are functions of the state."""
+    for name, ends in loop.limits.items():
+        for value in map(float, ends):
             if name == plane.names[0]:
                 axes.axvline(value, color=LIMIT.colour, linestyle=LIMIT.dash, linewidth=LIMIT.width, zorder=2.5)
             elif name == plane.names[1]:
                 axes.axhline(value, color=LIMIT.colour, linestyle=LIMIT.dash, linewidth=LIMIT.width, zorder=2.5)
+            elif name not in loop.states and loop.hold is None:
+                _draw_signal(axes, plane, loop, name, value)
+
+
+def _draw_signal(axes: Axes, plane: Plane, loop: Loop, name: str, value: float) -> None:
+    """Draw where a signal has the value."""
+    points = plane.raster(SIGNAL_CELLS)
+    with np.errstate(all="ignore"):
+        signal = np.broadcast_to(loop.values_of(plane.lift(points))[name], len(points))
+    if not np.nanmin(signal) < value < np.nanmax(signal):
+        return
+    x, y = np.unique(points[:, 0]), np.unique(points[:, 1])
+    axes.contour(
+        x, y, signal.reshape(len(y), len(x)), levels=[value], colors=LIMIT.colour, linestyles="dashdot",
+        linewidths=LIMIT.width, zorder=2.5,
+    )  # fmt: skip
 
 
 def draw_field(axes: Axes, plane: Plane, loop: Loop) -> None:

@@ -30,17 +30,28 @@ def add_legends(figure: Figure, simulated: list[Artist], level_sets: list[Artist
         figure.legend(handles=_padded(level_sets, rows), title=title, loc="outside lower right", **look)
 
 
-def region_entries(regions: Mapping[Outcome, Region], fraction: float | None = None) -> list[Artist]:
-    """Legend entries of the areas and of the equilibrium."""
+def region_entries(regions: Mapping[Outcome, Region], basin: Mapping[str, Any] | None = None) -> list[Artist]:
+    """Legend entries of the areas and of the equilibrium; `basin` of the verdict for the shares of the domain."""
     entries: list[Artist] = []
+    limited = Outcome.CONVERGED_OVER_LIMIT in regions
     for outcome in sorted(regions):
         area = AREAS[outcome]
-        text = "basin: starts that converged" if outcome is Outcome.CONVERGED else outcome_word(outcome)
-        if outcome is Outcome.CONVERGED and fraction is not None:
-            text += f", {percent(fraction)} of the domain"
+        text = outcome_word(outcome)
+        if outcome is Outcome.CONVERGED:
+            text = "converged within the limits" if limited else "basin: starts that converged"
+            text += _share(basin and (basin.get("safe") if limited else basin))
+        elif outcome is Outcome.CONVERGED_OVER_LIMIT and basin:
+            text += f"; both{_share(basin)}"
         edge, width = area.edge.colour, area.edge.width
         entries.append(Patch(facecolor=area.tone, edgecolor=edge, linewidth=width, hatch=area.hatch, label=text))
     return [*entries, equilibrium_mark([], [], label="equilibrium")]
+
+
+def _share(measured: Mapping[str, Any] | None) -> str:
+    """The share of the domain, where one was measured."""
+    if not measured or measured["fraction"] is None:
+        return ""
+    return f", {percent(measured['fraction'])} of the domain"
 
 
 def other_entries(evidence: Evidence) -> list[Artist]:
@@ -50,7 +61,7 @@ def other_entries(evidence: Evidence) -> list[Artist]:
         entries.append(rest_mark([], [], label="another stable equilibrium"))
     if evidence.limits:
         look = {"color": LIMIT.colour, "linestyle": LIMIT.dash, "linewidth": LIMIT.width}
-        entries.append(Line2D([], [], label="limit on a state", **look))  # type: ignore[arg-type]
+        entries.append(Line2D([], [], label="limit on a state or signal", **look))  # type: ignore[arg-type]
     if evidence.rising and evidence.V is not None:
         look = {"facecolor": PAPER, "edgecolor": RISING.edge.colour, "hatch": RISING.hatch, "linewidth": 0.4}
         entries.append(Patch(label="V̇ ≥ 0 (estimated)", **look))  # type: ignore[arg-type]

@@ -2,16 +2,20 @@
 
 from __future__ import annotations
 
+from dataclasses import asdict
+from textwrap import wrap
+from textwrap import wrap
 from typing import Any
 
+from roa.basin.reach import Reach
 from roa.loop.equilibrium import eigenvalue_text
 from roa.report.wording import number, percent, point_text
 from roa.sweep.cost import Cost
 from roa.sweep.plan import Plan
 
 
-def soundness_document(plan: Plan, cost: Cost) -> dict[str, Any]:
-    """The findings as plain values."""
+def soundness_document(plan: Plan, cost: Cost, reach: Reach | None, free: int) -> dict[str, Any]:
+    """The findings as plain values; `free` is the disk in bytes where runs go by default."""
     loop, equilibrium = plan.configuration.loop, plan.equilibrium
     return {
         "title": loop.title,
@@ -29,13 +33,15 @@ def soundness_document(plan: Plan, cost: Cost) -> dict[str, Any]:
         "jobs": cost.jobs,
         "seconds": list(cost.seconds),
         "disk": cost.disk,
+        "free": free,
+        "claim": None if reach is None else asdict(reach),
         "steps": cost.steps,
         "shares": cost.shares,
         "strength": "estimated",
     }
 
 
-def soundness_text(plan: Plan, cost: Cost, source: str) -> str:
+def soundness_text(plan: Plan, cost: Cost, reach: Reach | None, free: int, source: str) -> str:
     """The findings for people."""
     loop, equilibrium = plan.configuration.loop, plan.equilibrium
 
@@ -58,16 +64,34 @@ def soundness_text(plan: Plan, cost: Cost, source: str) -> str:
         *_stability(plan),
         *(f"Elsewhere    {at(x)} is another stable equilibrium (estimated)" for x in plan.target.elsewhere),
         f"Target set   {plan.target.words}",
-        f"Method       {plan.choice.method}: {plan.choice.why}",
+        *wrap(f"Method       {plan.choice.method}: {plan.choice.why}", 80, subsequent_indent=" " * 13),
         "",
         f"Sweep        {cost.samples:,} starts with {cost.jobs} jobs",
         f"  time       {_seconds(low)} to {_seconds(high)} (estimated)",
-        f"  disk       {cost.disk / 1e6:,.1f} MB at most (estimated)",
+        f"  disk       {cost.disk / 1e6:,.1f} MB at most, {free / 1e6:,.0f} MB are free (estimated)",
         f"  a start    {number(cost.steps, 3)} steps; {shares} (simulated)",
+        *_claim(plan, reach),
         "",
         f"What next: `roa run {source}`",
     ]
     return "\n".join(lines) + "\n"
+
+
+def _claim(plan: Plan, reach: Reach | None) -> list[str]:
+    """What *supported* takes, and whether the claim seems within reach."""
+    if reach is None:
+        return []
+    verdict = plan.configuration.verdict
+    return [
+        "",
+        f"Claim        supported: {reach.draws:,} independent draws, none of which may fail",
+        f"             ([verdict] fraction = {verdict.fraction:.9g}, confidence = {verdict.confidence:g})",
+        *(line for obstacle in reach.obstacles for line in _wrapped(f"out of reach: {obstacle}")),
+    ]
+
+
+def _wrapped(sentence: str) -> list[str]:
+    return wrap(sentence, 80, initial_indent="  ", subsequent_indent="    ")
 
 
 def _stability(plan: Plan) -> list[str]:

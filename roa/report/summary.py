@@ -25,7 +25,10 @@ def summary(verdict: Verdict, files: Sequence[str] = (), folder: str = "") -> st
         _paragraph(f"Loop: {verdict['title']}"),
         _bounds(verdict),
         _outcomes(verdict),
+        _attractors(verdict),
         _replay(verdict),
+        _weak(verdict),
+        _audit(verdict),
         _list("What next", next_steps(verdict)),
         _files(files, folder),
         _list("Cautions", verdict["cautions"]),
@@ -79,6 +82,14 @@ def _outcomes(verdict: Verdict) -> str:
         return ""
     lines = [f"{'Outcomes':<22}{'starts':>14}{'share':>12}"]
     lines += [f"  {row.word:<20}{row.count:>14}{row.share:>12}   simulated" for row in rows]
+    if tried := verdict.get("sensitivity"):
+        lines += wrap(
+            f"Step-sensitive: of the first {tried['tried']:,} starts a tolerance ten times tighter changes the outcome "
+            f"of {tried['changed']:,} (simulated).",
+            WIDTH,
+            initial_indent="  ",
+            subsequent_indent="  ",
+        )
     if safe := verdict["basin"].get("safe"):
         share = share_with_interval(
             safe["fraction"], tuple(safe["interval"]), verdict["basin"]["confidence"], "simulated"
@@ -91,6 +102,42 @@ def _outcomes(verdict: Verdict) -> str:
             subsequent_indent="  ",
         )
     return "\n".join(lines)
+
+
+def _attractors(verdict: Verdict) -> str:
+    """What trajectories end at; left out where that is the equilibrium alone."""
+    found = verdict.get("attractors") or []
+    if len(found) < 2:
+        return ""
+    lines = [f"{'Attractors':<50}{'share':>12}"]
+    for one in found:
+        place = "" if one["at"] is None else f" at {', '.join(number(x, 5) for x in one['at'])}"
+        words = wrap(f"{one['name']}{place}", 46)
+        share = percent(one["share"], 2) if one["interval"] else "–"
+        lines.append(f"  {words[0]:<48}{share:>12}   simulated")
+        lines += [f"    {more}" for more in words[1:]]
+    return "\n".join(lines)
+
+
+def _weak(verdict: Verdict) -> str:
+    """The command that shows the start of lowest V that does not converge."""
+    found = verdict.get("weakest")
+    if not found:
+        return ""
+    command: str = found["replay"]
+    lines = [command] if "'" in command else wrap(command, WIDTH - 6, break_long_words=False, break_on_hyphens=False)
+    return "The start of lowest V that was found not to converge (simulated)\n  " + " \\\n    ".join(lines)
+
+
+def _audit(verdict: Verdict) -> str:
+    found = verdict.get("audit")
+    if not found:
+        return ""
+    differ, starts = len(found["disagreements"]), found["at_random"] + found["near_the_edge"]
+    return _paragraph(
+        f"Audit: {differ or 'none'} of {starts} stored starts ended otherwise when integrated again, independently "
+        "and at tight tolerance (simulated)."
+    )
 
 
 def _replay(verdict: Verdict) -> str:

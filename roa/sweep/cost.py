@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 import time
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 
 from roa.kernel.lanes import Lanes
 from roa.kernel.outcomes import Outcome
-from roa.sweep.kept import row_bytes
+from roa.kernel.trajectories import Trajectories
 from roa.sweep.plan import Plan
 from roa.sweep.rounds import Course, Round
+from roa.sweep.space import space_needed
 
 # Batches spread over the whole design: its first starts alone may all settle quickly.
 BATCHES, BATCH = 5, 1024
@@ -30,6 +31,7 @@ class Cost:
     disk : bytes, while blocks and merged file are both there
     steps : mean of accepted steps a start
     shares : of the timed starts, by outcome word
+    timed : the timed starts themselves
     """
 
     samples: int
@@ -38,6 +40,7 @@ class Cost:
     disk: int
     steps: float
     shares: dict[str, float]
+    timed: Trajectories
 
 
 def _starts_known(plan: Plan) -> Round:
@@ -55,24 +58,27 @@ def forecast(plan: Plan, lanes: Lanes, jobs: int | None) -> Cost:
     known = _starts_known(plan)
     count = min(BATCH, known.stop)
     firsts = np.linspace(0, known.stop - count, BATCHES).astype(np.int64)
-    rates, steps, outcomes = [], [], []
+    rates, timed = [], []
     for first in firsts:
         points = known.drawn.points(int(first), count)
         begun = time.perf_counter()
         trajectories = lanes.run(points)
         rates.append((time.perf_counter() - begun) / count)
-        steps.append(float(trajectories.steps.mean()))
-        outcomes.append(np.bincount(trajectories.outcome, minlength=len(Outcome)))
-    disk = 2 * plan.samples * row_bytes(plan.configuration.sweep.store, plan.configuration.loop.n)
+        timed.append(trajectories)
+    together = Trajectories(
+        **{part.name: np.concatenate([getattr(one, part.name) for one in timed]) for part in fields(Trajectories)}
+    )
+    disk = space_needed(plan, plan.samples)
     least, most = (
         rate * plan.samples / workers + OVERHEAD_SECONDS_PER_BYTE * disk for rate in (min(rates), max(rates))
     )
-    share = np.sum(outcomes, axis=0) / (count * len(firsts))
+    share = np.bincount(together.outcome, minlength=len(Outcome)) / len(together)
     return Cost(
         samples=plan.samples,
         jobs=workers,
         seconds=(least, most),
         disk=disk,
-        steps=float(np.mean(steps)),
+        steps=float(together.steps.mean()),
         shares={outcome.word: float(share[outcome]) for outcome in Outcome if share[outcome]},
+        timed=together,
     )

@@ -18,7 +18,7 @@ from roa import __version__
 from roa.kernel.target import Target
 
 # Keys of the resolved configuration that change what is said of the results, or how many there are, but not them.
-WITHOUT = ("title", "verdict", "sweep.samples")
+WITHOUT = ("title", "verdict", "sweep.samples", "sweep.accuracy", "sweep.goal")
 PACKAGES = ("numpy", "scipy", "numba")
 
 

@@ -87,6 +87,20 @@ class Finished:
         return np.concatenate([self.rows(block).in_basin for block in blocks])
 
 
+def is_done(folder: RunFolder, asked: int | None = None) -> bool:
+    """Whether the sweep of a folder is merged and done, with these samples where they are given.
+
+    Raises
+    ------
+    UserError
+        The run has another layout.
+    MachineError
+        What the folder says of itself is damaged.
+    """
+    wanted = Header.read(folder.plan).asked
+    return asked in (None, wanted) and folder.sweep.exists() and store.read_header(folder.sweep).asked == wanted
+
+
 def look_through(folder: RunFolder, header: Header, say: Callable[[str], None]) -> Finished:
     """Find what is finished; files in `blocks/` that cannot be used are named to `say` and left where they are.
 

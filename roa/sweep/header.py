@@ -25,6 +25,21 @@ from roa.sweep.plan import Plan
 LAYOUT = 1
 
 
+def require_layout(path: Path, layout: Any, roa_version: Any) -> None:
+    """Refuse a file of another layout before anything else of it is taken for what it is not.
+
+    Raises
+    ------
+    UserError
+        It was written by a version of roa with another layout; nothing of it is damaged.
+    """
+    if layout != LAYOUT:
+        raise UserError(
+            f"{path}: has layout {layout}, written by roa {roa_version}; roa {__version__} reads layout {LAYOUT}: "
+            "use the version that wrote it, or begin a new run"
+        )
+
+
 @dataclass(frozen=True)
 class Header:
     """What a run says of itself; every value can stand in JSON and comes back from there the same.
@@ -112,11 +127,14 @@ class Header:
 
         Raises
         ------
+        UserError
+            The run has another layout.
         MachineError
             The file is damaged.
         """
         try:
             stored = json.loads(path.read_bytes())
+            require_layout(path, stored["layout"], stored["roa_version"])
             return cls(**{field.name: stored[field.name] for field in fields(cls)})
         except (OSError, ValueError, KeyError, TypeError) as error:
             raise MachineError(f"{path}: is damaged ({error}); this run can be neither read nor resumed") from error

@@ -6,7 +6,6 @@ of the plan and the index.
 
 from __future__ import annotations
 
-import shutil
 from collections.abc import Iterator
 from contextlib import ExitStack, contextmanager
 from dataclasses import replace
@@ -20,13 +19,13 @@ from roa.sweep.block import Block
 from roa.sweep.crew import Crew
 from roa.sweep.finished import Finished, look_through
 from roa.sweep.header import Header
-from roa.sweep.kept import row_bytes
 from roa.sweep.means import Means
 from roa.sweep.plan import Plan
 from roa.sweep.progress import Both, Log, Progress
 from roa.sweep.rounds import Course, Drawn
 from roa.sweep.run_folder import RunFolder, write_atomically
 from roa.sweep.simulation import Simulation
+from roa.sweep.space import require_space
 from roa.sweep.standing import Standing
 from roa.sweep.stop import StopRequest, stop_on_signals
 
@@ -120,18 +119,6 @@ def _begin(plan: Plan, folder: RunFolder) -> Header:
     return header
 
 
-def _require_space(plan: Plan, folder: RunFolder, starts: int) -> None:
-    """Refuse to begin what the disk cannot hold: the missing starts in blocks, and all of the samples merged."""
-    row = row_bytes(plan.configuration.sweep.store, plan.configuration.loop.n)
-    needed = row * (starts + plan.samples)
-    free = shutil.disk_usage(folder.path).free
-    if needed > free:
-        raise MachineError(
-            f"{folder.path}: the sweep needs {needed / 1e9:.2f} GB of disk, {free / 1e9:.2f} GB are free; "
-            f"make room, then `{folder.resume_command}`"
-        )
-
-
 class _Work:
     """Runs blocks and stores each as it finishes; what all rounds share is made at the first."""
 
@@ -149,6 +136,7 @@ class _Work:
         try:
             for block, rows in crew.run(simulation, missing, self._stop, self._progress.say):
                 content = store.encode_block(block, self._plan.fingerprint, rows, self._plan.configuration.sweep.store)
+                folder.require_there()
                 write_atomically(folder.blocks / block.file_name, content)
                 self._tally.add(block.first, rows.outcome)
                 self._progress.add(rows.outcome)
@@ -174,7 +162,7 @@ class _Work:
         plan = self._plan
         in_rounds = plan.design.in_rounds or plan.enough is not None
         starts = plan.samples - merged if in_rounds else sum(block.count for block in missing)
-        _require_space(plan, self._folder, starts)
+        require_space(plan, starts, self._folder.path, self._folder.resume_command)
         if in_rounds:
             self._progress.say(f"at most {starts:,} starts to run, in rounds that follow from the results before them")
         else:

@@ -22,3 +22,8 @@ def memory_now() -> int:
         return int(Path("/proc/self/statm").read_text().split()[1]) * PAGE
     except (OSError, ValueError, IndexError):
         return peak_memory()
+
+
+def physical_memory() -> int:
+    """Return the memory of this machine."""
+    return PAGE * os.sysconf("SC_PHYS_PAGES")

@@ -28,6 +28,8 @@ if TYPE_CHECKING:
 BLOCK_STEPS, MOST_STARTS, FEWEST_STARTS = 2**24, 2**17, 2**8
 # What a block may take on the disk, bytes.
 MOST_BYTES = 64e6
+# Starts at the first look of a sweep with a goal; later looks are powers of two times that, and blocks not larger.
+FIRST_LOOK = 2**14
 # Of a design that refines in rounds: the rounds are small, and should still keep all workers busy.
 ROUND_BLOCK_SIZE = 4096
 # Independent replicates of a random design: enough for a spread between them that deserves a confidence interval.
@@ -131,7 +133,8 @@ def make_plan(
             'from its index alone; use store = "all"'
         )
     fitting = fitting_block_size(steps, configuration.loop.n)
-    block_size = block_size or (min(ROUND_BLOCK_SIZE, fitting) if design.in_rounds else fitting)
+    largest = ROUND_BLOCK_SIZE if design.in_rounds else FIRST_LOOK if table.goal is not None else fitting
+    block_size = block_size or min(largest, fitting)
     integration = integration_of(table) if choice is None else integration_of(table, choice.method)
     parts = {
         **fingerprint.configuration_parts(configuration.resolved()),

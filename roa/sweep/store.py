@@ -9,7 +9,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Iterable, Iterator, Mapping, Sequence
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from dataclasses import fields
 from pathlib import Path
 from typing import Any
@@ -23,8 +23,9 @@ from roa.errors import MachineError
 from roa.kernel.outcomes import Outcome, Reason
 from roa.kernel.trajectories import Trajectories
 from roa.sweep.block import Block
-from roa.sweep.header import Header
+from roa.sweep.header import Header, require_layout
 from roa.sweep.kept import KEPT, completed
+from roa.sweep.patient_file import PatientFile
 from roa.sweep.run_folder import written_aside
 from roa.sweep.samples import Samples, Stretch
 from roa.sweep.starts import starts_of
@@ -107,12 +108,15 @@ def write_samples(path: Path, header: Header, blocks: Iterable[tuple[Block, Colu
         The disk is full, or what was written cannot be read back.
     """
     with written_aside(path) as aside:
-        with _machine_errors(path, "written"), h5py.File(aside, "w") as file:
-            _write_header(file, header)
-            datasets = _create_columns(file["samples"], header)
-            for block, columns in blocks:
-                for name, dataset in datasets.items():
-                    dataset[block.first : block.stop] = columns[name]
+        with _machine_errors(path, "written"), closing(PatientFile(aside)) as below:
+            with h5py.File(below, "w") as file:
+                _write_header(file, header)
+                datasets = _create_columns(file["samples"], header)
+                for block, columns in blocks:
+                    for name, dataset in datasets.items():
+                        dataset[block.first : block.stop] = columns[name]
+                    below.require_whole()
+            below.require_whole()
         _read_back(aside, path, KEPT[header.store])
 
 
@@ -137,10 +141,13 @@ def read_header(path: Path) -> Header:
 
     Raises
     ------
+    UserError
+        The file has another layout.
     MachineError
         The file is absent or damaged.
     """
     with _machine_errors(path, "read"), h5py.File(path, "r", locking="best-effort") as file:
+        require_layout(path, _plain(file.attrs["layout"]), file.attrs["roa_version"])
         P = file["bound/P"][()]
         values: dict[str, Any] = {name: _plain(file.attrs[name]) for name in ATTRIBUTES}
         return Header(

@@ -2,6 +2,7 @@
 
 import json
 import os
+import shutil
 import signal
 import subprocess
 import sys
@@ -49,11 +50,16 @@ def test_run_without_a_claim_is_done(write, tmp_path, capsys):
     assert "roa resume" in capsys.readouterr().err
     verdict = (tmp_path / "run" / "verdict.json").read_text(encoding="utf-8")
     assert main(["resume", out, "--quiet", "--json"]) == 0
-    again = json.loads(capsys.readouterr().out)
+    printed = capsys.readouterr()
+    assert printed.err == (
+        "roa: the sweep was done already and is left as it is; concluded again from what is stored\n"
+    )
+    again = json.loads(printed.out)
     for key in ("basin", "bounds", "comparison", "levels"):
         assert again[key] == json.loads(verdict)[key]
     assert main(["resume", out, "--samples", "8192", "--quiet", "--json"]) == 0
-    assert json.loads(capsys.readouterr().out)["basin"]["samples"] == 8192
+    printed = capsys.readouterr()
+    assert (json.loads(printed.out)["basin"]["samples"], printed.err) == (8192, "")
     assert main(["overlay", out, "--quiet"]) == 0
     assert main(["report", out]) == 0
     assert main(["replay", out, "17", "--quiet"]) == 0
@@ -81,6 +87,32 @@ def test_bound_and_check(write, tmp_path, capsys):
     assert document["seconds"][0] <= document["seconds"][1]
     assert main(["check", config, "--quiet"]) == 0
     assert "Eigenvalues" in capsys.readouterr().out
+
+
+def test_check_foresees_a_claim(write, tmp_path, capsys):
+    # 2.2 lies below the contact level 2.304478 (computed independently); 7.0 is refuted, see below.
+    for level, code in (("2.2", 0), ("7.0", 3)):
+        config = write(gallery.van_der_pol(bound=f"level = {level}", verdict='accept = "supported"'))
+        assert main(["check", config, "--quiet", "--json"]) == code
+        claim = json.loads(capsys.readouterr().out)["claim"]
+        assert claim["draws"] == 4603  # ln 0.01 / ln 0.999
+        assert len(claim["obstacles"]) == bool(code)
+    assert main(["check", config, "--quiet"]) == 3
+    printed = capsys.readouterr()
+    assert "out of reach" in printed.out
+    assert max(len(line) for line in printed.out.splitlines() if config not in line) <= 100
+    assert printed.err == ""
+
+
+def test_check_looks_at_the_disk(write, capsys, monkeypatch):
+    usage = shutil.disk_usage("/")._replace(free=10_000)
+    monkeypatch.setattr("shutil.disk_usage", lambda path: usage)
+    assert main(["check", write(gallery.van_der_pol()), "--quiet", "--json"]) == 4
+    printed = capsys.readouterr()
+    document = json.loads(printed.out)
+    assert document["disk"] > document["free"] == 10_000
+    (line,) = printed.err.splitlines()
+    assert "GB of disk, 0.00 GB are free here; make room" in line
 
 
 def judge(write, tmp_path, capsys, bound, verdict=""):
@@ -204,6 +236,9 @@ def test_wrong_input_is_one_sentence(write, tmp_path, capsys, case):
 
 WRONG_COMMANDS = [
     "status x",
+    "resume x",
+    "report x",
+    "overlay x",
     "sweep x.toml --hours 0",
     "sweep x.toml --executor cluster",
     "run x.toml --cluster=a",

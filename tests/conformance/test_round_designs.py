@@ -152,5 +152,36 @@ class TestRays(RoundDesignProperties):
             self.make(centre=np.array([0.0, 2.5]))
 
 
+class TestBoundary(RoundDesignProperties):
+    name = "boundary"
+    samples = 4096
+
+    def test_cells_at_the_edge_get_small(self):
+        course, _ = played(self.make(samples=16384), disc)
+        area = sum(share * value.sum() for share, value, _ in course.leaves())
+        assert area == pytest.approx(np.pi / 16, rel=1e-3)
+        assert sum(share * len(value) for share, value, _ in course.leaves()) == pytest.approx(1)
+        assert len(course.levels) > 4
+
+    def test_more_starts_carry_it_on(self):
+        few, many = (np.concatenate([s for s, _ in played(self.make(samples=m), disc)[1]]) for m in (3001, 9000))
+        assert np.array_equal(few, many[: len(few)])
+        assert self.make().extendable
+
+    def test_an_island_smaller_than_a_cell_is_refined_once_it_is_hit(self):
+        def with_an_island(x):
+            return disc(x) | (np.abs(x - [-1.7, -1.2]).max(axis=1) < 0.05)
+
+        course, _ = played(self.make(samples=65536), with_an_island)
+        area = sum(share * value.sum() for share, value, _ in course.leaves())
+        assert area == pytest.approx((np.pi + 0.01) / 16, rel=2e-4)
+
+    def test_too_many_states_and_too_few_starts_are_refused(self):
+        with pytest.raises(UserError, match="is for at most 8 states, 9 found"):
+            self.make(box=np.array([[-1.0, 1.0]] * 9), centre=np.zeros(9))
+        with pytest.raises(UserError, match="needs at least 2,048 starts"):
+            self.make(samples=2000)
+
+
 def test_each_file_is_one_design():
-    assert {TestRays.name} == {name for name in designs.available() if designs.load(name).in_rounds}
+    assert {TestRays.name, TestBoundary.name} == {name for name in designs.available() if designs.load(name).in_rounds}

@@ -6,6 +6,7 @@ import pytest
 import gallery
 from roa.bound.lyapunov_function import FormulaV
 from roa.loop.evaluate import evaluate
+from roa.loop.read import read_text
 from roa.loop.weighted_squares import decrease_as_squares
 
 CASES = {
@@ -47,4 +48,12 @@ def test_no_form(dynamics, V):
 def test_what_grows_too_large_is_given_up():
     long = "(x + v + x**3 + v**3 + sin(x) + cos(v) + exp(x))**12"
     configuration = gallery.configuration("xv", ["v", f"-x - {long}*v"], [(-1.0, 1.0)] * 2, bound='V = "x**2 + v**2"')
+    assert decrease_as_squares(configuration.loop, configuration.bound.V) is None
+
+
+def test_a_look_up_table_is_no_obstacle_to_other_formulas():
+    table = "[tables.drag]\nx = [-1, 0, 1]\ny = [2.0, 1.0, 2.0]\n"
+    text = gallery.toml(["a", "w"], ["w", "-a - c*w"], [(-1.0, 1.0)] * 2, signals={"c": "lookup(drag, a)"},
+                        bound='V = "a**2 + w**2"')  # fmt: skip
+    configuration = read_text(text + table, "table.toml")
     assert decrease_as_squares(configuration.loop, configuration.bound.V) is None

@@ -14,7 +14,7 @@ from roa.sweep.finished import open_partial
 from roa.sweep.run_folder import RunFolder
 from roa.sweep.store import open_samples
 
-ASKED = 1500
+ASKED = 5000
 
 
 def plan(design="rays", samples=ASKED, **keywords):
@@ -35,7 +35,7 @@ class Counting(small.ClosedForm):
         return super().run(initial)
 
 
-@pytest.fixture(scope="module", params=["rays"])
+@pytest.fixture(scope="module", params=["rays", "boundary"])
 def design(request):
     return request.param
 
@@ -50,7 +50,7 @@ def test_two_jobs_give_the_same(design, whole, tmp_path):
     assert small.datasets(small.sweep(tmp_path, plan=plan(design), jobs=2).sweep) == whole
 
 
-@pytest.mark.parametrize("stop_at", [0, 3, 9, 20])
+@pytest.mark.parametrize("stop_at", [0, 3, 30])
 def test_interrupted_and_resumed_gives_the_same(design, whole, tmp_path, stop_at):
     first, second = Counting(stop_at), Counting()
     with pytest.raises(Interrupted):
@@ -97,5 +97,13 @@ def test_file_says_how_many_were_asked_for(design, tmp_path):
 
 def test_rays_cannot_grow(tmp_path):
     small.sweep(tmp_path, plan=plan("rays"))
-    with pytest.raises(UserError, match="a rays of 1,500 starts cannot be extended"):
-        small.sweep(tmp_path, plan=plan("rays", samples=3000))
+    with pytest.raises(UserError, match="a rays of 5,000 starts cannot be extended"):
+        small.sweep(tmp_path, plan=plan("rays", samples=6000))
+
+
+def test_boundary_grows(tmp_path):
+    small.sweep(tmp_path, plan=plan("boundary", samples=3333))
+    counting = Counting()
+    folder = small.sweep(tmp_path, plan=plan("boundary"), lanes=counting)
+    assert counting.starts < ASKED - 3333 + 2 * small.SIZE  # the block that was cut short is run again
+    assert small.datasets(folder.sweep) == small.datasets(small.sweep(tmp_path / "whole", plan=plan("boundary")).sweep)

@@ -12,10 +12,11 @@ import roa.sweep.store as store
 from roa.errors import MachineError, UserError
 from roa.kernel.outcomes import Outcome, Reason
 from roa.sweep.block import Block, blocks_of
-from roa.sweep.finished import look_through, open_partial
+from roa.sweep.finished import is_done, look_through, open_partial
 from roa.sweep.header import Header
 from roa.sweep.kept import row_bytes
 from roa.sweep.run_folder import RunFolder, write_atomically
+from roa.sweep.status import read_status
 
 STATES = ["x0", "x1"]
 
@@ -287,6 +288,45 @@ class TestPartial:
     def test_finished(self, run):
         samples = open_partial(run)
         assert (samples.n, samples.partial) == (200, False)
+
+
+class TestAnotherLayout:
+    SENTENCE = r"has layout 2, written by roa 9\.9; roa .* reads layout 1: use the version that wrote it"
+
+    @pytest.fixture
+    def run(self, tmp_path):
+        return small.sweep(tmp_path / "run")
+
+    def test_of_the_plan(self, run):
+        # A later layout need not have anything else of this one.
+        run.plan.write_text('{"layout": 2, "roa_version": "9.9"}')
+        for opened in (read_status, open_partial, is_done):
+            with pytest.raises(UserError, match=r"plan\.json: " + self.SENTENCE):
+                opened(run)
+        before = small.file_identity(run.sweep)
+        with pytest.raises(UserError, match=self.SENTENCE):
+            small.sweep(run.path)
+        assert small.file_identity(run.sweep) == before
+
+    def test_of_the_merged_file(self, run):
+        with h5py.File(run.sweep, "a") as file:
+            file.attrs["layout"], file.attrs["roa_version"] = 2, "9.9"
+            del file["bound"]
+        for opened in (read_status, open_partial, is_done):
+            with pytest.raises(UserError, match=r"sweep\.h5: " + self.SENTENCE):
+                opened(run)
+
+    def test_none_at_all_is_damage(self, run):
+        run.plan.write_text("{}")
+        with pytest.raises(MachineError, match="is damaged"):
+            read_status(run)
+
+
+def test_done_is_with_the_samples_asked_for(run, under_way):
+    assert is_done(run)
+    assert is_done(run, 200)
+    assert not is_done(run, 300)
+    assert not is_done(under_way)
 
 
 def test_merge_that_reads_back_wrong_keeps_the_old_file(tmp_path, plan, monkeypatch):

@@ -54,7 +54,7 @@ def overlay(axes: Axes, evidence: Evidence, traces: Sequence[Trace] | None = Non
         layers.draw_rising(axes, plane, evidence.V)
     layers.draw_traces(axes, plane, traces)
     layers.draw_level_sets(axes, plane, evidence.level_sets)
-    layers.draw_limits(axes, plane, evidence.limits)
+    layers.draw_limits(axes, plane, evidence.loop)
     layers.draw_rests(axes, plane, evidence.rests)
     layers.draw_equilibrium(axes, plane)
     layers.draw_witness(axes, plane, evidence.witness)
@@ -83,7 +83,7 @@ def figure(evidence: Evidence) -> Figure:
         edges = [edge for region in one.slice(i, j).regions.values() for edge in region.edges]
         label_outlines(axes, outlines, [*edges, *(trace.points[:, [i, j]] for trace in traces)])
     simulated = [
-        *legends.region_entries(evidence.slice(i, j).regions, evidence.verdict["basin"]["fraction"]),
+        *legends.region_entries(evidence.slice(i, j).regions, evidence.verdict["basin"]),
         *legends.trace_entries(traces),
         *legends.other_entries(evidence),
     ]

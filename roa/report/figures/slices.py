@@ -47,7 +47,7 @@ def slice_overlay(axes: Axes, evidence: Evidence, i: int, j: int, level_sets: Se
     if evidence.rising and evidence.V is not None:
         layers.draw_rising(axes, plane, evidence.V)
     layers.draw_level_sets(axes, plane, evidence.level_sets if level_sets is None else level_sets)
-    layers.draw_limits(axes, plane, evidence.limits)
+    layers.draw_limits(axes, plane, evidence.loop)
     layers.draw_rests(axes, plane, evidence.rests)
     layers.draw_equilibrium(axes, plane)
     layers.draw_witness(axes, plane, evidence.witness)
