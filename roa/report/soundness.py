@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from dataclasses import asdict
 from textwrap import wrap
-from textwrap import wrap
 from typing import Any
 
 from roa.basin.reach import Reach
