@@ -217,7 +217,7 @@ class Preparation:
 
     def claim(self) -> Claim | None:
         """Judge the claimed level, where there is one."""
-        if self.configuration.bound.level is None:
+        if self.configuration.bound.claimed_level is None:
             return None
         from roa.basin.claim import judge
 

@@ -168,9 +168,10 @@ def validate(
     folder = _new_folder(config, out)
     prepared = _prepare(config, None, seed, progress, jobs, quick)
     configuration = prepared.configuration
-    if configuration.bound.level is None:
+    if configuration.bound.claimed_level is None:
         raise UserError(
-            f"{configuration.source}: [bound]: there is no claim to validate; write `level = c` for the set V <= c"
+            f"{configuration.source}: [bound]: there is no claim to validate; write `level = c` for the set V <= c, "
+            "or `ball = r` for a ball about the equilibrium"
         )
     claim = prepared.claim()
     verdict = conclude(

@@ -21,15 +21,15 @@ from roa.loop.formula_text import decimal_text, to_text
 def certificate(configuration: Configuration, bounds: Bounds, claim: Claim | None) -> dict[str, Any] | None:
     """The certificate of the claim, where V̇ < 0 is proved for it, else of the largest proved bound.
 
-    None where neither is about a quadratic V: what rests on an invariance argument or a formula is not written yet,
-    nor what is proved of a loop with a hold, limits or look-up tables.
+    A ball may be proved by the set that holds it, so that the certificate of the bound stands for it. None where
+    neither is about a quadratic V: what rests on an invariance argument or a formula is not written yet, nor what is
+    proved of a loop with a hold, limits or look-up tables.
     """
     table = configuration.bound
     loop = configuration.loop
     if loop.hold is not None or loop.tables or loop.limits:
         return None
-    if claim is not None and claim.result is Result.PROVED:
-        assert table.level is not None
+    if claim is not None and claim.result is Result.PROVED and table.level is not None:
         proved = claim.decrease is Decrease.PROVED
         return _written("claim", claim.V, table.level, table.inner) if proved else None
     best = bounds.largest_proved

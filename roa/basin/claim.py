@@ -8,6 +8,7 @@ from dataclasses import dataclass, field, replace
 from decimal import ROUND_CEILING, Context, Decimal
 from enum import StrEnum
 from functools import cached_property
+from math import sqrt
 from typing import Any
 
 import numpy as np
@@ -27,8 +28,10 @@ from roa.basin.counterexample import (
 )
 from roa.basin.intervals import clopper_pearson_upper, success_run_samples
 from roa.basin.ring_attempt import attempt_ring
+from roa.bound.ball import ball_function, holds_ellipsoid
 from roa.bound.bounds import Bounds
 from roa.bound.invariance_proof import prove_by_invariance
+from roa.bound.level_set_proof import LevelSetProver
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import branch_and_bound, proof_budget, prover_of
@@ -133,10 +136,13 @@ def judge(
     run : the lanes, starts float64 (m, n) -> Trajectories
     seed : of the searches and draws
     """
-    level = configuration.bound.level
+    level = configuration.bound.claimed_level
     assert level is not None
-    claimed = ClaimedSet(bounds.V, _at_most(level))
-    case = _Case(configuration, claimed, target, integration, run, seed)
+    ball = configuration.bound.ball is not None
+    V = ball_function(bounds.V, configuration.bound.scale) if ball else bounds.V
+    case = _Case(configuration, ClaimedSet(V, _at_most(level)), target, integration, run, seed, level)
+    if ball and not configuration.loop.disturbances:
+        return _leaves_the_domain(case) or _crosses_a_limit(case) or _proved_ball(case, bounds) or _by_simulation(case)
     if configuration.bound.inner is not None or configuration.loop.disturbances:
         return (
             _not_positive_definite(case)
@@ -164,6 +170,7 @@ class _Case:
     integration: Integration
     run: Run
     seed: int
+    level: Decimal
 
     def stream(self, key: tuple[int, ...]) -> np.random.Generator:
         return np.random.default_rng(np.random.SeedSequence(self.seed, spawn_key=key))
@@ -172,18 +179,18 @@ class _Case:
     def witness(self) -> Array | None:
         """A point of the set with V̇ > 0, if one was found.
 
-        With a hold: a start after which V is greater one period later. Not looked for where a ring is claimed.
+        With a hold: a start after which V is greater one period later. Not looked for where a ring is claimed, nor
+        for a ball with a hold.
         """
-        if self.configuration.bound.inner is not None:
+        table = self.configuration.bound
+        if table.inner is not None or (table.ball is not None and self.configuration.loop.hold is not None):
             return None
         return find_increase(self.claimed, self.stream(DECREASE_STREAM))
 
     @cached_property
     def limits(self) -> LimitsOfSet:
         """What is known of the limits on the set."""
-        level = self.configuration.bound.level
-        assert level is not None
-        return limits_of(self.claimed, level, self.stream(LIMITS_STREAM))
+        return limits_of(self.claimed, self.level, self.stream(LIMITS_STREAM))
 
     @property
     def decrease(self) -> Decrease:
@@ -191,9 +198,8 @@ class _Case:
 
     def judged(self, result: Result, decrease: Decrease, reason: str, **more: Any) -> Claim:
         verdict, table, loop = self.configuration.verdict, self.configuration.bound, self.configuration.loop
-        assert table.level is not None
         return Claim(
-            result, decrease, reason, self.claimed.V, float(table.level), verdict.confidence, verdict.fraction,
+            result, decrease, reason, self.claimed.V, float(self.level), verdict.confidence, verdict.fraction,
             inner=None if table.inner is None else float(table.inner),
             disturbances={name: (float(low), float(high)) for name, (low, high) in loop.disturbances.items()},
             **more,
@@ -250,7 +256,10 @@ def _leaves_the_domain(case: _Case) -> Claim | None:
     if claimed.is_inside:
         return None
     largest = claimed.largest_level_inside
-    reason = f"The claimed set leaves the domain; the largest level of this V that stays inside is {largest:.6g}."
+    what = f"level of this V that stays inside is {largest:.6g}"
+    if case.configuration.bound.ball is not None:
+        what = f"radius that stays inside is {sqrt(largest):.6g}"
+    reason = f"The claimed set leaves the domain; the largest {what}."
     if case.limits.largest_level is not None and case.limits.largest_level < largest:
         largest = case.limits.largest_level
         reason = f"The claimed set leaves the domain and the limits; up to level {largest:.6g} it stays within both."
@@ -282,7 +291,7 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         same = bound.V is case.claimed.V and bound.inner is None
         if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
-            return case.judged(Result.PROVED, Decrease.PROVED, reason)
+            return case.judged(Result.PROVED, _proved_decrease(case.claimed.V), reason)
     V, contact = case.claimed.V, bounds.named("contact level")
     # Above the estimate, which errs upwards only, there are points with V̇ >= 0 and no proof to be had.
     if contact is None or level > Decimal(contact.level_estimated or contact.level):
@@ -295,6 +304,32 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         return None
     reason = f"{branch_and_bound(V, proof)} on the whole claimed set, which lies inside the domain."
     return case.judged(Result.PROVED, Decrease.PROVED, reason)
+
+
+def _proved_ball(case: _Case, bounds: Bounds) -> Claim | None:
+    """Prove a claimed ball by a proved set that holds it, or by V = the squared distance itself."""
+    V = case.claimed.V
+    assert isinstance(V, Quadratic)
+    loop = case.configuration.loop
+    for bound in bounds.stated if not loop.limits else ():  # the set may cross a limit that the ball does not
+        proved = bound.strength is Strength.PROVED and bound.inner is None
+        if proved and isinstance(bound.V, Quadratic) and holds_ellipsoid(bound.V, bound.level, V, case.level):
+            reason = f"The ball lies in the set of the {bound.name}, V <= {bound.level:.6g}, whose proof holds for it: "
+            return case.judged(Result.PROVED, Decrease.PROVED, f"{reason}{bound.note or 'V̇ < 0 there'}.")
+    if loop.hold is not None or case.witness is not None or not case.limits.kept:
+        return None
+    prover = prover_of(V)
+    proof = prover.prove(case.level, proof_budget(prover)) if prover.is_ready else None
+    if proof is None or proof.answer is not Answer.PROVED:
+        return None
+    reason = f"With the squared distance from the equilibrium as V, {branch_and_bound(V, proof)} on the whole ball."
+    return case.judged(Result.PROVED, _proved_decrease(V), reason)
+
+
+def _proved_decrease(V: LyapunovFunction) -> Decrease:
+    """What the proof of a level says of V̇ < 0: of a formula it may leave out an ellipsoid that another V proves."""
+    prover = prover_of(V)
+    return Decrease.UNDECIDED if isinstance(prover, LevelSetProver) and not prover.is_exact else Decrease.PROVED
 
 
 def _proved_by_invariance(case: _Case, level: Decimal) -> Claim | None:

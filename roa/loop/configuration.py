@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from decimal import Decimal
+from decimal import Context, Decimal
 from typing import Annotated, Any
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, SkipValidation, model_validator
@@ -43,6 +43,12 @@ def _exact_positive(value: Any) -> Decimal:
     return number(value)
 
 
+def _scale(value: Any) -> tuple[Decimal, ...]:
+    if not isinstance(value, list):
+        raise ValueError(f"must be a list of numbers greater than 0, one for each state; {kind(value)} found")
+    return tuple(_exact_positive(entry) for entry in value)
+
+
 def _goal_width(value: Any) -> float:
     if not isinstance(value, dict) or set(value) != {"width"}:
         raise ValueError("must be { width = w }, the width of the interval of the share")
@@ -66,6 +72,8 @@ class BoundTable(_Table):
     P : symmetric matrix; whether it is positive definite is for the verdict to say
     V, V_text : tree and text of a formula in states and parameters
     level : the claim {V <= level}, or None where nothing is claimed
+    ball, scale : the claim that all starts within the radius `ball` of the equilibrium converge, each state's distance
+        counted in units of its `scale` (1 where there is none); None where no ball is claimed
     inner : asks for a residual set: trajectories are to end in {V <= inner}, not at the equilibrium; None where they
         are to converge
     search : what is searched for beyond the configured V; None for what the number of states affords
@@ -78,6 +86,8 @@ class BoundTable(_Table):
     V: SkipValidation[Any] = None
     V_text: str | None = None
     level: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    ball: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
+    scale: Annotated[tuple[Decimal, ...], BeforeValidator(_scale)] | None = None
     inner: Annotated[Decimal, BeforeValidator(_exact_positive)] | None = None
     search: Annotated[tuple[str, ...], BeforeValidator(_searches)] | None = None
     degree: (
@@ -93,6 +103,22 @@ class BoundTable(_Table):
     @classmethod
     def _default_weights(cls, table: dict[str, Any]) -> dict[str, Any]:
         return table if table.keys() & {"Q", "P", "V"} else {"Q": "identity", **table}
+
+    @property
+    def claimed_level(self) -> Decimal | None:
+        """Level of the claimed set, exactly: for a ball the square of its radius; None where nothing is claimed."""
+        if self.ball is None:
+            return self.level
+        return Context(prec=2 * len(self.ball.as_tuple().digits)).multiply(self.ball, self.ball)
+
+    @model_validator(mode="after")
+    def _one_claim(self) -> BoundTable:
+        if self.ball is not None and (self.level is not None or self.inner is not None):
+            other = "level" if self.level is not None else "inner"
+            raise ValueError(f"ball and {other} are two claims; keep one of them")
+        if self.scale is not None and self.ball is None:
+            raise ValueError("scale belongs to a claimed ball; write `ball = r` beside it, or remove it")
+        return self
 
     @model_validator(mode="after")
     def _inner_is_below(self) -> BoundTable:
@@ -249,6 +275,8 @@ class Configuration:
                 "P": _plain(bound.P),
                 "V": _plain(bound.V),
                 "level": _plain(bound.level),
+                "ball": _plain(bound.ball),
+                "scale": None if bound.scale is None else [decimal_text(entry) for entry in bound.scale],
                 "inner": _plain(bound.inner),
                 "search": list(self.searches),
                 "degree": bound.degree,

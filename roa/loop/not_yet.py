@@ -9,8 +9,6 @@ TABLES: dict[str, str] = {}
 
 KEYS = {
     ("dynamics", "python"): "dynamics as a Python function",
-    ("bound", "ball"): "a claim in the form of a ball",
-    ("bound", "scale"): "the scale of a claimed ball",
     ("sweep", "stop_outside"): "stopping outside by proof",
 }
 

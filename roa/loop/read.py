@@ -31,7 +31,7 @@ TABLES = (
     "bound", "sweep", "verdict", "files",
 )  # fmt: skip
 UNTITLED = "Untitled loop"  # not the name of the file, which changes when a run keeps its copy
-BOUND_KEYS = ("Q", "P", "V", "level", "inner", "search", "degree", "boxes")
+BOUND_KEYS = ("Q", "P", "V", "level", "ball", "scale", "inner", "search", "degree", "boxes")
 
 TableT = TypeVar("TableT", bound=BaseModel)
 
@@ -186,6 +186,7 @@ def _bound_table(
         table = table.model_copy(update=formula) if table and tree else None
     if table and loop:
         _check_matrices(table, loop.n, faults)
+        _check_scale(table, loop.n, faults)
     return table
 
 
@@ -216,6 +217,11 @@ def _check_matrices(table: BoundTable, n: int, faults: Faults) -> None:
             faults.add("bound", key, f"must have {n} rows and columns, one for each state; {len(matrix)} found")
         elif key == "Q" and isinstance(matrix, tuple) and not _positive_definite(np.array(matrix, dtype=np.float64)):
             faults.add("bound", key, "must be positive definite")
+
+
+def _check_scale(table: BoundTable, n: int, faults: Faults) -> None:
+    if table.scale is not None and len(table.scale) != n:
+        faults.add("bound", "scale", f"must have {n} numbers, one for each state; {len(table.scale)} found")
 
 
 def _positive_definite(matrix: np.ndarray[Any, np.dtype[np.float64]]) -> bool:

@@ -136,6 +136,7 @@ class _Work:
         try:
             for block, rows in crew.run(simulation, missing, self._stop, self._progress.say):
                 content = store.encode_block(block, self._plan.fingerprint, rows, self._plan.configuration.sweep.store)
+                folder.require_there()
                 write_atomically(folder.blocks / block.file_name, content)
                 self._tally.add(block.first, rows.outcome)
                 self._progress.add(rows.outcome)

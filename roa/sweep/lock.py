@@ -42,7 +42,9 @@ def locked(path: Path) -> Iterator[None]:
     finally:
         ended.set()
         heart.join()
-        path.unlink(missing_ok=True)
+        # Where the disk is gone or read-only the name stays; the kernel's lock ends with the handle all the same.
+        with suppress(OSError):
+            path.unlink(missing_ok=True)
         os.close(handle)
 
 

@@ -160,6 +160,19 @@ class RunFolder:
             finally:
                 self._locked = False
 
+    def require_there(self) -> None:
+        """See that the folder still is what was begun: where its disk is gone, blocks would go to the one below.
+
+        Raises
+        ------
+        MachineError
+            The folder has vanished.
+        """
+        if not self.plan.exists():
+            raise MachineError(
+                f"{self.path}: has vanished while it was written to; bring its disk back, then `{self.resume_command}`"
+            )
+
     def _clear(self) -> None:
         """Remove files that a killed process was writing: we hold the lock, so nobody is."""
         for folder in (self.path, self.blocks, self.figures):

@@ -110,6 +110,9 @@ class Standing(Progress):
             "memory": {"now": memory_now(), "peak": peak_memory()},
             "last": self._last,
         }
+        # A folder that has vanished is not made anew, only to hold this.
+        if not self._path.parent.is_dir():
+            return
         # Where the disk is full the sweep itself will say so; a lost state must not end it.
         with suppress(MachineError):
             write_atomically(self._path, (json.dumps(content, indent=1, ensure_ascii=False) + "\n").encode())

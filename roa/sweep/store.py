@@ -9,7 +9,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Iterable, Iterator, Mapping, Sequence
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from dataclasses import fields
 from pathlib import Path
 from typing import Any
@@ -25,6 +25,7 @@ from roa.kernel.trajectories import Trajectories
 from roa.sweep.block import Block
 from roa.sweep.header import Header, require_layout
 from roa.sweep.kept import KEPT, completed
+from roa.sweep.patient_file import PatientFile
 from roa.sweep.run_folder import written_aside
 from roa.sweep.samples import Samples, Stretch
 from roa.sweep.starts import starts_of
@@ -107,12 +108,15 @@ def write_samples(path: Path, header: Header, blocks: Iterable[tuple[Block, Colu
         The disk is full, or what was written cannot be read back.
     """
     with written_aside(path) as aside:
-        with _machine_errors(path, "written"), h5py.File(aside, "w") as file:
-            _write_header(file, header)
-            datasets = _create_columns(file["samples"], header)
-            for block, columns in blocks:
-                for name, dataset in datasets.items():
-                    dataset[block.first : block.stop] = columns[name]
+        with _machine_errors(path, "written"), closing(PatientFile(aside)) as below:
+            with h5py.File(below, "w") as file:
+                _write_header(file, header)
+                datasets = _create_columns(file["samples"], header)
+                for block, columns in blocks:
+                    for name, dataset in datasets.items():
+                        dataset[block.first : block.stop] = columns[name]
+                    below.require_whole()
+            below.require_whole()
         _read_back(aside, path, KEPT[header.store])
 
 

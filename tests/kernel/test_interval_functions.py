@@ -199,3 +199,30 @@ def test_infinite_and_not_a_number_boxes_prove_nothing():
             assert high >= bounded[name][1]
         else:
             assert np.isnan(high) or high == np.inf
+
+
+@pytest.mark.long
+def test_a_million_enclosures_at_random_and_adversarial_boxes():
+    """Values, slopes and curvatures of every function, at the ends of the boxes and inside them."""
+    checks = 0
+    for name, (tree, exact, (first, last)) in CASES.items():
+        program = Tape(1)
+        program = program.program([program.expression(tree, {"x": 0})])
+        for seed in range(32):
+            random = np.random.default_rng([seed, len(name)])
+            low, high = boxes_within(first, last, random)
+            point = np.clip(low + (high - low) * random.choice([0.0, 1.0, 0.5, random.random()], len(low)), low, high)
+            found = enclose(program, low[:, None], high[:, None], order=2)
+            parts = found.value[:, 0], found.gradient[:, 0, 0], found.hessian[:, 0, 0, 0]
+            for i in np.flatnonzero(~np.isnan(parts[0].low)):
+                x = mp.mpf(float(point[i]))
+                for interval, function in zip(parts, exact, strict=True):
+                    try:
+                        value = function(x)
+                    except ZeroDivisionError:  # the function or its slope has no value at this end
+                        continue
+                    if name == "abs" and x == 0:
+                        continue
+                    checks += 1
+                    assert_holds(interval, i, value, (name, float(low[i]), float(high[i]), float(x)))
+    assert checks >= 1_000_000

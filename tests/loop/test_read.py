@@ -242,8 +242,6 @@ def test_one_fault_one_line(text, words):
     [
         (with_change("damping = 2", "damping = { value = 2, spread = [1, 3] }"), "spread is not yet supported"),
         (with_change("[dynamics]", '[dynamics]\npython = "plant.py:rhs"'), "[dynamics] python: not yet supported"),
-        *((with_table(f"[bound]\n{key} = 1"), f"[bound] {key}: not yet supported by this version")
-          for key in ("ball", "scale")),
         *((with_table(f"[sweep]\n{key} = 1"), f"[sweep] {key}: not yet supported by this version")
           for key in ("stop_outside",)),
     ],
