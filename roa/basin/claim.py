@@ -31,6 +31,7 @@ from roa.basin.ring_attempt import attempt_ring
 from roa.bound.ball import ball_function, holds_ellipsoid
 from roa.bound.bounds import Bounds
 from roa.bound.invariance_proof import prove_by_invariance
+from roa.bound.level_set_proof import LevelSetProver
 from roa.bound.lyapunov_function import LyapunovFunction, Quadratic
 from roa.bound.point_checks import positive_definite
 from roa.bound.proved_contact_level import branch_and_bound, proof_budget, prover_of
@@ -290,7 +291,7 @@ def _proved(case: _Case, level: Decimal, bounds: Bounds) -> Claim | None:
         same = bound.V is case.claimed.V and bound.inner is None
         if same and bound.strength is Strength.PROVED and level <= Decimal(bound.level):
             reason = f"The level is at most that of the {bound.name}, {bound.level:.6g}: {bound.note or 'V̇ < 0 there'}."
-            return case.judged(Result.PROVED, Decrease.PROVED, reason)
+            return case.judged(Result.PROVED, _proved_decrease(case.claimed.V), reason)
     V, contact = case.claimed.V, bounds.named("contact level")
     # Above the estimate, which errs upwards only, there are points with V̇ >= 0 and no proof to be had.
     if contact is None or level > Decimal(contact.level_estimated or contact.level):
@@ -322,7 +323,13 @@ def _proved_ball(case: _Case, bounds: Bounds) -> Claim | None:
     if proof is None or proof.answer is not Answer.PROVED:
         return None
     reason = f"With the squared distance from the equilibrium as V, {branch_and_bound(V, proof)} on the whole ball."
-    return case.judged(Result.PROVED, Decrease.PROVED, reason)
+    return case.judged(Result.PROVED, _proved_decrease(V), reason)
+
+
+def _proved_decrease(V: LyapunovFunction) -> Decrease:
+    """What the proof of a level says of V̇ < 0: of a formula it may leave out an ellipsoid that another V proves."""
+    prover = prover_of(V)
+    return Decrease.UNDECIDED if isinstance(prover, LevelSetProver) and not prover.is_exact else Decrease.PROVED
 
 
 def _proved_by_invariance(case: _Case, level: Decimal) -> Claim | None:

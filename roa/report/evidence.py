@@ -85,13 +85,16 @@ class Evidence:
     @cached_property
     def traces(self) -> list[Trace]:
         """A few trajectories of each outcome, and that of the counterexample."""
-        stored = sample_traces(self.configuration, self.samples)
+        rates = [-real for real, _ in self.verdict["eigenvalues"] if real < 0]
+        slowest = 1 / min(rates) if self.verdict["stability"] == "stable" and rates else 0.0
+        stored = sample_traces(self.configuration, self.samples, slowest)
         return [*stored, *counterexample_trace(self.configuration, self.verdict)]
 
     @cached_property
     def rests(self) -> list[Array]:
-        """Other stable equilibria that were watched, each (n,)."""
-        return list(np.array(self.verdict.get("rests") or []).reshape(-1, self.loop.n))
+        """Other stable equilibria, each (n,)."""
+        found = (self.verdict.get("attractors") or [])[1:]
+        return [np.array(one["at"]) for one in found if one["at"] is not None and one["stability"] == "stable"]
 
     @property
     def limits(self) -> Mapping[str, tuple[float, float]]:

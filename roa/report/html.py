@@ -15,6 +15,16 @@ from roa.loop.configuration import Configuration
 from roa.loop.read import read_text
 from roa.report import figures
 from roa.report.answer import Verdict, answer, next_steps
+from roa.report.findings import (
+    attractor_rows,
+    audit_limit,
+    audit_sentence,
+    bracket_sentence,
+    found_starts,
+    safe_sentence,
+    sensitivity_sentence,
+    slack_sentence,
+)
 from roa.report.tables import bound_rows, outcome_rows
 from roa.report.wording import (
     confidence_text,
@@ -69,6 +79,11 @@ def report_html(verdict: Verdict, configuration: Configuration, drawn: Mapping[s
         overlay=pictures.get("overlay") or pictures.get("slices"),
         pictures=pictures,
         bounds=bound_rows(verdict),
+        bracket=[one for one in (bracket_sentence(verdict), slack_sentence(verdict)) if one],
+        attractors=attractor_rows(verdict),
+        found_starts=found_starts(verdict),
+        outcome_notes=[one for one in (safe_sentence(verdict), sensitivity_sentence(verdict)) if one],
+        audit=[one for one in (audit_sentence(verdict), audit_limit(verdict)) if one],
         outcomes=outcome_rows(verdict),
         basin_rows=list(_basin_rows(verdict)),
         claim_rows=list(_claim_rows(verdict)),

@@ -23,6 +23,7 @@ Array = NDArray[np.float64]
 # So many of each outcome, chosen among the first stored samples.
 TRACES, AMONG = 3, 4096
 TRACE_POINTS = 1000
+TIME_CONSTANTS = 4.0
 # Part of the domain, in half-widths, in which they start.
 CENTRAL = 0.85
 
@@ -43,13 +44,18 @@ class Trace:
     refutes: bool = False
 
 
-def sample_traces(configuration: Configuration, samples: Samples) -> list[Trace]:
-    """A few stored starts of each outcome, far from each other, with their trajectories."""
+def sample_traces(configuration: Configuration, samples: Samples, slowest: float = 0.0) -> list[Trace]:
+    """A few stored starts of each outcome, far from each other, with their trajectories.
+
+    `slowest` is the slowest time constant, s: a trajectory is followed beyond its entry into the target set.
+    """
     stored = samples.read(0, min(AMONG, samples.n))
     traces = []
     for outcome in sorted(set(stored.outcome.tolist()) - {Outcome.FAILED}):
         for index in _far_apart(stored, outcome, configuration.loop):
             duration = min(float(stored.time[index]), configuration.sweep.horizon)
+            if outcome in (Outcome.CONVERGED, Outcome.CONVERGED_OVER_LIMIT):
+                duration = max(duration, TIME_CONSTANTS * slowest)  # on towards the equilibrium, inside the target set
             if duration > 0:
                 points = _path(configuration, stored.initial[index], duration)
                 traces.append(Trace(points, Outcome(outcome)))
