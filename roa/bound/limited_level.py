@@ -1,7 +1,8 @@
 """Levels of V whose set stays within the limits on states and signals, by interval branch and bound.
 
 A limit that the formula itself keeps, such as torque = [-60, 60] on clip(demand, -60, 60), is seen in its exact
-decimal numbers: an enclosure of the clipped value reaches up to the limit, and never proves to lie below it.
+decimal numbers: an enclosure of the clipped value reaches up to the limit, and never proves to lie below it. What is
+left to prove there is that the value is a number at all, which it is where an end far beyond the limit is not reached.
 """
 
 from __future__ import annotations
@@ -29,7 +30,7 @@ class LimitProver:
 
     def __init__(self, V: Quadratic) -> None:
         self._prover = LevelProver(V)
-        self._sides = list(_open_sides(V.loop))
+        self._sides = list(_sides(V.loop))
 
     def holds(self, level: Level) -> bool:
         """Whether it is proved that every limited value is within its limits all over {V <= level}."""
@@ -47,14 +48,18 @@ class LimitProver:
         return level * low**2
 
 
-def _open_sides(loop: Loop) -> Iterator[Side]:
-    """The ends of the limits that the formulas do not keep by themselves."""
+def _sides(loop: Loop) -> Iterator[Side]:
+    """The ends of the limits; far beyond where the formula keeps the value by itself, wherever it is a number."""
     for name, (low, high) in loop.limits.items():
         lowest, highest = _kept_by_formula(Name(name), loop)
-        if highest is None or highest > high:
-            yield Side(name, high, 1)
-        if lowest is None or lowest < low:
-            yield Side(name, low, -1)
+        kept = highest is not None and highest <= high
+        yield Side(name, high + _far(high) if kept else high, 1)
+        kept = lowest is not None and lowest >= low
+        yield Side(name, low - _far(low) if kept else low, -1)
+
+
+def _far(end: Decimal) -> Decimal:
+    return max(abs(end), Decimal(1))
 
 
 def _kept_by_formula(tree: Expression, loop: Loop) -> tuple[Decimal | None, Decimal | None]:
@@ -63,10 +68,10 @@ def _kept_by_formula(tree: Expression, loop: Loop) -> tuple[Decimal | None, Deci
         case Name(name) if name in loop.signals:
             return _kept_by_formula(loop.signals[name], loop)
         case Call("clip", (_, low, high)):
-            ends = _constant(low, loop), _constant(high, loop)
-            if ends[0] is not None and ends[1] is not None and ends[0] > ends[1]:
-                return ends[1], ends[1]  # min(max(x, low), high) is the upper end then
-            return ends
+            lowest, highest = _constant(low, loop), _constant(high, loop)
+            if lowest is None or highest is None:
+                return None, highest  # min(max(x, low), high) is below `low` where `high` is
+            return min(lowest, highest), highest
         case Call("min", (first, second)):
             return None, min(_constants((first, second), loop), default=None)
         case Call("max", (first, second)):

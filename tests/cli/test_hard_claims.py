@@ -61,3 +61,19 @@ def test_excursion_out_of_the_escape_box(escape):
         assert "left the escape box" in claim.reason
     else:
         assert claim.result == "supported"
+
+
+@pytest.mark.parametrize(
+    ("signal", "limit"),
+    [
+        ("clip(x, -0.5, 0.2 + y)", (-0.5, 2.0)),  # min(max(x, -0.5), 0.2 + y) is -0.75 at (0, -0.95)
+        ("clip(sqrt(0.2 - x), -5, 5)", (-5.0, 5.0)),  # no number for x > 0.2
+    ],
+)
+def test_limits_that_a_clip_does_not_keep(signal, limit):
+    claim = judged(
+        "xy", ["-x", "-y"], [(-2.0, 2.0)] * 2, signals={"u": signal}, limits={"u": limit},
+        bound="P = [[1, 0], [0, 1]]\nlevel = 1",
+    )  # fmt: skip
+    assert claim.result == "not_settled"
+    assert "limit on u" in claim.reason
