@@ -27,6 +27,7 @@ if TYPE_CHECKING:
     from roa.loop.configuration import Configuration
     from roa.loop.equilibrium import Equilibrium
     from roa.report.evidence import Evidence
+    from roa.sweep.choice import Choice
     from roa.sweep.pilot import Pilot
     from roa.sweep.plan import Plan
     from roa.sweep.progress import Progress
@@ -42,7 +43,7 @@ class Preparation:
     samples, seed : in place of the configuration's, where given
     progress : told what takes a while
     jobs : threads for what is simulated beside the sweep; None for as many as this process may use processors
-    target, block_size : those of a stored run, which are then not derived again
+    target, block_size, method : those of a stored run, which are then not derived again
     quick : leave out the search for better bounds
 
     Raises
@@ -61,6 +62,7 @@ class Preparation:
         jobs: int | None = None,
         block_size: int | None = None,
         quick: bool = False,
+        method: str | None = None,
     ) -> None:
         from roa.loop.equilibrium import (
             check_V,
@@ -75,7 +77,7 @@ class Preparation:
         self.configuration = configuration.quick() if quick else configuration
         self.progress = progress or Progress()
         self._samples, self._seed, self._stored_target, self._jobs = samples, seed, target, jobs
-        self._block_size = block_size
+        self._block_size, self._method = block_size, method
         self.equilibrium: Equilibrium = find_equilibrium(configuration.loop, configuration.source)
         if configuration.bound.inner is None:
             require_stable(self.equilibrium, configuration.loop, configuration.source)
@@ -141,7 +143,20 @@ class Preparation:
         """How every trajectory is integrated."""
         from roa.sweep.plan import integration_of
 
-        return integration_of(self.configuration.sweep)
+        return integration_of(self.configuration.sweep, self.choice.method)
+
+    @cached_property
+    def choice(self) -> Choice:
+        """The integration method, and why this one."""
+        from roa.sweep.choice import CONFIGURED, Choice, choose
+        from roa.sweep.plan import integration_of
+
+        sweep = self.configuration.sweep
+        if sweep.method != "auto":
+            return Choice(sweep.method, CONFIGURED)
+        if self._method is not None:
+            return Choice(self._method, "chosen when the run was begun")
+        return choose(self.configuration.loop, self.equilibrium, self._target_alone, integration_of(sweep))
 
     @cached_property
     def plan(self) -> Plan:
@@ -162,6 +177,7 @@ class Preparation:
                 self._seed,
                 steps=0.0 if self._block_size else self.pilot.steps,
                 block_size=self._block_size,
+                choice=self.choice,
             )
         )
 

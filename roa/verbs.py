@@ -181,6 +181,7 @@ def validate(
         provenance(command, prepared.seed, jobs=jobs),
         target=prepared.target,
         claim=claim,
+        integration=prepared.choice.document,
     )
     return _written(configuration, verdict, folder, exit_code(claim, configuration.verdict.accept))
 
@@ -348,7 +349,11 @@ def _stored(
     quick = header.fingerprint_parts.get("config.bound.search") == []
     target = target_of(header.fingerprint_parts) if with_target else None
     samples = samples or header.samples
-    return Preparation(configuration, samples, header.seed, progress, target, jobs, header.block_size, quick), folder
+    method = header.fingerprint_parts["method"]
+    prepared = Preparation(
+        configuration, samples, header.seed, progress, target, jobs, header.block_size, quick, method
+    )
+    return prepared, folder
 
 
 def _samples_of(folder: RunFolder) -> Samples:
@@ -381,6 +386,7 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
         target=prepared.target,
         samples=samples,
         claim=claim,
+        integration=plan.choice.document,
         findings=prepared.findings(samples),
         sensitive=sensitivity(samples, prepared.simulate_tighter, prepared.configuration.verdict.confidence),
     )

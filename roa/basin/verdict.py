@@ -49,6 +49,7 @@ def conclude(
     target: Target | None = None,
     samples: Samples | None = None,
     claim: Claim | None = None,
+    integration: Mapping[str, str] | None = None,
     findings: Findings | None = None,
     sensitive: Sensitivity | None = None,
 ) -> dict[str, Any]:
@@ -64,6 +65,7 @@ def conclude(
     target : what entering meant, where something was simulated
     samples : of the sweep, if there was one
     claim : judged, if one was
+    integration : method and why this one, where something was simulated
     findings : what was looked for beside the sweep, if it was
     sensitive : how many outcomes hang on the tolerance, where that was tried
     """
@@ -104,6 +106,7 @@ def conclude(
         "certificate": certificate(configuration, bounds, claim),
         "levels": [] if levels is None else _levels(levels),
         "target": None if target is None else target.words,
+        "integration": integration,
         "sensitivity": None if sensitive is None else _sensitivity(sensitive),
         "cautions": cautions(configuration, equilibrium, target, basin),
         "provenance": provenance,

@@ -171,7 +171,9 @@ def _method_rows(verdict: Verdict, configuration: Configuration) -> Iterator[Row
     uneven = verdict["basin"] and not verdict["basin"]["by_replicate"]["samples"]
     spread = "drawn in rounds from the results of earlier ones" if uneven else "uniform over the domain"
     yield "initial conditions", f"design {sweep.design}, seed {seed}, {spread}"
-    yield "integration", f"method {sweep.method}, rtol {sweep.rtol:g}, atol {sweep.atol:g} in units of the states"
+    chosen = verdict.get("integration")
+    method = f"{chosen['method']} ({chosen['why']})" if chosen else sweep.method
+    yield "integration", f"method {method}, rtol {sweep.rtol:g}, atol {sweep.atol:g} in units of the states"
     yield "horizon", f"{sweep.horizon:g} s; what is still moving then is followed further, to {sweep.longest:g} s"
     yield "escape box", f"{sweep.escape:g} times the domain about its centre"
     if verdict["target"]:

@@ -15,6 +15,7 @@ from roa.kernel.target import Target
 from roa.loop.configuration import LARGEST_SEED, MOST_SAMPLES, Configuration, SweepTable
 from roa.loop.equilibrium import Equilibrium
 from roa.sweep import designs, fingerprint
+from roa.sweep.choice import CONFIGURED, Choice
 from roa.sweep.designs import Answers, Design, RoundDesign
 from roa.sweep.kept import row_bytes
 
@@ -49,6 +50,7 @@ class Plan:
     fingerprint : str, hexadecimal
     fingerprint_parts : flat dict of JSON-able values, to name what differs
     integration : Integration
+    choice : its method, and why this one
     design : Design or RoundDesign
     looks : numbers of starts, rising, at which `enough` is asked before all are done; of a design that does not refine
     enough : whether the answers so far, bool (m,), suffice; asked after every round but the last. A pure function
@@ -64,15 +66,16 @@ class Plan:
     fingerprint: str
     fingerprint_parts: dict[str, Any]
     integration: Integration
+    choice: Choice
     design: Design | RoundDesign
     looks: tuple[int, ...] = ()
     enough: Callable[[Answers], bool] | None = None
 
 
-def integration_of(table: SweepTable) -> Integration:
-    """Return how the trajectories of a table [sweep] are integrated."""
+def integration_of(table: SweepTable, method: str | None = None) -> Integration:
+    """Return how the trajectories of a table [sweep] are integrated; `method` is what "auto" stands for there."""
     return Integration(
-        method=AUTO if table.method == "auto" else table.method,
+        method=method or (AUTO if table.method == "auto" else table.method),
         rtol=table.rtol,
         atol=table.atol,
         horizon=table.horizon,
@@ -102,10 +105,12 @@ def make_plan(
     seed: int | None = None,
     block_size: int | None = None,
     steps: float = 0.0,
+    choice: Choice | None = None,
 ) -> Plan:
     """Put a plan together; `samples` and `seed` take the place of the configuration's where they are given.
 
     A new run has the block size that fits `steps`, the mean of a start in the pilot; a stored run keeps its own.
+    `choice` is the integration method where it is not for the configuration alone to say.
 
     Raises
     ------
@@ -130,7 +135,7 @@ def make_plan(
     fitting = fitting_block_size(steps, configuration.loop.n)
     largest = ROUND_BLOCK_SIZE if design.in_rounds else FIRST_LOOK if table.goal is not None else fitting
     block_size = block_size or min(largest, fitting)
-    integration = integration_of(table)
+    integration = integration_of(table) if choice is None else integration_of(table, choice.method)
     parts = {
         **fingerprint.configuration_parts(configuration.resolved()),
         **{f"design.{key}": value for key, value in design.parts.items()},
@@ -152,5 +157,6 @@ def make_plan(
         fingerprint=fingerprint.digest(parts),
         fingerprint_parts=parts,
         integration=integration,
+        choice=choice or Choice(integration.method, CONFIGURED),
         design=design,
     )
