@@ -140,7 +140,8 @@ def _of_the_configured(configuration: Configuration, equilibrium: Equilibrium) -
     rings = _rings(V, configuration, equilibrium)
     bounds = _convergence(V, equilibrium)
     missing = [f"No {ring.name}: {ring.note}." for ring in rings if not ring.level > 0]
-    note = " ".join([bounds.note, *missing, *_nominal(configuration, bounds)]).strip()
+    scope = [*_nominal(configuration, bounds), *_of_convergence(configuration, bounds)]
+    note = " ".join([bounds.note, *missing, *scope]).strip()
     return Bounds(V, (*bounds.stated, *(ring for ring in rings if ring.level > 0)), note)
 
 
@@ -168,6 +169,13 @@ def _nominal(configuration: Configuration, bounds: Bounds) -> list[str]:
     values = ", ".join(f"{name} = {configuration.loop.parameters[name].value}" for name in varying)
     which = " and ".join(bound.name for bound in bounds.stated)
     return [f"The {which} hold for the nominal {values} alone."]
+
+
+def _of_convergence(configuration: Configuration, bounds: Bounds) -> list[str]:
+    """Say that a bound is none of safe starts, where there are limits."""
+    if not configuration.loop.limits or not bounds.stated:
+        return []
+    return ["The bounds are of convergence alone: their sets may cross a limit; whether one does is judged of a claim."]
 
 
 def _of_samples(V: LyapunovFunction) -> Bounds:

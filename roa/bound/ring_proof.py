@@ -1,8 +1,9 @@
 """Proof of an ultimate bound: V̇ < 0 on the ring c_in <= V <= c_out, whatever the disturbance does in its interval.
 
 {V <= c_out} is closed inside the domain and V̇ has a negative maximum on the ring, which is compact: every trajectory
-from {V <= c_out} enters {V <= c_in} within a bounded time and never leaves it again. Nothing is asked of V inside, so
-that the loop may come to rest anywhere there, or nowhere. The disturbances are further sides of the boxes.
+from {V <= c_out} enters {V <= c_in} within a bounded time and never leaves it again. Inside, the dynamics must be
+defined and bounded, and nothing is asked of V: the loop may come to rest anywhere there, or nowhere. The disturbances
+are further sides of the boxes.
 Source: Khalil, Nonlinear Systems, 3rd ed. 2002, section 4.8 (from memory).
 """
 
@@ -24,6 +25,8 @@ from roa.loop.derivative import NotSmooth
 
 Array = NDArray[np.float64]
 Level = Decimal | Fraction | float
+
+BOUNDED = 1e100  # what the square of the dynamics must stay below within the inner level set
 
 
 @dataclass(frozen=True)
@@ -84,6 +87,8 @@ class RingProver:
         found = negative_on_levels(program, low, high, (c_in, c_out), np.full(len(low), -1.0), budget)
         if found.answer is Answer.UNDECIDED:
             found = self._rise(coordinates, program, (c_in, c_out), found)
+        if found.answer is Answer.PROVED and not self._is_defined(coordinates, c_in, low, high, budget):
+            return _undecided("the dynamics are not shown to be defined and bounded all over the inner level set")
         reason = ""
         if found.answer is Answer.UNDECIDED:
             reason = f"the budget of {budget} boxes was used up" if found.boxes >= budget else "boxes became too small"
@@ -117,17 +122,32 @@ class RingProver:
         sides = program.support.shape[1]
         return min(most, int(work / (len(program.ops) * (1 + sides) * (2 + sides))))
 
+    def _is_defined(self, coordinates: LevelChart, c_in: float, low: Array, high: Array, budget: int) -> bool:
+        """Whether trajectories that have entered {V <= c_in} go on for ever: where f has a pole they would end."""
+        tape, names = self._begun(coordinates)
+        dynamics = [tape.expression(tree, names) for tree in coordinates.loop.dynamics]
+        squares = tape.total(tape.multiply(row, row) for row in dynamics)
+        value, _ = coordinates.value_and_decrease(tape, names)
+        # A pole is never below a number, however large.
+        program = tape.program([tape.subtract(squares, tape.number(BOUNDED)), value])
+        nowhere = np.full(len(low), -1.0)
+        return negative_on_levels(program, low, high, (-np.inf, c_in), nowhere, budget).answer is Answer.PROVED
+
     def _program(self, coordinates: LevelChart) -> Program:
         """Tape of V̇ and V in z and in the shares of the disturbances' intervals."""
+        tape, names = self._begun(coordinates)
+        value, decrease = coordinates.value_and_decrease(tape, names)
+        return tape.program([decrease, value])
+
+    def _begun(self, coordinates: LevelChart) -> tuple[Tape, dict[str, int]]:
+        """A tape with the rows of the loop's names."""
         n = coordinates.loop.n
         tape = Tape(n + len(self._disturbances))
         varying = {}
         for k, (name, (low, high)) in enumerate(self._disturbances.items()):
             width = tape.multiply(tape.number(Fraction(high) - Fraction(low)), tape.variable(n + k))
             varying[name] = tape.add(tape.number(low), width)
-        names = tape.loop(coordinates.loop, coordinates.states(tape), varying)
-        value, decrease = coordinates.value_and_decrease(tape, names)
-        return tape.program([decrease, value])
+        return tape, tape.loop(coordinates.loop, coordinates.states(tape), varying)
 
     def _value_of(self, shares: Array) -> Array:
         ends = np.array([[float(low), float(high)] for low, high in self._disturbances.values()]).reshape(-1, 2)

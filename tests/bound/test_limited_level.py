@@ -89,3 +89,13 @@ def test_level_is_judged_exactly():
     reach = Decimal(0.04 / float(np.linalg.inv(V.P)[0, 0]))
     assert LimitProver(V).holds(reach * Decimal("0.999"))
     assert not LimitProver(V).holds(reach * Decimal("1.001"))
+
+
+def test_bounds_say_that_they_look_at_no_limit():
+    # x' = -x + x³: |x| < 1 converges, while x = 0.9 begins beyond the limit.
+    configuration = gallery.configuration(
+        "x", ["-x + x**3"], [(-2.0, 2.0)], limits={"x": (-0.6, 0.6)}, bound='Q = "identity"'
+    )
+    bounds = derive_bounds(configuration, find_equilibrium(configuration.loop, "test"))
+    assert bounds.largest_proved.level > 0.4
+    assert "may cross a limit" in bounds.note

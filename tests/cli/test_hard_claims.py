@@ -77,3 +77,11 @@ def test_limits_that_a_clip_does_not_keep(signal, limit):
     )  # fmt: skip
     assert claim.result == "not_settled"
     assert "limit on u" in claim.reason
+
+
+def test_trajectories_that_end_within_a_residual_set():
+    # x' is no number for 0.02 < x < 0.05: what comes from above does not stay in |x| <= 0.1, it ends there.
+    claim = judged(
+        "x", ["-x + 0*sqrt((x - 0.02)*(x - 0.05))"], [(-2.0, 2.0)], bound="P = [[1]]\nlevel = 1\ninner = 0.01"
+    )
+    assert claim.result != "proved"
