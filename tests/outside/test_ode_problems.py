@@ -1,6 +1,6 @@
 """Initial value problems with published ends, integrated by the lanes.
 
-Ends of HIRES, Robertson, Van der Pol and Pleiades are those of the Bari/CWI "Test Set for IVP Solvers" (F. Mazzia,
+Ends of HIRES, Robertson and Van der Pol are those of the Bari/CWI "Test Set for IVP Solvers" (F. Mazzia,
 C. Magherini; earlier W. Lioen, J. de Swart) and of E. Hairer, G. Wanner, Solving Ordinary Differential Equations II;
 Arenstorf's orbit and its period are those of Hairer, Nørsett, Wanner, Solving Ordinary Differential Equations I, II.0.
 """
@@ -81,45 +81,6 @@ def test_robertson(duration, expected, rtol):
     dynamics = [f"-{slow} + {fast}", f"{slow} - {fast} - {square}", square]
     end, _ = final(dynamics, [1.0, 0.0, 0.0], duration, "rodas4", 1e-9, 1e-19, 2.0)
     np.testing.assert_allclose(end, expected, rtol=rtol)
-
-
-def pleiades():
-    """Seven bodies of masses 1 to 7 in the plane: x, y, x', y'."""
-    dynamics = [f"y{14 + i}" for i in range(14)]
-    signals = {}
-    for i in range(7):
-        for j in range(i + 1, 7):
-            signals[f"d{i}{j}"] = f"((y{i} - y{j})**2 + (y{7 + i} - y{7 + j})**2)**-1.5"
-    for offset in (0, 7):
-        for i in range(7):
-            pull = [f"{j + 1}*(y{offset + j} - y{offset + i})*d{min(i, j)}{max(i, j)}" for j in range(7) if j != i]
-            dynamics.append(" + ".join(pull))
-    x, y = [3, 3, -1, -3, 2, -2, 2], [3, -3, 2, 0, 0, -4, 4]
-    vx, vy = [0, 0, 0, 0, 0, 1.75, -1.5], [0, 0, 0, -1.25, 1, 0, 0]
-    return dynamics, signals, np.array([*x, *y, *vx, *vy], dtype=float)
-
-
-def pleiades_by_scipy(start):
-    mass = np.arange(1.0, 8.0)
-
-    def f(_, z):
-        x, y, v, w = z.reshape(4, 7)
-        dx, dy = x - x[:, None], y - y[:, None]
-        cube = (dx**2 + dy**2 + np.eye(7)) ** -1.5 * mass
-        return np.concatenate([v, w, (dx * cube).sum(axis=1), (dy * cube).sum(axis=1)])
-
-    return solve_ivp(f, (0, 3), start, "DOP853", rtol=1e-13, atol=1e-14).y[:, -1]
-
-
-@pytest.mark.long
-def test_pleiades():
-    dynamics, signals, start = pleiades()
-    reference = pleiades_by_scipy(start)
-    listed = {0: 0.3706139143970502, 1: 3.237284092057233, 13: 1.091449240428980}
-    for i, value in listed.items():
-        assert reference[i] == pytest.approx(value, abs=1e-9)
-    end, _ = final(dynamics, start, 3.0, "dormand_prince8", 1e-10, 1e-12, 30.0, signals=signals)
-    np.testing.assert_allclose(end, reference, atol=1e-6)
 
 
 def lagging_pendulum():
