@@ -142,8 +142,8 @@ def test_claim_proved_by_branch_and_bound(write, tmp_path, capsys, level, argume
 
 @pytest.mark.parametrize(("accept", "code"), [("proved", 3), ("supported", 0)])
 def test_supported_claim(write, tmp_path, capsys, accept, code):
-    # A formula that is no quadratic as it stands, though in truth it is one: no proof is tried.
-    bound = 'V = "1.5*x**2 - x*y + y**2 + 0*x**4"\nlevel = 2.2'
+    # A formula with a kink as it stands, though in truth it is smooth: nothing is proved of it.
+    bound = 'V = "abs(1.5*x**2 - x*y + y**2)"\nlevel = 2.2'
     found, claim = judge(write, tmp_path, capsys, bound, f'accept = "{accept}"')
     assert (found, claim["result"], claim["decrease"]) == (code, "supported", "undecided")
     assert claim["nonconverging_fraction_upper"] <= 1e-3
