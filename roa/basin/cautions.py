@@ -32,7 +32,7 @@ def _of_the_disturbances(configuration: Configuration) -> list[str]:
     nominal = ", ".join(f"{name} = {loop.parameters[name].value}" for name in loop.disturbances)
     return [
         f"Disturbances are not simulated: equilibrium and trajectories are those of the nominal {nominal}. What is "
-        "said of every course of a disturbance rests on proof alone."
+        "said of every disturbance, however it varies, rests on proof alone."
     ]
 
 

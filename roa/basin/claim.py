@@ -82,7 +82,7 @@ class Claim:
     witness : float64 (n,), a point of the set with V̇ > 0, where the decrease is refuted
     largest_level_inside : where the set leaves the domain or crosses a limit
     inner : where the claim is an ultimate bound: every trajectory from the set enters {V <= inner}, for good
-    disturbances : name -> (low, high), under every course of which the claim is meant
+    disturbances : name -> (low, high), however which varies the claim is meant
     witness_disturbance : name -> value, under which V̇ > 0 at the witness
     draws, failures : independent draws, and those of them that did not converge; 0 draws where none were needed
     nonconverging_fraction_upper : one-sided exact binomial limit from them
