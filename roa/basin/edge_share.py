@@ -8,38 +8,12 @@ import numpy as np
 from scipy.stats import norm
 
 from roa.basin.intervals import Interval, clopper_pearson_upper
-from roa.basin.share import ByReplicate
-from roa.sweep.designs import Answers, follow
-from roa.sweep.designs.boundary import Boundary, BoundaryCourse, Look
+from roa.basin.round_answers import RoundAnswers
+from roa.sweep.designs.boundary import BoundaryCourse, Look
 
 
-class EdgeShare:
-    """What the answers of a sweep with the design `boundary` say of the share.
-
-    Attributes
-    ----------
-    by_replicate : hits and samples of replicates: none, since the starts are not spread evenly
-    """
-
-    def __init__(self, design: Boundary) -> None:
-        self._design = design
-        self._answers: list[Answers] = []
-        self.by_replicate: ByReplicate = ((), ())
-
-    def add(self, first: int, yes: Answers) -> None:
-        """Take the answers of starts first, first + 1, …, bool (m,), in the order of the indices."""
-        self._answers.append(yes)
-
-    @property
-    def samples(self) -> int:
-        """Number of starts."""
-        return sum(len(yes) for yes in self._answers)
-
-    @cached_property
-    def _course(self) -> BoundaryCourse:
-        course = self._design.course()
-        follow(course, np.concatenate(self._answers))
-        return course
+class EdgeShare(RoundAnswers[BoundaryCourse]):
+    """What the answers of a sweep with the design `boundary` say of the share."""
 
     @cached_property
     def refusal(self) -> str:

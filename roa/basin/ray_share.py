@@ -9,9 +9,8 @@ from numpy.typing import NDArray
 from scipy.stats import t
 
 from roa.basin.intervals import Interval, clopper_pearson, clopper_pearson_upper
-from roa.basin.share import ByReplicate
+from roa.basin.round_answers import RoundAnswers
 from roa.bound.volume import ball_volume
-from roa.sweep.designs import Answers, follow
 from roa.sweep.designs.rays import Bundle, RayCourse, Rays
 
 Array = NDArray[np.float64]
@@ -22,33 +21,12 @@ COMBS = 4
 FEWEST_PART, FEWEST = 1 / 20, 32
 
 
-class RayShare:
-    """What the answers of a sweep with rays say of the share.
-
-    Attributes
-    ----------
-    by_replicate : hits and samples of replicates: none, since rays are no samples of the domain
-    """
+class RayShare(RoundAnswers[RayCourse]):
+    """What the answers of a sweep with rays say of the share."""
 
     def __init__(self, design: Rays) -> None:
+        super().__init__(design)
         self._design = design
-        self._answers: list[Answers] = []
-        self.by_replicate: ByReplicate = ((), ())
-
-    def add(self, first: int, yes: Answers) -> None:
-        """Take the answers of starts first, first + 1, …, bool (m,), in the order of the indices."""
-        self._answers.append(yes)
-
-    @property
-    def samples(self) -> int:
-        """Number of starts."""
-        return sum(len(yes) for yes in self._answers)
-
-    @cached_property
-    def _course(self) -> RayCourse:
-        course = self._design.course()
-        follow(course, np.concatenate(self._answers))
-        return course
 
     @cached_property
     def _none_outside(self) -> bool:

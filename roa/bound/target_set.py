@@ -61,22 +61,13 @@ def target_set(configuration: Configuration, equilibrium: Equilibrium, bounds: B
         level, note = 0.0, f"the proved level {best.level:.3g} is too small for the integrator's tolerance to resolve"
     if loop.hold is not None:
         note = "; ".join(part for part in (note, "entry is judged at the sampling instants") if part)
-    alone = Target(
-        kind="level" if level > 0 else "ball",
-        centre=equilibrium.x,
-        half_widths=loop.half_widths,
-        P=best.V.P if level > 0 and best is not None and isinstance(best.V, Quadratic) else None,
-        level=level,
-        radius=sweep.ball_radius,
-        dwell=float(min(dwell, sweep.horizon)),
-        note=note,
-    )
+    alone = _target(configuration, equilibrium, best, level, dwell, note)
     return watching(alone, elsewhere)
 
 
 def _residual_set(configuration: Configuration, equilibrium: Equilibrium, bounds: Bounds, dwell: float) -> Target:
     """The inner level set that is asked for, where it is proved to keep what enters it; else a ball."""
-    loop, sweep, ring = configuration.loop, configuration.sweep, bounds.named(ULTIMATE)
+    loop, ring = configuration.loop, bounds.named(ULTIMATE)
     inner = float(configuration.bound.inner or 0)
     proved = ring is not None and ring.strength is Strength.PROVED and (ring.inner or np.inf) <= inner < ring.level
     note = "" if proved else "the inner level that is asked for is not proved"
@@ -87,16 +78,30 @@ def _residual_set(configuration: Configuration, equilibrium: Equilibrium, bounds
         level, note = 0.0, "the inner level is proved but cannot be tested by the sweep, which takes only a quadratic V"
         if isinstance(ring.V, Quadratic):
             note = f"the inner level {inner:.3g} is too small for the integrator's tolerance to resolve"
+    return _target(configuration, equilibrium, ring, level, dwell, note, residual=level > 0)
+
+
+def _target(
+    configuration: Configuration,
+    equilibrium: Equilibrium,
+    bound: Bound | None,
+    level: float,
+    dwell: float,
+    note: str,
+    residual: bool = False,
+) -> Target:
+    """The target set of that level of the bound's quadratic V; a ball where the level is 0."""
+    sweep = configuration.sweep
     return Target(
         kind="level" if level > 0 else "ball",
         centre=equilibrium.x,
-        half_widths=loop.half_widths,
-        P=ring.V.P if level > 0 and ring is not None and isinstance(ring.V, Quadratic) else None,
+        half_widths=configuration.loop.half_widths,
+        P=bound.V.P if level > 0 and bound is not None and isinstance(bound.V, Quadratic) else None,
         level=level,
         radius=sweep.ball_radius,
         dwell=float(min(dwell, sweep.horizon)),
         note=note,
-        residual=level > 0,
+        residual=residual,
     )
 
 

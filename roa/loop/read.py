@@ -68,7 +68,7 @@ def read_text(text: str, source: str, folder: Path | None = None) -> Configurati
     lookups, texts = read_tables(tables.get("tables", {}), Files(stored, folder), faults)
     loop = read_loop(title, tables, lookups, faults)
     bound = _bound_table(tables.get("bound", {}), tables, loop, faults)
-    sweep = _sweep_table(tables.get("sweep", {}), faults)
+    sweep = _checked("sweep", SweepTable, tables.get("sweep", {}), SweepTable.model_fields, faults)
     if loop and loop.hold:
         ultimate = {"[disturbance]": bool(loop.disturbances), "[bound] inner": bool(bound and bound.inner)}
         check_with_hold(loop.hold, sweep.horizon if sweep else None, ultimate, faults)
@@ -111,8 +111,6 @@ def _tables(document: dict[str, Any], faults: Faults) -> dict[str, Any]:
     for name, content in document.items():
         if name == "title":
             known[name] = content
-        elif name in not_yet.TABLES:
-            faults.add(name, "", not_yet.table(name))
         elif name not in TABLES:
             word, table, key = ("table", name, "") if isinstance(content, dict) else ("key", "", name)
             accepted = f"accepted are title and the tables {listed(TABLES)}"
@@ -159,17 +157,6 @@ def _checked(
             else:
                 faults.add(name, "", sentence)
         return None
-
-
-def _sweep_table(content: dict[str, Any], faults: Faults) -> SweepTable | None:
-    early = False
-    for key in ("design", "method"):
-        value = content.get(key)
-        if isinstance(value, str) and ("sweep", key, value) in not_yet.VALUES:
-            faults.add("sweep", key, not_yet.value("sweep", key, value), value)
-            early = True
-    table = _checked("sweep", SweepTable, content, SweepTable.model_fields, faults)
-    return None if early else table
 
 
 def _bound_table(

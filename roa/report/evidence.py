@@ -83,6 +83,12 @@ class Evidence:
         return level_sets_of(self.verdict, self.loop)
 
     @cached_property
+    def sensitive(self) -> NDArray[np.bool_]:
+        """Which starts of the first pair's raster end differently at tolerances ten times tighter."""
+        found = self.slice(*self.first_pair).found
+        return np.asarray(self.tighter(found.initial).outcome != found.outcome)
+
+    @cached_property
     def traces(self) -> list[Trace]:
         """A few trajectories of each outcome, and that of the counterexample."""
         rates = [-real for real, _ in self.verdict["eigenvalues"] if real < 0]
@@ -114,8 +120,8 @@ class Evidence:
 
     @property
     def has_field(self) -> bool:
-        """Whether the state alone decides where it goes: not where a controller holds a command."""
-        return self.loop.hold is None
+        """Whether a plane shows where each state goes: with two states, and no command that a controller holds."""
+        return self.loop.n == 2 and self.loop.hold is None
 
     @property
     def first_pair(self) -> tuple[int, int]:

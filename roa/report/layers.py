@@ -14,8 +14,9 @@ from numpy.typing import NDArray
 from roa.bound.lyapunov_function import LyapunovFunction
 from roa.kernel.outcomes import Outcome
 from roa.loop.model import Loop
+from roa.report.evidence import Evidence
 from roa.report.level_sets import LevelSet
-from roa.report.plane import Plane, Region
+from roa.report.plane import Plane, Region, Slice
 from roa.report.style import (
     AREAS,
     COUNTEREXAMPLE,
@@ -48,6 +49,25 @@ def frame(axes: Axes, plane: Plane) -> Axes:
     axes.set_ylim(bottom, top)
     label_axes(axes, plane.names, plane.axis_units)
     return axes
+
+
+def draw_plane(
+    axes: Axes, evidence: Evidence, found: Slice, level_sets: Sequence[LevelSet], traces: Sequence[Trace] = ()
+) -> Axes:
+    """Draw all layers of a slice: regions, field, rising V, trajectories, level sets, limits, equilibria, witness."""
+    plane = found.plane
+    draw_regions(axes, found.regions)
+    if evidence.has_field:
+        draw_field(axes, plane, evidence.loop)
+    if evidence.rising and evidence.V is not None:
+        draw_rising(axes, plane, evidence.V)
+    draw_traces(axes, plane, traces)
+    draw_level_sets(axes, plane, level_sets)
+    draw_limits(axes, plane, evidence.loop)
+    draw_rests(axes, plane, evidence.rests)
+    draw_equilibrium(axes, plane)
+    draw_witness(axes, plane, evidence.witness)
+    return frame(axes, plane)
 
 
 def draw_regions(axes: Axes, regions: Mapping[Outcome, Region]) -> None:

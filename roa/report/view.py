@@ -29,11 +29,6 @@ class View:
     held: tuple[tuple[int, float], ...] = ()
     rising: bool = False
 
-    @property
-    def is_plain(self) -> bool:
-        """Whether nothing is asked that the run's own figures do not show."""
-        return self.pair is None and not self.held and not self.rising
-
     def at(self, equilibrium: Array) -> Array | None:
         """Where the other states are held, float64 (n,); None for the equilibrium."""
         if not self.held:

@@ -44,21 +44,8 @@ def overlay(axes: Axes, evidence: Evidence, traces: Sequence[Trace] | None = Non
     evidence : of the run
     traces : the trajectories; a few of the stored starts where None
     """
-    i, j = evidence.first_pair
-    plane = evidence.plane(i, j)
-    traces = evidence.traces if traces is None else traces
-    layers.draw_regions(axes, evidence.slice(i, j).regions)
-    if evidence.has_field:
-        layers.draw_field(axes, plane, evidence.loop)
-    if evidence.rising and evidence.V is not None:
-        layers.draw_rising(axes, plane, evidence.V)
-    layers.draw_traces(axes, plane, traces)
-    layers.draw_level_sets(axes, plane, evidence.level_sets)
-    layers.draw_limits(axes, plane, evidence.loop)
-    layers.draw_rests(axes, plane, evidence.rests)
-    layers.draw_equilibrium(axes, plane)
-    layers.draw_witness(axes, plane, evidence.witness)
-    return layers.frame(axes, plane)
+    found = evidence.slice(*evidence.first_pair)
+    return layers.draw_plane(axes, evidence, found, evidence.level_sets, evidence.traces if traces is None else traces)
 
 
 def figure(evidence: Evidence) -> Figure:

@@ -42,16 +42,7 @@ def slice_overlay(axes: Axes, evidence: Evidence, i: int, j: int, level_sets: Se
     `level_sets` are those of the evidence where None; `evidence.at` says where the other states are held.
     """
     found = _slice(evidence, i, j)
-    plane = found.plane
-    layers.draw_regions(axes, found.regions)
-    if evidence.rising and evidence.V is not None:
-        layers.draw_rising(axes, plane, evidence.V)
-    layers.draw_level_sets(axes, plane, evidence.level_sets if level_sets is None else level_sets)
-    layers.draw_limits(axes, plane, evidence.loop)
-    layers.draw_rests(axes, plane, evidence.rests)
-    layers.draw_equilibrium(axes, plane)
-    layers.draw_witness(axes, plane, evidence.witness)
-    return layers.frame(axes, plane)
+    return layers.draw_plane(axes, evidence, found, evidence.level_sets if level_sets is None else level_sets)
 
 
 def figure(evidence: Evidence) -> Figure:

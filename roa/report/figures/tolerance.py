@@ -5,7 +5,6 @@ from __future__ import annotations
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from numpy.typing import NDArray
 
 from roa.report import layers
 from roa.report.evidence import Evidence
@@ -24,14 +23,14 @@ MANY = 2000
 
 def applies(evidence: Evidence) -> bool:
     """Whether there is a plane to show in which a start changes its outcome."""
-    return evidence.loop.n >= 2 and bool(_changed(evidence).any())
+    return evidence.loop.n >= 2 and bool(evidence.sensitive.any())
 
 
 def tolerance(axes: Axes, evidence: Evidence) -> Axes:
     """Draw the regions of the plane and mark the starts of its raster whose outcome is sensitive to tolerance."""
     found = evidence.slice(*evidence.first_pair)
     points = found.plane.raster(found.cells)
-    changed = _changed(evidence)
+    changed = evidence.sensitive
     layers.draw_regions(axes, found.regions)
     axes.plot(
         *points[changed].T, linestyle="none", marker="o", markersize=3.5, markerfacecolor=PAPER,
@@ -52,9 +51,3 @@ def figure(evidence: Evidence) -> Figure:
     drawn.suptitle(title, x=0.01, ha="left")
     tolerance(drawn.subplots(), evidence)
     return drawn
-
-
-def _changed(evidence: Evidence) -> NDArray[np.bool_]:
-    """Which starts of the raster end differently at tolerances ten times tighter."""
-    found = evidence.slice(*evidence.first_pair)
-    return np.asarray(evidence.tighter(found.found.initial).outcome != found.found.outcome)
