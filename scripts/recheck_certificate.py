@@ -10,7 +10,7 @@ from the formulas, in the intervals of mpmath: slowly, and in few enough lines t
 numbers only the statement is believed: the matrix T of the coordinates x = x* + Tz is as good as any, and the
 equilibrium is enclosed anew.
 
-Exit codes: 0 checked; 1 not so, or nothing to check; 3 not decided within the boxes.
+Exit codes: 0 checked; 1 not so, or nothing to check; 2 called with something else; 3 not decided within the boxes.
 """
 
 from __future__ import annotations
@@ -28,7 +28,7 @@ from mpmath import iv, matrix, mp
 iv.prec = mp.prec = 64
 BOXES = 20_000
 HALVINGS = 40  # of the cube about the equilibrium
-CHECKED, FALSE, UNDECIDED = 0, 1, 3
+CHECKED, FALSE, MISUSED, UNDECIDED = 0, 1, 2, 3
 
 
 class NotSo(Exception):
@@ -500,9 +500,17 @@ def main(arguments: list[str]) -> int:
         print(__doc__)
         return FALSE
     path = Path(arguments[0])
-    boxes = int(arguments[arguments.index("--boxes") + 1]) if "--boxes" in arguments else BOXES
-    document = json.loads((path / "verdict.json" if path.is_dir() else path).read_text(encoding="utf-8"))
-    certificate = document.get("certificate")
+    path = path / "verdict.json" if path.is_dir() else path
+    try:
+        boxes = int(arguments[arguments.index("--boxes") + 1]) if "--boxes" in arguments else BOXES
+        certificate = json.loads(path.read_text(encoding="utf-8")).get("certificate")
+    except (OSError, ValueError, AttributeError, IndexError) as fault:
+        print(
+            f"{path}: nothing was checked ({fault}); give the folder of a run or its verdict.json, and a whole number "
+            "behind --boxes where that is given",
+            file=sys.stderr,
+        )
+        return MISUSED
     if not certificate:
         print("There is no certificate: nothing that can be checked here was proved.")
         return FALSE

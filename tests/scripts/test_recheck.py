@@ -145,3 +145,16 @@ def test_shipped_loops(recheck, name, tmp_path):
     raised = {**found, "level": (float.fromhex(found["level"]) * 1.01).hex()}
     with pytest.raises((recheck.NotSo, recheck.Open)):
         recheck.check(raised, 2000)
+
+
+@pytest.mark.parametrize("wrong", ["absent", "empty", "no verdict", "boxes"])
+def test_what_is_no_verdict_is_said_in_a_sentence(recheck, tmp_path, capsys, wrong):
+    path = tmp_path / "verdict.json"
+    if wrong != "absent":
+        path.write_text({"empty": "", "no verdict": "[1, 2]", "boxes": "{}"}[wrong], encoding="utf-8")
+    more = ["--boxes", "many"] if wrong == "boxes" else []
+    assert recheck.main([str(tmp_path), *more]) == 2
+    printed = capsys.readouterr()
+    assert printed.out == ""
+    assert printed.err.count("\n") == 1
+    assert "give the folder of a run" in printed.err
