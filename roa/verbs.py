@@ -6,12 +6,12 @@ numba, scipy or matplotlib is imported when a verb runs.
 
 from __future__ import annotations
 
-import json
 import shlex
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from roa import stored_run
 from roa.errors import Interrupted, MachineError, UserError
 from roa.interruption import resumable_by
 
@@ -22,7 +22,6 @@ if TYPE_CHECKING:
     from roa.sweep.means import Means
     from roa.sweep.progress import Progress
     from roa.sweep.run_folder import RunFolder
-    from roa.sweep.samples import Samples
 
 
 @dataclass(frozen=True)
@@ -119,8 +118,8 @@ def resume(
 
     means = Means.granted(jobs, hours, executor, command)
     with resumable_by(f"roa resume {shlex.quote(str(run))}"):
-        was_done = is_done(_existing(run), samples)
-        prepared, folder = _stored(run, samples, progress, jobs=jobs)
+        was_done = is_done(stored_run.existing(run), samples)
+        prepared, folder = stored_run.prepare_again(run, samples, progress, jobs=jobs)
         result = _launched(prepared, folder, means, progress, figures=True)
     note = "the sweep was done already and is left as it is; concluded again from what is stored"
     return replace(result, note=note) if was_done else result
@@ -132,7 +131,7 @@ def status(run: str | Path) -> Result:
     from roa.report.status_text import status_document, status_text
     from roa.sweep.status import read_status
 
-    folder = _existing(run)
+    folder = stored_run.existing(run)
     found = read_status(folder)
     confidence = read_text(found.header.config, str(folder.config)).verdict.confidence
     text = status_text(found, confidence, str(folder.path), folder.resume_command)
@@ -205,8 +204,8 @@ def replay(
     from roa.report.replay_text import replay_document, replay_text
 
     if index is not None:
-        prepared, folder = _stored(source, None, progress, jobs=jobs)
-        samples = _samples_of(folder)
+        prepared, folder = stored_run.prepare_again(source, None, progress, jobs=jobs)
+        samples = stored_run.samples_of(folder)
         if not 0 <= index < samples.n:
             raise UserError(f"{source}: has no sample {index}; it holds 0 to {samples.n - 1}")
         found = replay_stored(samples, index, prepared.configuration.loop, prepared.target, prepared.integration)
@@ -224,10 +223,10 @@ def _audit(run: str | Path, count: int, progress: Progress | None, jobs: int | N
     from roa.basin.audit import audit
     from roa.report.replay_text import audit_document, audit_text
 
-    prepared, folder = _stored(run, None, progress, jobs=jobs)
+    prepared, folder = stored_run.prepare_again(run, None, progress, jobs=jobs)
     configuration = prepared.configuration
     found = audit(
-        _samples_of(folder), configuration.loop, prepared.target, prepared.integration, count, prepared.seed,
+        stored_run.samples_of(folder), configuration.loop, prepared.target, prepared.integration, count, prepared.seed,
         configuration.verdict.confidence,
     )  # fmt: skip
     return Result(audit_text(found), audit_document(found), 1 if found.disagreements else 0)
@@ -258,9 +257,9 @@ def overlay(
     first = evidence(run, progress, jobs)
     view = read_view(first.loop, states, at, rising)
     seen = first.seen(view.pair, view.at(first.equilibrium), rising)
-    folder, kinds = _existing(run), read_formats(formats)
+    folder, kinds = stored_run.existing(run), read_formats(formats)
     if other is not None:
-        names = _existing(run).path.name, _existing(other).path.name
+        names = stored_run.existing(run).path.name, stored_run.existing(other).path.name
         files = draw_difference(folder.figures, seen, evidence(other, progress, jobs), names, kinds, dpi)
     else:
         wanted = [name.strip() for name in only.split(",")] if only else []
@@ -270,18 +269,18 @@ def overlay(
 
 def evidence(run: str | Path, progress: Progress | None = None, jobs: int | None = None) -> Evidence:
     """Open a run for its figures: `roa.report.figures` holds the functions that draw it into axes of your own."""
-    folder = _existing(run)
-    verdict = _verdict_of(folder)
-    prepared = _stored(run, None, progress, with_target=True, jobs=jobs)[0]
-    return prepared.evidence(verdict, _samples_of(folder))
+    folder = stored_run.existing(run)
+    verdict = stored_run.verdict_of(folder)
+    prepared = stored_run.prepare_again(run, None, progress, with_target=True, jobs=jobs)[0]
+    return prepared.evidence(verdict, stored_run.samples_of(folder))
 
 
 def report(run: str | Path) -> Result:
     """Write the report of a run again, from what is stored."""
     from roa.report.html import write_report
 
-    folder = _existing(run)
-    _verdict_of(folder)
+    folder = stored_run.existing(run)
+    stored_run.verdict_of(folder)
     write_report(folder)
     return Result(str(folder.report), {"report": str(folder.report)}, 0, folder.path)
 
@@ -325,49 +324,6 @@ def _launched(
     return replace(result, exit_code=Interrupted.exit_code, note=note)
 
 
-def _existing(run: str | Path) -> RunFolder:
-    from roa.sweep.run_folder import RunFolder
-
-    return RunFolder.existing(Path(run))
-
-
-def _stored(
-    run: str | Path, samples: int | None, progress: Progress | None, with_target: bool = False, jobs: int | None = None
-) -> tuple[Preparation, RunFolder]:
-    """Prepare a run again from its own folder, with the seed and the samples that it was begun with.
-
-    `with_target`: with its target set too, as it is stored, so that no bound has to be derived again.
-    """
-    from roa.loop.read import read_text
-    from roa.preparation import Preparation
-    from roa.sweep.fingerprint import target_of
-    from roa.sweep.header import Header
-
-    folder = _existing(run)
-    header = Header.read(folder.plan)
-    configuration = read_text(header.config, str(folder.config))
-    quick = header.fingerprint_parts.get("config.bound.search") == []
-    target = target_of(header.fingerprint_parts) if with_target else None
-    samples = samples or header.samples
-    method = header.fingerprint_parts["method"]
-    prepared = Preparation(
-        configuration, samples, header.seed, progress, target, jobs, header.block_size, quick, method
-    )
-    return prepared, folder
-
-
-def _samples_of(folder: RunFolder) -> Samples:
-    """Open what is stored: all samples of a sweep that is done, else its longest complete prefix."""
-    from roa.sweep.finished import open_partial
-
-    samples = open_partial(folder)
-    if not samples.n:
-        raise Interrupted(
-            f"{folder.path}: no block of the sweep is finished yet; carry it on with `{folder.resume_command}`"
-        )
-    return samples
-
-
 def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int | None, figures: bool) -> Result:
     """Judge what the folder holds; write verdict, figures and report."""
     from roa.basin.provenance import provenance
@@ -376,7 +332,7 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
     from roa.report.draw import draw_figures
     from roa.report.html import write_report
 
-    samples, plan = _samples_of(folder), prepared.plan
+    samples, plan = stored_run.samples_of(folder), prepared.plan
     claim = prepared.claim()
     verdict = conclude(
         prepared.configuration,
@@ -390,7 +346,7 @@ def _conclude(prepared: Preparation, folder: RunFolder, command: str, jobs: int 
         findings=prepared.findings(samples),
         sensitive=sensitivity(samples, prepared.simulate_tighter, prepared.configuration.verdict.confidence),
     )
-    _write_verdict(folder, verdict)
+    stored_run.write_verdict(folder, verdict)
     if figures:
         draw_figures(folder.figures, prepared.evidence(verdict, samples))
         write_report(folder)
@@ -410,28 +366,8 @@ def _written(configuration: Configuration, verdict: dict[str, Any], folder: RunF
 
     with folder.locked():
         write_atomically(folder.config, configuration.text.encode())
-        _write_verdict(folder, verdict)
+        stored_run.write_verdict(folder, verdict)
     return _result(folder, verdict, code)
-
-
-def _write_verdict(folder: RunFolder, verdict: dict[str, Any]) -> None:
-    from roa.sweep.run_folder import write_atomically
-
-    write_atomically(folder.verdict, (json.dumps(verdict, indent=1, ensure_ascii=False) + "\n").encode())
-
-
-def _verdict_of(folder: RunFolder) -> dict[str, Any]:
-    try:
-        verdict: dict[str, Any] = json.loads(folder.verdict.read_text(encoding="utf-8"))
-    except FileNotFoundError:
-        raise UserError(
-            f"{folder.path}: holds no verdict yet; carry the sweep on with `{folder.resume_command}`"
-        ) from None
-    except ValueError as error:
-        raise MachineError(
-            f"{folder.verdict}: is damaged ({error}); `{folder.resume_command}` writes it again"
-        ) from None
-    return verdict
 
 
 def _result(folder: RunFolder, verdict: dict[str, Any], code: int) -> Result:
