@@ -35,7 +35,7 @@ def small_run(write, tmp_path, **keywords):
 
 def test_run_without_a_claim_is_done(write, tmp_path, capsys):
     config, out = small_run(write, tmp_path)
-    assert main(["run", config, "--out", out, "--samples", "4096", "--jobs", "1", "--quiet"]) == 0
+    assert main(["run", config, "--out", out, "--samples", "4096", "--jobs", "1", "--quick", "--quiet"]) == 0
     printed = capsys.readouterr()
     assert printed.err == ""
     assert printed.out.startswith("The simulated basin fills 32.")
